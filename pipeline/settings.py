@@ -1,0 +1,317 @@
+"""The sections of a study file: every key, its meaning, unit, usual value and bounds.
+
+A key is declared once, here. The commented study file that ``make new`` writes, the table of
+assumptions in the report and the reference in ``docs/study_file.md`` are made from these
+declarations. Sections are frozen and reject keys that they do not know.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated, Any, ClassVar, Literal
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationInfo
+
+
+def setting(
+    meaning: str, default: Any = ..., *, unit: str = "", usual: str = "", **bounds: Any
+) -> Any:
+    """Declare a key: what it means, its unit, a usual value, its bounds.
+
+    A key with a `usual` value is an assumption: it moves the answer, and the report lists it.
+    """
+    extra = {"unit": unit, "usual": usual}
+    return Field(default, description=meaning, json_schema_extra=extra, **bounds)
+
+
+def _resolve(value: object, info: ValidationInfo) -> object:
+    """Paths in a study file are relative to the study file."""
+    if isinstance(value, str | Path):
+        return (Path((info.context or {}).get("base", ".")) / value).resolve()
+    return value
+
+
+InputPath = Annotated[Path, BeforeValidator(_resolve), "input"]
+OutputPath = Annotated[Path, BeforeValidator(_resolve), "output"]
+Share = Annotated[float, Field(ge=0, le=1)]
+
+
+class Section(BaseModel):
+    """Base of all sections: strict and frozen."""
+
+    model_config = ConfigDict(frozen=True, extra="forbid", strict=True, validate_default=True)
+    section_name: ClassVar[str] = ""
+
+
+class StudySettings(Section):
+    """Who the study is about, in which money, and where its files go."""
+
+    section_name: ClassVar[str] = "study"
+    name: str = setting("Short name; names the output files.", pattern=r"^[a-z][a-z0-9_-]*$")
+    title: str = setting("Title of the report.")
+    notice: str = setting(
+        "Stands in the report's first lines: invented data, drawn visits, a draft.", ""
+    )
+    currency: str = setting("Currency of every amount (ISO 4217).", pattern=r"^[A-Z]{3}$")
+    price_year: int = setting("Year of the prices.", ge=1900, le=2200)
+    seed: int = setting("Seed of every random draw.", 1, ge=0)
+    folder: OutputPath = setting(
+        "Folder that holds work/ (stage tables) and output/ (what people take away); "
+        "default: a folder with the study's name beside the study file.",
+        None,
+    )
+
+
+class SiteColumns(Section):
+    """The study's own column names in the sites file."""
+
+    site_id: str = setting("Site's identifier.", "site_id")
+    access_id: str = setting("Access point's identifier; may be absent.", "access_id")
+    site_name: str = setting("Name to show.", "site_name")
+    role: str = setting("'site' (to be valued) or 'substitute'.", "role")
+    lon: str = setting("Longitude, WGS 84.", "lon")
+    lat: str = setting("Latitude, WGS 84.", "lat")
+    fee: str = setting("Entrance fee per person; absent means free.", "fee")
+
+
+class SitesSettings(Section):
+    """Where the sites and their substitutes are."""
+
+    section_name: ClassVar[str] = "sites"
+    file: InputPath | None = setting(
+        "CSV, Excel, Parquet or GIS layer; one row per access point.", None
+    )
+    columns: SiteColumns = setting("Column names in that file.", SiteColumns())
+
+
+class ZoneColumns(Section):
+    """The study's own column names in the zones file."""
+
+    zone_id: str = setting("Zone's identifier.", "zone_id")
+    postal_code: str = setting("Postal code of the zone; absent: the identifier.", "postal_code")
+    zone_name: str = setting("Name to show; may be absent.", "zone_name")
+    population: str = setting("People who live there.", "population")
+    household_income: str = setting("Household income per year.", "household_income")
+    lon: str = setting("Longitude of the centroid, WGS 84; may be absent with polygons.", "lon")
+    lat: str = setting("Latitude of the centroid, WGS 84; may be absent with polygons.", "lat")
+
+
+class ZonesSettings(Section):
+    """Zones of origin with their people and income."""
+
+    section_name: ClassVar[str] = "zones"
+    file: InputPath | None = setting(
+        "CSV, Excel or Parquet with centroids, or a GIS layer with polygons.", None
+    )
+    layer: str | None = setting("Layer in that file, where it has several.", None)
+    columns: ZoneColumns = setting("Column names in that file.", ZoneColumns())
+    covariates: tuple[str, ...] = setting(
+        "Further columns of the zones file to carry into the finished table.", ()
+    )
+    postal_code_pattern: str | None = setting(
+        "Regular expression that a normalised code matches fully; "
+        "default: any code that is in the zones file is well formed.",
+        None,
+    )
+
+
+class VisitColumns(Section):
+    """The study's own column names in the visit records."""
+
+    record_id: str = setting("Record's identifier; absent: the row number.", "record_id")
+    postal_code: str = setting("Postal code of the visitor's home.", "postal_code")
+    site_id: str = setting("Site visited; may be absent with one site.", "site_id")
+    trips: str = setting("Trips that the record stands for; absent: 1.", "trips")
+    party_size: str = setting("People who came together; absent: unknown.", "party_size")
+    weight: str = setting("Sampling weight; absent: 1.", "weight")
+
+
+class VisitsSettings(Section):
+    """Visit records and what turns them into a year of visits."""
+
+    section_name: ClassVar[str] = "visits"
+    file: InputPath | None = setting("CSV, Excel or Parquet; one row per record.", None)
+    sheet: str | None = setting("Sheet, where the file is a workbook.", None)
+    columns: VisitColumns = setting("Column names in that file.", VisitColumns())
+    crosswalk: InputPath | None = setting(
+        "CSV of codes that are no zone of their own (columns postal_code, zone_id).", None
+    )
+    foreign_codes: tuple[str, ...] = setting(
+        "Regular expressions of codes that belong to other countries.", ()
+    )
+    max_unmatched_share: Share = setting(
+        "The run stops when a larger share of the records has no zone.", 0.1, usual="0.05 to 0.2"
+    )
+    annual_visits: dict[str, float] = setting(
+        "Known person-visits in a year, per site; the records are expanded to it. "
+        "A site that is not named is taken as counted in full.",
+        {},
+        unit="visits/year",
+        usual="a counter or ticket total",
+    )
+
+
+class RoadsSettings(Section):
+    """The road extract."""
+
+    section_name: ClassVar[str] = "roads"
+    files: tuple[InputPath, ...] = setting("OSM PBF or OSM XML extracts.", ())
+
+
+class RoutesSettings(Section):
+    """How origins and sites are tied to the roads."""
+
+    section_name: ClassVar[str] = "routes"
+    table: InputPath | None = setting(
+        "A ready routes table (CSV or Parquet); then no road extract is needed.", None
+    )
+    max_snap_km: float = setting(
+        "A point further from its road is too_far_from_road.",
+        5.0,
+        unit="km",
+        usual="2 to 10",
+        gt=0,
+    )
+
+
+class CostsSettings(Section):
+    """What a trip costs."""
+
+    section_name: ClassVar[str] = "costs"
+    vehicle_cost_per_km: float = setting(
+        "Cost of driving that grows with distance: fuel, wear, tyres. No fixed yearly cost.",
+        unit="currency/km",
+        usual="0.10 to 0.45 in EUR or USD; common practice, no source",
+        ge=0,
+    )
+    party_size: Literal["records"] | float = setting(
+        "People who share the vehicle: 'records' takes the mean of the visit records.",
+        "records",
+        unit="people",
+        usual="2 to 3.5",
+    )
+    wage_fraction: float = setting(
+        "Share of the hourly wage that an hour of travel costs.",
+        unit="share",
+        usual="0.25 to 0.5; a third is common practice",
+        ge=0,
+        le=2,
+    )
+    hours_per_year: float = setting(
+        "Working hours a year that turn household income into an hourly wage.",
+        2080.0,
+        unit="h/year",
+        usual="1,700 to 2,080",
+        gt=0,
+    )
+    fallback_household_income: float | None = setting(
+        "Taken for zones whose income is missing; without it such a zone is an error.",
+        None,
+        unit="currency/year",
+        usual="the region's median",
+        gt=0,
+    )
+
+
+class MarketSettings(Section):
+    """Which zones belong to the market of a site."""
+
+    section_name: ClassVar[str] = "market"
+    zone_table: InputPath | None = setting(
+        "A ready zone_table (CSV or Parquet); the flow starts at demand.", None
+    )
+    trip_table: InputPath | None = setting(
+        "A ready trip_table (CSV or Parquet); the flow starts at demand.", None
+    )
+    max_distance_km: float | None = setting(
+        "Zones further away are left out of the regression.",
+        None,
+        unit="km",
+        usual="a day's drive: 150 to 300",
+        gt=0,
+    )
+    max_drive_time_min: float | None = setting(
+        "Zones with a longer one-way drive are left out of the regression.",
+        None,
+        unit="min",
+        usual="120 to 240",
+        gt=0,
+    )
+
+
+class DemandSettings(Section):
+    """The regression of visits on travel cost."""
+
+    section_name: ClassVar[str] = "demand"
+    models: tuple[str, ...] = setting(
+        "Models to fit.", ("poisson", "negative_binomial", "log_linear")
+    )
+    choose: str = setting(
+        "'test': Poisson or negative binomial by the overdispersion test; or a model's name.",
+        "test",
+        usual="test",
+    )
+    covariates: tuple[str, ...] = setting(
+        "Columns of the finished table beside travel_cost.",
+        (),
+        usual="household_income, substitute_cost",
+    )
+
+
+class SurplusSettings(Section):
+    """Surplus, its interval, and the fees to look at."""
+
+    section_name: ClassVar[str] = "surplus"
+    confidence: float = setting("Level of every interval.", 0.95, usual="0.95", gt=0.5, lt=1)
+    draws: int = setting("Parameter draws for simulated intervals.", 10_000, ge=1000)
+    fees: tuple[float, ...] = setting(
+        "Added fees per person and visit to tabulate; default: a range up to a high fee.",
+        (),
+        unit="currency",
+    )
+
+
+class ScenarioSettings(Section):
+    """A change to be valued."""
+
+    section_name: ClassVar[str] = "scenarios"
+
+
+class PublishSettings(Section):
+    """What people take away."""
+
+    section_name: ClassVar[str] = "publish"
+    crs: str = setting("Coordinate reference system of the GIS layers.", "EPSG:4326")
+    suppress_below: int = setting(
+        "Counts of visit records per zone below this are hidden in published tables; 0: none.",
+        0,
+        usual="3 to 10",
+        ge=0,
+    )
+    attribution: str = setting(
+        "Attribution and licence of the road data, shown on every map.",
+        "Roads © OpenStreetMap contributors, ODbL 1.0",
+    )
+
+
+class ComputeSettings(Section):
+    """How the work is done; never changes a figure."""
+
+    section_name: ClassVar[str] = "compute"
+    workers: int = setting("Processes for the searches.", 1, ge=1)
+
+
+SECTIONS: tuple[type[Section], ...] = (
+    StudySettings,
+    SitesSettings,
+    ZonesSettings,
+    VisitsSettings,
+    RoadsSettings,
+    RoutesSettings,
+    CostsSettings,
+    MarketSettings,
+    DemandSettings,
+    SurplusSettings,
+    PublishSettings,
+    ComputeSettings,
+)

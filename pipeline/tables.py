@@ -1,0 +1,463 @@
+"""Every table of the flow, declared once: column, type, unit, meaning, checks.
+
+The declaration validates each read and each write and prints the data dictionary. Columns
+that are not declared may stand beside the declared ones (covariates of the study's own);
+they are never dropped.
+
+Money is in the study's currency; distances are in km and times in minutes, one way, unless
+the name says ``round_trip_`` or ``return_``. Missing is NaN with a status column beside it.
+"""
+
+from __future__ import annotations
+
+import pandas as pd
+from pandera.typing import Series
+
+from pipeline.schema import Table, column
+
+ORIGIN_STATUSES = (
+    "matched",
+    "crosswalk",
+    "point_in_zone",
+    "outside_zones",
+    "malformed",
+    "unknown_code",
+    "missing",
+    "foreign",
+)
+PLACED_STATUSES = ("matched", "crosswalk", "point_in_zone")
+ROUTE_STATUSES = ("routed", "within_zone", "no_path", "too_far_from_road")
+REACHED_STATUSES = ("routed", "within_zone")
+SITE_ROLES = ("site", "substitute")
+
+
+# --- what the study brings -------------------------------------------------------------------
+
+
+class VisitRecords(Table):
+    """Visit records as they came: one row per permit, interview or register line."""
+
+    record_id: Series[str] = column("identifier of the record, unique")
+    postal_code_raw: Series[str] = column("postal code as written in the record", nullable=True)
+    site_id: Series[str] = column("site that was visited")
+    trips: Series[float] = column("trips that the record stands for", unit="trips", ge=0)
+    party_size: Series[float] = column(
+        "people who travelled together", unit="people", gt=0, nullable=True
+    )
+    weight: Series[float] = column("how many records like it this record stands for", ge=0)
+
+    class Config:
+        unique = ["record_id"]
+
+
+class Zones(Table):
+    """Zones of origin: one row per zone; a geometry in WGS 84 where the study has polygons."""
+
+    zone_id: Series[str] = column("zone's identifier, exactly as it came in")
+    postal_code: Series[str] = column("postal code that belongs to the zone")
+    zone_name: Series[str] = column("name to show", nullable=True)
+    population: Series[float] = column("people who live in the zone", unit="people", ge=0)
+    household_income: Series[float] = column(
+        "household income per year", unit="currency/year", gt=0, nullable=True
+    )
+    lon: Series[float] = column("longitude of the zone's centroid", unit="degree", ge=-180, le=180)
+    lat: Series[float] = column("latitude of the zone's centroid", unit="degree", ge=-90, le=90)
+    centroid_source: Series[str] = column(
+        "where the centroid comes from: given, inside_polygon, population_weighted"
+    )
+
+    class Config:
+        unique = ["zone_id"]
+
+
+class Crosswalk(Table):
+    """Codes that are no zone of their own (PO boxes, retired codes) and the zone they stand for."""
+
+    postal_code: Series[str] = column("postal code, unique")
+    zone_id: Series[str] = column("zone that the code belongs to")
+
+    class Config:
+        unique = ["postal_code"]
+
+
+class Sites(Table):
+    """Sites to be valued and their substitutes: one row per access point."""
+
+    site_id: Series[str] = column("site's identifier")
+    access_id: Series[str] = column("access point's identifier, unique within the site")
+    site_name: Series[str] = column("name to show")
+    role: Series[str] = column("'site' (to be valued) or 'substitute'", isin=SITE_ROLES)
+    lon: Series[float] = column("longitude of the access point", unit="degree", ge=-180, le=180)
+    lat: Series[float] = column("latitude of the access point", unit="degree", ge=-90, le=90)
+    fee: Series[float] = column("entrance fee per person and visit", unit="currency", ge=0)
+
+    class Config:
+        unique = ["site_id", "access_id"]
+
+
+# --- geocode ---------------------------------------------------------------------------------
+
+
+class Origins(Table):
+    """Every visit record with its zone of origin, or the reason why it has none."""
+
+    record_id: Series[str] = column("identifier of the record, unique")
+    postal_code_raw: Series[str] = column("postal code as written in the record", nullable=True)
+    postal_code: Series[str] = column("postal code after normalisation", nullable=True)
+    zone_id: Series[str] = column("zone of origin", nullable=True)
+    site_id: Series[str] = column("site that was visited")
+    trips: Series[float] = column("trips that the record stands for", unit="trips", ge=0)
+    party_size: Series[float] = column(
+        "people who travelled together", unit="people", gt=0, nullable=True
+    )
+    weight: Series[float] = column("how many records like it this record stands for", ge=0)
+    origin_status: Series[str] = column("how the zone was found, or why not", isin=ORIGIN_STATUSES)
+    origin_note: Series[str] = column("what was changed, or the nearest valid codes", nullable=True)
+
+    class Config:
+        unique = ["record_id"]
+
+
+class OriginSummary(Table):
+    """How many records, trips and people have each status; the counts add up to what went in."""
+
+    site_id: Series[str] = column("site that was visited")
+    origin_status: Series[str] = column("how the zone was found, or why not", isin=ORIGIN_STATUSES)
+    records: Series[int] = column("visit records", unit="records", ge=0)
+    trips: Series[float] = column("trips in those records", unit="trips", ge=0)
+    share: Series[float] = column("share of the site's records", ge=0, le=1)
+
+    class Config:
+        unique = ["site_id", "origin_status"]
+
+
+# --- roads -----------------------------------------------------------------------------------
+
+
+class RoadQuality(Table):
+    """What the road extract holds: one row per measure (and road class where it applies)."""
+
+    measure: Series[str] = column("what is counted or measured")
+    road_class: Series[str] = column("road class, or 'all'")
+    value: Series[float] = column("the figure")
+    unit: Series[str] = column("unit of the figure")
+    note: Series[str] = column("what it means for the result", nullable=True)
+
+    class Config:
+        unique = ["measure", "road_class"]
+
+
+class RoadLines(Table):
+    """Roads of the graph as lines (WGS 84), for maps."""
+
+    road_class: Series[str] = column("road class (OpenStreetMap `highway` value, or 'ferry')")
+    distance_km: Series[float] = column("length along the line", unit="km", ge=0)
+
+
+# --- route -----------------------------------------------------------------------------------
+
+
+class Routes(Table):
+    """One row per zone and site: fastest route there and back, shortest distance there."""
+
+    zone_id: Series[str] = column("zone of origin")
+    site_id: Series[str] = column("site or substitute")
+    access_id: Series[str] = column("access point that the fastest route ends at", nullable=True)
+    distance_km: Series[float] = column(
+        "distance along the fastest route, from door to site", unit="km", ge=0, nullable=True
+    )
+    drive_time_min: Series[float] = column(
+        "time of the fastest route, from door to site", unit="min", ge=0, nullable=True
+    )
+    shortest_distance_km: Series[float] = column(
+        "distance of the shortest route, from door to site", unit="km", ge=0, nullable=True
+    )
+    return_distance_km: Series[float] = column(
+        "distance along the fastest route home", unit="km", ge=0, nullable=True
+    )
+    return_drive_time_min: Series[float] = column(
+        "time of the fastest route home", unit="min", ge=0, nullable=True
+    )
+    ferry_km: Series[float] = column("by ferry, of distance_km", unit="km", ge=0, nullable=True)
+    ferry_min: Series[float] = column(
+        "on ferries, of drive_time_min", unit="min", ge=0, nullable=True
+    )
+    toll_km: Series[float] = column("on toll roads, of distance_km", unit="km", ge=0, nullable=True)
+    unpaved_km: Series[float] = column(
+        "on unpaved roads, of distance_km", unit="km", ge=0, nullable=True
+    )
+    zone_snap_m: Series[float] = column(
+        "gap between the zone's centroid and its road", unit="m", ge=0, nullable=True
+    )
+    site_snap_m: Series[float] = column(
+        "gap between the access point and its road", unit="m", ge=0, nullable=True
+    )
+    route_status: Series[str] = column("whether a route was found", isin=ROUTE_STATUSES)
+
+    class Config:
+        unique = ["zone_id", "site_id"]
+
+
+class RouteLines(Table):
+    """Fastest route of each zone and site as a line (WGS 84)."""
+
+    zone_id: Series[str] = column("zone of origin")
+    site_id: Series[str] = column("site or substitute")
+
+    class Config:
+        unique = ["zone_id", "site_id"]
+
+
+# --- cost ------------------------------------------------------------------------------------
+
+
+class Costs(Table):
+    """Price of a visit per person, itemised: one row per zone and site."""
+
+    zone_id: Series[str] = column("zone of origin")
+    site_id: Series[str] = column("site or substitute")
+    round_trip_km: Series[float] = column("there and back", unit="km", ge=0, nullable=True)
+    round_trip_hours: Series[float] = column("there and back", unit="h", ge=0, nullable=True)
+    party_size: Series[float] = column("people who share the vehicle's cost", unit="people", gt=0)
+    vehicle_cost: Series[float] = column(
+        "vehicle, per person and trip", unit="currency", ge=0, nullable=True
+    )
+    toll_cost: Series[float] = column(
+        "tolls, per person and trip", unit="currency", ge=0, nullable=True
+    )
+    ferry_cost: Series[float] = column(
+        "ferry fares, per person and trip", unit="currency", ge=0, nullable=True
+    )
+    time_cost: Series[float] = column(
+        "travel time, per person and trip", unit="currency", ge=0, nullable=True
+    )
+    fee_cost: Series[float] = column("entrance, per person and trip", unit="currency", ge=0)
+    other_cost: Series[float] = column(
+        "other spending, per person and trip", unit="currency", ge=0, nullable=True
+    )
+    travel_cost: Series[float] = column(
+        "price of a visit: the sum of the items, per person and trip",
+        unit="currency",
+        ge=0,
+        nullable=True,
+    )
+    vehicle_cost_per_party: Series[float] = column(
+        "vehicle, per party and trip", unit="currency", ge=0, nullable=True
+    )
+    toll_cost_per_party: Series[float] = column(
+        "tolls, per party and trip", unit="currency", ge=0, nullable=True
+    )
+    ferry_cost_per_party: Series[float] = column(
+        "ferry fares, per party and trip", unit="currency", ge=0, nullable=True
+    )
+    cost_status: Series[str] = column("'priced', or the route_status that left no price")
+
+    class Config:
+        unique = ["zone_id", "site_id"]
+
+
+# --- join ------------------------------------------------------------------------------------
+
+
+class ZoneTable(Table):
+    """The finished table: one row per zone and site; zones without a visit are rows, with zero."""
+
+    zone_id: Series[str] = column("zone of origin")
+    site_id: Series[str] = column("site that is valued")
+    population: Series[float] = column("people who live in the zone", unit="people", ge=0)
+    household_income: Series[float] = column(
+        "household income per year", unit="currency/year", gt=0, nullable=True
+    )
+    sampled_visits: Series[float] | None = column(
+        "person-visits in the records, before expansion", unit="visits", ge=0, nullable=True
+    )
+    visits: Series[float] = column(
+        "person-visits per year, expanded to the known total", unit="visits/year", ge=0
+    )
+    visits_se: Series[float] | None = column(
+        "standard error of the expanded visits", unit="visits/year", ge=0, nullable=True
+    )
+    visits_per_1000: Series[float] | None = column(
+        "person-visits per year per 1,000 people", unit="visits/1000/year", ge=0, nullable=True
+    )
+    distance_km: Series[float] | None = column(
+        "distance along the fastest route, one way", unit="km", ge=0, nullable=True
+    )
+    drive_time_min: Series[float] | None = column(
+        "time of the fastest route, one way", unit="min", ge=0, nullable=True
+    )
+    travel_cost: Series[float] = column(
+        "price of a visit per person", unit="currency", ge=0, nullable=True
+    )
+    substitute_cost: Series[float] | None = column(
+        "price of a visit to the cheapest substitute, per person",
+        unit="currency",
+        ge=0,
+        nullable=True,
+    )
+    in_market: Series[bool] | None = column("whether the zone belongs to the market of the site")
+    market_note: Series[str] | None = column("why the zone is left out", nullable=True)
+
+    class Config:
+        unique = ["zone_id", "site_id"]
+
+
+class TripTable(Table):
+    """The finished table where records are per person or household: one row per record."""
+
+    record_id: Series[str] = column("identifier of the record, unique")
+    zone_id: Series[str] | None = column("zone of origin", nullable=True)
+    site_id: Series[str] = column("site that is valued")
+    trips: Series[float] = column("trips of the person in a year", unit="trips/year", ge=0)
+    weight: Series[float] | None = column("how many people the record stands for", ge=0)
+    travel_cost: Series[float] = column("price of a trip per person", unit="currency", ge=0)
+    substitute_cost: Series[float] | None = column(
+        "price of a trip to the cheapest substitute", unit="currency", ge=0, nullable=True
+    )
+    household_income: Series[float] | None = column(
+        "household income per year", unit="currency/year", nullable=True
+    )
+
+    class Config:
+        unique = ["record_id"]
+
+
+# --- demand ----------------------------------------------------------------------------------
+
+
+class Estimates(Table):
+    """Estimated coefficients of every model that was tried: one row per term."""
+
+    model: Series[str] = column("model's name")
+    site_id: Series[str] = column("site that is valued")
+    term: Series[str] = column("'const', 'travel_cost', a covariate, or 'alpha' (dispersion)")
+    estimate: Series[float] = column("coefficient in the units of the finished table", nullable=True)
+    std_error: Series[float] = column("its standard error", ge=0, nullable=True)
+    ci_low: Series[float] = column("lower end of the confidence interval", nullable=True)
+    ci_high: Series[float] = column("upper end of the confidence interval", nullable=True)
+    p_value: Series[float] = column(
+        "two-sided p-value against zero", ge=0, le=1, nullable=True
+    )
+    covariance: Series[str] = column(
+        "JSON list: covariances with every term of the model, in the order of the rows"
+    )
+
+    class Config:
+        unique = ["model", "site_id", "term"]
+
+
+class Fit(Table):
+    """How well each model fits, and which one was chosen and why: one row per model and site."""
+
+    model: Series[str] = column("model's name")
+    site_id: Series[str] = column("site that is valued")
+    nobs: Series[int] = column("rows that the model was fitted to", ge=0)
+    log_likelihood: Series[float] = column("log-likelihood", nullable=True)
+    aic: Series[float] = column("Akaike's information criterion", nullable=True)
+    bic: Series[float] = column("Bayesian information criterion", nullable=True)
+    dispersion: Series[float] = column(
+        "NB2: alpha; other models: Pearson chi-square over degrees of freedom", nullable=True
+    )
+    overdispersion_p: Series[float] = column(
+        "p-value of the overdispersion test", ge=0, le=1, nullable=True
+    )
+    r_squared: Series[float] = column(
+        "squared correlation of observed and predicted", ge=0, le=1, nullable=True
+    )
+    converged: Series[bool] = column("whether the maximum was reached and verified")
+    chosen: Series[bool] = column("whether the surplus comes from this model")
+    errors: Series[str] = column("kind of standard errors")
+    note: Series[str] = column("why it was chosen, or what is wrong with it", nullable=True)
+
+    class Config:
+        unique = ["model", "site_id"]
+
+
+# --- surplus ---------------------------------------------------------------------------------
+
+
+class Surplus(Table):
+    """Values in money with their intervals: one row per model, site, measure and method."""
+
+    model: Series[str] = column("model's name")
+    site_id: Series[str] = column("site that is valued")
+    measure: Series[str] = column(
+        "surplus_per_trip, annual_surplus, surplus_per_person_per_year, price_elasticity, ..."
+    )
+    value: Series[float] = column("the figure", nullable=True)
+    std_error: Series[float] = column("its standard error", ge=0, nullable=True)
+    ci_low: Series[float] = column("lower end of the confidence interval", nullable=True)
+    ci_high: Series[float] = column("upper end of the confidence interval", nullable=True)
+    method: Series[str] = column("how the interval was made: delta, simulated, ...")
+    unit: Series[str] = column("unit of the figure")
+    note: Series[str] = column("what to know before using it", nullable=True)
+
+    class Config:
+        unique = ["model", "site_id", "measure", "method"]
+
+
+class FeeSchedule(Table):
+    """What an added entrance fee would do: one row per site and fee, from the chosen model."""
+
+    site_id: Series[str] = column("site that is valued")
+    fee: Series[float] = column("fee added per person and visit", unit="currency", ge=0)
+    visits: Series[float] = column("person-visits per year at that fee", unit="visits/year", ge=0)
+    visits_ci_low: Series[float] = column("lower end of its interval", ge=0, nullable=True)
+    visits_ci_high: Series[float] = column("upper end of its interval", ge=0, nullable=True)
+    revenue: Series[float] = column("fee times visits", unit="currency/year", ge=0)
+    revenue_ci_low: Series[float] = column("lower end of its interval", ge=0, nullable=True)
+    revenue_ci_high: Series[float] = column("upper end of its interval", ge=0, nullable=True)
+    consumer_surplus: Series[float] = column(
+        "surplus left to visitors at that fee", unit="currency/year", ge=0, nullable=True
+    )
+    consumer_surplus_ci_low: Series[float] = column("lower end of its interval", nullable=True)
+    consumer_surplus_ci_high: Series[float] = column("upper end of its interval", nullable=True)
+    surplus_lost: Series[float] = column(
+        "surplus that visitors lose against no added fee", unit="currency/year", nullable=True
+    )
+
+    class Config:
+        unique = ["site_id", "fee"]
+
+
+class ZoneSurplus(Table):
+    """Surplus of each zone's visitors from the chosen model: one row per zone and site."""
+
+    zone_id: Series[str] = column("zone of origin")
+    site_id: Series[str] = column("site that is valued")
+    predicted_visits: Series[float] = column(
+        "visits per year by the chosen model", unit="visits/year", ge=0, nullable=True
+    )
+    annual_surplus: Series[float] = column(
+        "surplus of the zone's visitors per year", unit="currency/year", nullable=True
+    )
+
+    class Config:
+        unique = ["zone_id", "site_id"]
+
+
+TABLES: tuple[type[Table], ...] = (
+    VisitRecords,
+    Zones,
+    Crosswalk,
+    Sites,
+    Origins,
+    OriginSummary,
+    RoadQuality,
+    RoadLines,
+    Routes,
+    RouteLines,
+    Costs,
+    ZoneTable,
+    TripTable,
+    Estimates,
+    Fit,
+    Surplus,
+    FeeSchedule,
+    ZoneSurplus,
+)
+
+
+def data_dictionary(tables: tuple[type[Table], ...] = TABLES) -> pd.DataFrame:
+    """Data dictionary of the given tables, one row per column."""
+    return pd.concat([table.dictionary() for table in tables], ignore_index=True)
