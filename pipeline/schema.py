@@ -85,7 +85,7 @@ class Table(pa.DataFrameModel):
     @classmethod
     def describe(cls: type[Self]) -> str:
         """First line of the table's docstring."""
-        return cast(str, cls.__doc__).strip().splitlines()[0]
+        return cast("str", cls.__doc__).strip().splitlines()[0]
 
 
 def _type_word(dtype: str) -> str:

@@ -19,7 +19,6 @@ from pydantic import BaseModel, ConfigDict, ValidationError
 
 from pipeline.errors import StudyError
 from pipeline.settings import (
-    SECTIONS,
     ComputeSettings,
     CostsSettings,
     DemandSettings,
@@ -189,7 +188,9 @@ def _unknown_key(where: list[str]) -> str:
     valid = _valid_keys(where[:-1])
     near = difflib.get_close_matches(where[-1], valid, n=1, cutoff=0.0)
     what = "unknown key" if len(where) > 1 else "unknown section"
-    return f"{what} {_key(where)}; the nearest valid one is {near[0]!r} (valid: {', '.join(valid)})."
+    return (
+        f"{what} {_key(where)}; the nearest valid one is {near[0]!r} (valid: {', '.join(valid)})."
+    )
 
 
 def _valid_keys(where: list[str]) -> list[str]:

@@ -331,13 +331,13 @@ class Estimates(Table):
     model: Series[str] = column("model's name")
     site_id: Series[str] = column("site that is valued")
     term: Series[str] = column("'const', 'travel_cost', a covariate, or 'alpha' (dispersion)")
-    estimate: Series[float] = column("coefficient in the units of the finished table", nullable=True)
+    estimate: Series[float] = column(
+        "coefficient in the units of the finished table", nullable=True
+    )
     std_error: Series[float] = column("its standard error", ge=0, nullable=True)
     ci_low: Series[float] = column("lower end of the confidence interval", nullable=True)
     ci_high: Series[float] = column("upper end of the confidence interval", nullable=True)
-    p_value: Series[float] = column(
-        "two-sided p-value against zero", ge=0, le=1, nullable=True
-    )
+    p_value: Series[float] = column("two-sided p-value against zero", ge=0, le=1, nullable=True)
     covariance: Series[str] = column(
         "JSON list: covariances with every term of the model, in the order of the rows"
     )
