@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from numbers import Real
+from numbers import Integral
 from typing import Any, Self, cast
 
 import pandas as pd
@@ -56,12 +56,6 @@ class Table(pa.DataFrameModel):
     def columns(cls) -> list[str]:
         """Names of the declared columns, in order."""
         return list(cls.to_schema().columns)
-
-    @classmethod
-    def empty(cls) -> pd.DataFrame:
-        """A table with every declared column and no row."""
-        frame = pd.DataFrame({column: [] for column in cls.columns()})
-        return cls.checked(frame)
 
     @classmethod
     def dictionary(cls) -> pd.DataFrame:
@@ -145,9 +139,7 @@ def _plain(value: object) -> str:
 
 def _row_word(index: object) -> str:
     """Row as a person counts it: data rows from 1."""
-    if isinstance(index, Real) and not pd.isna(index):
-        return f" in row {int(index) + 1}"
-    return ""
+    return f" in row {int(index) + 1}" if isinstance(index, Integral) else ""
 
 
 _CHECKS = {

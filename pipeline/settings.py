@@ -20,7 +20,7 @@ def setting(
 
     A key with a `usual` value is an assumption: it moves the answer, and the report lists it.
     """
-    extra = {"unit": unit, "usual": usual}
+    extra: dict[str, Any] = {"unit": unit, "usual": usual}
     return Field(default, description=meaning, json_schema_extra=extra, **bounds)
 
 

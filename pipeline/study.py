@@ -13,9 +13,9 @@ import json
 import tomllib
 from collections.abc import Iterator
 from pathlib import Path
-from typing import Any
+from typing import Any, cast
 
-from pydantic import BaseModel, ConfigDict, ValidationError
+from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
 from pipeline.errors import StudyError
 from pipeline.settings import (
@@ -47,7 +47,8 @@ class Study(BaseModel):
     visits: VisitsSettings = VisitsSettings()
     roads: RoadsSettings = RoadsSettings()
     routes: RoutesSettings = RoutesSettings()
-    costs: CostsSettings
+    # None only where the study brings a finished table and prices nothing.
+    costs: CostsSettings = Field(default_factory=lambda: cast(CostsSettings, None))
     market: MarketSettings = MarketSettings()
     demand: DemandSettings = DemandSettings()
     surplus: SurplusSettings = SurplusSettings()
@@ -110,6 +111,8 @@ def study_from(raw: dict[str, Any], *, base: Path, source: str) -> Study:
         study = Study.model_validate(_tuples(raw), context={"base": base})
     except ValidationError as error:
         raise StudyError(_explain(error, source)) from None
+    if study.costs is None and not (study.market.zone_table or study.market.trip_table):
+        raise StudyError(f"{source}: section [costs] is needed and missing; add it.")
     for file in study.input_files():
         if not file.is_file():
             raise StudyError(

@@ -1,0 +1,62 @@
+# roadworth: `make all` does the main job on the demo, `make test` checks it.
+# Another study: make all STUDY=name   or   make all STUDY_FILE=/path/to/study.toml
+
+STUDY ?= demo
+STUDY_FILE ?= config/$(STUDY).toml
+PYTHON ?= python3
+VENV := .venv
+RUN := $(VENV)/bin/python
+STAGES := geocode roads route cost join demand surplus publish
+
+.DEFAULT_GOAL := help
+.PHONY: all new test check bench validate iceland docs clean help $(STAGES)
+
+all: $(VENV)/ready  ## the whole flow for STUDY, ending with the report
+	@$(RUN) -m pipeline all $(STUDY_FILE)
+
+$(STAGES): $(VENV)/ready
+	@$(RUN) -m pipeline $@ $(STUDY_FILE)
+
+new: $(VENV)/ready  ## a commented study file and input folder: make new STUDY=name
+	@$(RUN) -m pipeline new $(STUDY)
+
+iceland: $(VENV)/ready  ## fetch a real country's roads and postal codes, then run the flow on them
+	@$(RUN) data/iceland/fetch.py
+	@$(RUN) -m pipeline all config/iceland.toml
+
+test: $(VENV)/ready-test  ## the tests (a few minutes)
+	$(RUN) -m pytest -n 2
+
+check: $(VENV)/ready-test  ## ruff and mypy --strict
+	$(VENV)/bin/ruff check .
+	$(VENV)/bin/ruff format --check .
+	$(VENV)/bin/mypy
+
+validate: $(VENV)/ready-test  ## the slow checks against outside sources
+	$(RUN) -m pytest -m slow
+
+docs: $(VENV)/ready  ## the reference documents that are made from the code
+	@$(RUN) -m pipeline.template docs
+
+clean:  ## remove what the flow made for STUDY (inputs stay)
+	rm -rf data/$(STUDY)/work data/$(STUDY)/output
+
+help:  ## this list
+	@echo "make TARGET [STUDY=name]      STUDY is demo unless you say otherwise"
+	@echo
+	@grep -hE '^[a-z]+:.*##' $(MAKEFILE_LIST) | sed -E 's/^([a-z]+):.*## */  \1\t/' | expand -t 14
+	@echo
+	@echo "one stage, with those before it that are out of date:"
+	@echo "  $(STAGES)"
+
+$(VENV)/ready: pyproject.toml config/constraints.txt
+	@echo "building the environment in $(VENV) (once; a minute or two)"
+	@$(PYTHON) -c 'import sys; sys.exit(sys.version_info < (3, 11))' || \
+	  { echo "error: Python 3.11 or later is needed; say which with PYTHON=python3.12"; exit 1; }
+	@test -x $(RUN) || $(PYTHON) -m venv $(VENV)
+	@$(RUN) -m pip install --quiet --disable-pip-version-check -c config/constraints.txt -e .
+	@touch $@
+
+$(VENV)/ready-test: $(VENV)/ready
+	@$(RUN) -m pip install --quiet --disable-pip-version-check -c config/constraints.txt -e '.[test]'
+	@touch $@

@@ -1,0 +1,264 @@
+"""The flow: the stages in their order, and what each reads and writes.
+
+To find the stage that makes a table, look for the table's class under ``writes``. A stage is a
+pure function: it gets what ``reads`` lists, in that order, and the study restricted to the
+sections that it names; it returns what ``writes`` lists. Reading inputs, writing tables and
+skipping what has not changed is the work of ``runner``.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from pipeline import inputs
+from pipeline.costs import cost, summarise_cost
+from pipeline.demand import demand, summarise_demand
+from pipeline.finished import join, summarise_join
+from pipeline.origins import geocode, summarise_geocode
+from pipeline.provenance import Provenance, trace
+from pipeline.publish import Publication, publish, summarise_publish
+from pipeline.roads import (
+    RoadExtract,
+    RoadGraph,
+    build_roads,
+    read_extract,
+    summarise_roads,
+)
+from pipeline.routes import route, summarise_route
+from pipeline.settings import (
+    SECTIONS,
+    ComputeSettings,
+    CostsSettings,
+    DemandSettings,
+    MarketSettings,
+    RoadsSettings,
+    RoutesSettings,
+    Section,
+    SitesSettings,
+    SurplusSettings,
+    VisitsSettings,
+    ZonesSettings,
+)
+from pipeline.study import Study
+from pipeline.surplus import summarise_surplus, surplus
+from pipeline.tables import (
+    Costs,
+    Crosswalk,
+    Estimates,
+    FeeSchedule,
+    Fit,
+    Origins,
+    OriginSummary,
+    RoadLines,
+    RoadQuality,
+    RouteLines,
+    Routes,
+    Sites,
+    Surplus,
+    TripTable,
+    VisitRecords,
+    Zones,
+    ZoneSurplus,
+    ZoneTable,
+)
+
+Kind = type[Any]
+
+
+@dataclass(frozen=True)
+class Maybe:
+    """A table that a stage takes where there is one, and does without where there is none."""
+
+    kind: Kind
+
+
+@dataclass(frozen=True)
+class Either:
+    """Tables of which a stage needs at least one; the others come as None."""
+
+    kinds: tuple[Kind, ...]
+
+
+Read = Kind | Maybe | Either
+
+
+@dataclass(frozen=True)
+class Stage:
+    """One step of the flow.
+
+    Attributes
+    ----------
+    name : as on the command line.
+    run : the pure function; gets what `reads` lists and the keyword `study`.
+    reads, writes : classes of tables and artefacts, in the order of arguments and results.
+    sections : sections of the study that it reads beside [study].
+    summarise : one line for people from what it returned.
+    """
+
+    name: str
+    run: Callable[..., tuple[Any, ...]]
+    reads: tuple[Read, ...]
+    writes: tuple[Kind, ...]
+    sections: tuple[type[Section], ...]
+    summarise: Callable[[tuple[Any, ...]], str]
+
+    def read_kinds(self) -> Iterator[tuple[Kind, bool]]:
+        """Every class that it reads, with whether the stage that writes it must have run."""
+        for item in self.reads:
+            if isinstance(item, Maybe):
+                yield item.kind, False
+            elif isinstance(item, Either):
+                yield from ((kind, True) for kind in item.kinds)
+            else:
+                yield item, True
+
+
+@dataclass(frozen=True)
+class Input:
+    """Something that is read from the study's own files: its class, reader, sections, key."""
+
+    kind: Kind
+    read: Callable[[Study], Any]
+    sections: tuple[type[Section], ...]
+    key: str
+
+
+def _extract(study: Study) -> RoadExtract:
+    return read_extract(study.roads.files)
+
+
+INPUTS: dict[Kind, Input] = {
+    item.kind: item
+    for item in (
+        Input(
+            VisitRecords,
+            inputs.read_visit_records,
+            (VisitsSettings, SitesSettings),
+            "visits.file",
+        ),
+        Input(Zones, inputs.read_zones, (ZonesSettings,), "zones.file"),
+        Input(Crosswalk, inputs.read_crosswalk, (VisitsSettings,), "visits.crosswalk"),
+        Input(Sites, inputs.read_sites, (SitesSettings,), "sites.file"),
+        Input(RoadExtract, _extract, (RoadsSettings,), "roads.files"),
+        Input(Provenance, trace, SECTIONS[1:], "study"),
+    )
+}
+
+BROUGHT: dict[Kind, Callable[[Study], Path | None]] = {
+    Routes: lambda study: study.routes.table,
+    ZoneTable: lambda study: study.market.zone_table,
+    TripTable: lambda study: study.market.trip_table,
+}
+
+FINISHED = Either((ZoneTable, TripTable))
+
+FLOW: tuple[Stage, ...] = (
+    Stage(
+        "geocode",
+        geocode,
+        reads=(VisitRecords, Zones, Maybe(Crosswalk)),
+        writes=(Origins, OriginSummary),
+        sections=(VisitsSettings, ZonesSettings),
+        summarise=summarise_geocode,
+    ),
+    Stage(
+        "roads",
+        build_roads,
+        reads=(RoadExtract,),
+        writes=(RoadGraph, RoadQuality, RoadLines),
+        sections=(RoadsSettings,),
+        summarise=summarise_roads,
+    ),
+    Stage(
+        "route",
+        route,
+        reads=(Zones, Sites, RoadGraph),
+        writes=(Routes, RouteLines),
+        sections=(RoutesSettings, ComputeSettings),
+        summarise=summarise_route,
+    ),
+    Stage(
+        "cost",
+        cost,
+        reads=(Routes, Zones, Sites, Maybe(Origins)),
+        writes=(Costs,),
+        sections=(CostsSettings,),
+        summarise=summarise_cost,
+    ),
+    Stage(
+        "join",
+        join,
+        reads=(Origins, Costs, Routes, Zones, Sites),
+        writes=(ZoneTable,),
+        sections=(VisitsSettings, MarketSettings, ZonesSettings),
+        summarise=summarise_join,
+    ),
+    Stage(
+        "demand",
+        demand,
+        reads=(FINISHED,),
+        writes=(Estimates, Fit),
+        sections=(DemandSettings, SurplusSettings),
+        summarise=summarise_demand,
+    ),
+    Stage(
+        "surplus",
+        surplus,
+        reads=(Estimates, Fit, FINISHED),
+        writes=(Surplus, FeeSchedule, ZoneSurplus),
+        sections=(DemandSettings, SurplusSettings),
+        summarise=summarise_surplus,
+    ),
+    Stage(
+        "publish",
+        publish,
+        reads=(
+            Provenance,
+            Maybe(OriginSummary),
+            Maybe(RoadQuality),
+            Maybe(RoadLines),
+            Maybe(Routes),
+            Maybe(RouteLines),
+            Maybe(Zones),
+            Maybe(Sites),
+            Maybe(Costs),
+            FINISHED,
+            Estimates,
+            Fit,
+            Surplus,
+            FeeSchedule,
+            ZoneSurplus,
+        ),
+        writes=(Publication,),
+        sections=SECTIONS[1:],
+        summarise=summarise_publish,
+    ),
+)
+
+STAGES: dict[str, Stage] = {stage.name: stage for stage in FLOW}
+
+
+def brought(study: Study) -> dict[Kind, Path]:
+    """Tables that the study brings ready made, with their files."""
+    paths = {kind: path(study) for kind, path in BROUGHT.items()}
+    return {kind: path for kind, path in paths.items() if path is not None}
+
+
+def plan(study: Study) -> tuple[Stage, ...]:
+    """The stages that a study needs: from publish backwards, as far as it brings no table."""
+    ready = brought(study)
+    finished_ready = any(kind in ready for kind in FINISHED.kinds)
+    wanted = set(FLOW[-1].writes)
+    stages: list[Stage] = []
+    for stage in reversed(FLOW):
+        if not wanted.intersection(stage.writes):
+            continue
+        stages.append(stage)
+        for kind, needed in stage.read_kinds():
+            is_ready = kind in ready or (finished_ready and kind in FINISHED.kinds)
+            if needed and not is_ready:
+                wanted.add(kind)
+    return tuple(reversed(stages))

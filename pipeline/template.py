@@ -1,0 +1,160 @@
+"""A new study file, and the reference of every key; both made from ``settings``."""
+
+from __future__ import annotations
+
+import json
+import textwrap
+from collections.abc import Iterator
+from pathlib import Path
+from typing import Any
+
+from pydantic import BaseModel
+from pydantic.fields import FieldInfo
+from pydantic_core import PydanticUndefined
+
+from pipeline.errors import StudyError
+from pipeline.settings import SECTIONS, Section
+from pipeline.stamps import CONFIG
+
+WIDTH = 96
+
+# What a new study fills in; every other key stands as a comment with its default.
+FILLED: dict[str, Any] = {
+    "study.title": "What a visit to {name} is worth",
+    "study.currency": "EUR",
+    "study.price_year": 2025,
+    "sites.file": "{data}/sites.csv",
+    "zones.file": "{data}/zones.csv",
+    "visits.file": "{data}/visits.csv",
+    "roads.files": ["{data}/roads.osm.pbf"],
+    "costs.vehicle_cost_per_km": 0.25,
+    "costs.wage_fraction": 0.3333,
+}
+
+
+def write_new_study(name: str, *, config: Path = CONFIG) -> str:
+    """Write `config/<name>.toml` and the folder for its inputs; say what to do next.
+
+    Raises
+    ------
+    StudyError
+        The name cannot be used, or the study file is there already.
+    """
+    if not name.isidentifier() or not name.islower():
+        raise StudyError(f"{name!r}: take a name in lower-case letters, digits and underscores.")
+    path = config / f"{name}.toml"
+    if path.exists():
+        raise StudyError(f"{path} is there already; choose another name or edit it.")
+    folder = config.parent / "data" / name / "input"
+    folder.mkdir(parents=True, exist_ok=True)
+    config.mkdir(parents=True, exist_ok=True)
+    path.write_text(commented_study(name), encoding="utf-8")
+    return (
+        f"wrote {path}\n"
+        f"next: put sites, zones, visit records and roads into {folder}, "
+        f"check the names and assumptions in the study file, then: make all STUDY={name}"
+    )
+
+
+def commented_study(name: str) -> str:
+    """A study file with every key, its meaning, unit and usual value as comments."""
+    filled = {key: _fill(value, name) for key, value in FILLED.items()}
+    filled |= {"study.name": name, "study.folder": f"../data/{name}"}
+    parts = [
+        f"# Study file of {name}. Paths are relative to this file.\n"
+        "# A key that is commented out has the value that it shows.\n"
+        "# Look at every 'usual' value: those assumptions move the answer.\n"
+    ]
+    for section in SECTIONS:
+        parts.append("\n".join(_section_lines(section, section.section_name, filled)))
+    return "\n".join(parts) + "\n"
+
+
+def settings_reference() -> str:
+    """Every section and key as a Markdown document."""
+    parts = ["# Study file: every section and key\n\nPaths are relative to the study file.\n"]
+    for section in SECTIONS:
+        parts.append(f"## [{section.section_name}]\n\n{_summary(section)}\n")
+        parts.append("| key | default | unit | usual value | meaning |\n|---|---|---|---|---|")
+        parts.append("\n".join(_reference_rows(section, "")) + "\n")
+    return "\n".join(parts)
+
+
+def _section_lines(section: type[BaseModel], title: str, filled: dict[str, Any]) -> Iterator[str]:
+    yield f"# {_summary(section)}"
+    yield f"[{title}]"
+    nested = []
+    for key, info in section.model_fields.items():
+        if _is_section(info):
+            nested.append((key, info))
+            continue
+        value = filled.get(f"{title}.{key}", _default(info))
+        yield from _comment(info)
+        if f"{title}.{key}" in filled:
+            yield f"{key} = {_toml(value)}"
+        else:
+            yield f"# {key} = {_toml(value)}" if value is not None else f"# {key} is not set"
+        yield ""
+    for key, info in nested:
+        assert isinstance(info.annotation, type)
+        yield from _section_lines(info.annotation, f"{title}.{key}", filled)
+
+
+def _reference_rows(section: type[BaseModel], prefix: str) -> Iterator[str]:
+    for key, info in section.model_fields.items():
+        if _is_section(info):
+            assert isinstance(info.annotation, type)
+            yield from _reference_rows(info.annotation, f"{prefix}{key}.")
+            continue
+        default = _reference_default(info)
+        unit, usual = _extra(info, "unit"), _extra(info, "usual")
+        yield f"| `{prefix}{key}` | {default} | {unit} | {usual} | {info.description} |"
+
+
+def _reference_default(info: FieldInfo) -> str:
+    if info.is_required():
+        return "needed"
+    return "not set" if _default(info) is None else f"`{_toml(_default(info))}`"
+
+
+def _comment(info: FieldInfo) -> Iterator[str]:
+    notes = [str(info.description)]
+    notes += [f"Unit: {_extra(info, 'unit')}."] if _extra(info, "unit") else []
+    notes += [f"Usual: {_extra(info, 'usual')}."] if _extra(info, "usual") else []
+    yield from textwrap.wrap(" ".join(notes), WIDTH, initial_indent="# ", subsequent_indent="# ")
+
+
+def _is_section(info: FieldInfo) -> bool:
+    return isinstance(info.annotation, type) and issubclass(info.annotation, Section)
+
+
+def _summary(section: type[BaseModel]) -> str:
+    return str(section.__doc__).strip().splitlines()[0]
+
+
+def _extra(info: FieldInfo, name: str) -> str:
+    extra = info.json_schema_extra
+    return str(extra.get(name, "")) if isinstance(extra, dict) else ""
+
+
+def _default(info: FieldInfo) -> Any:
+    return None if info.default is PydanticUndefined else info.default
+
+
+def _fill(value: Any, name: str) -> Any:
+    if isinstance(value, list):
+        return [_fill(item, name) for item in value]
+    if isinstance(value, str):
+        return value.format(name=name, data=f"../data/{name}/input")
+    return value
+
+
+def _toml(value: Any) -> str:
+    """A value as TOML writes it."""
+    if isinstance(value, bool):
+        return str(value).lower()
+    if isinstance(value, dict):
+        return "{" + ", ".join(f"{key} = {_toml(item)}" for key, item in value.items()) + "}"
+    if isinstance(value, tuple | list):
+        return "[" + ", ".join(map(_toml, value)) + "]"
+    return json.dumps(value, ensure_ascii=False)
