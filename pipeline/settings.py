@@ -7,10 +7,18 @@ declarations. Sections are frozen and reject keys that they do not know.
 
 from __future__ import annotations
 
+import re
 from pathlib import Path
 from typing import Annotated, Any, ClassVar, Literal
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationInfo
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    ValidationInfo,
+)
 
 
 def setting(
@@ -34,6 +42,18 @@ def _resolve(value: object, info: ValidationInfo) -> object:
 InputPath = Annotated[Path, BeforeValidator(_resolve), "input"]
 OutputPath = Annotated[Path, BeforeValidator(_resolve), "output"]
 Share = Annotated[float, Field(ge=0, le=1)]
+Positive = Annotated[float, Field(gt=0)]
+
+
+def _regex(value: str) -> str:
+    try:
+        re.compile(value)
+    except re.error as error:
+        raise ValueError(f"not a regular expression ({error})") from None
+    return value
+
+
+Regex = Annotated[str, AfterValidator(_regex)]
 
 
 class Section(BaseModel):
@@ -62,24 +82,35 @@ class StudySettings(Section):
     )
 
 
+class FileSection(Section):
+    """A section whose table is a file of the study's own."""
+
+    file: InputPath | None = setting("CSV, Excel or Parquet.", None)
+    sheet: str | None = setting("Sheet, where the file is a workbook; default: the first.", None)
+    layer: str | None = setting("Layer, where the file is a GIS file with several.", None)
+    encoding: str = setting("Encoding of a CSV file: 'utf-8', 'latin-1', 'cp1252', ...", "utf-8")
+
+
 class SiteColumns(Section):
     """The study's own column names in the sites file."""
 
     site_id: str = setting("Site's identifier.", "site_id")
-    access_id: str = setting("Access point's identifier; may be absent.", "access_id")
-    site_name: str = setting("Name to show.", "site_name")
-    role: str = setting("'site' (to be valued) or 'substitute'.", "role")
-    lon: str = setting("Longitude, WGS 84.", "lon")
-    lat: str = setting("Latitude, WGS 84.", "lat")
-    fee: str = setting("Entrance fee per person; absent means free.", "fee")
+    access_id: str = setting(
+        "Access point's identifier; absent: numbered within the site.", "access_id"
+    )
+    site_name: str = setting("Name to show; absent: the identifier.", "site_name")
+    role: str = setting("'site' (to be valued) or 'substitute'; absent: 'site'.", "role")
+    lon: str = setting("Longitude, WGS 84; may be absent in a GIS layer of points.", "lon")
+    lat: str = setting("Latitude, WGS 84; may be absent in a GIS layer of points.", "lat")
+    fee: str = setting("Entrance fee per person and visit; absent: free.", "fee")
 
 
-class SitesSettings(Section):
+class SitesSettings(FileSection):
     """Where the sites and their substitutes are."""
 
     section_name: ClassVar[str] = "sites"
     file: InputPath | None = setting(
-        "CSV, Excel, Parquet or GIS layer; one row per access point.", None
+        "CSV, Excel, Parquet or GIS layer of points; one row per access point.", None
     )
     columns: SiteColumns = setting("Column names in that file.", SiteColumns())
 
@@ -91,26 +122,28 @@ class ZoneColumns(Section):
     postal_code: str = setting("Postal code of the zone; absent: the identifier.", "postal_code")
     zone_name: str = setting("Name to show; may be absent.", "zone_name")
     population: str = setting("People who live there.", "population")
-    household_income: str = setting("Household income per year.", "household_income")
+    household_income: str = setting(
+        "Household income per year; absent: [costs] fallback_household_income.",
+        "household_income",
+    )
     lon: str = setting("Longitude of the centroid, WGS 84; may be absent with polygons.", "lon")
     lat: str = setting("Latitude of the centroid, WGS 84; may be absent with polygons.", "lat")
 
 
-class ZonesSettings(Section):
+class ZonesSettings(FileSection):
     """Zones of origin with their people and income."""
 
     section_name: ClassVar[str] = "zones"
     file: InputPath | None = setting(
         "CSV, Excel or Parquet with centroids, or a GIS layer with polygons.", None
     )
-    layer: str | None = setting("Layer in that file, where it has several.", None)
     columns: ZoneColumns = setting("Column names in that file.", ZoneColumns())
     covariates: tuple[str, ...] = setting(
-        "Further columns of the zones file to carry into the finished table.", ()
+        "Further columns of the zones file (numbers) to carry into the finished table.", ()
     )
-    postal_code_pattern: str | None = setting(
-        "Regular expression that a normalised code matches fully; "
-        "default: any code that is in the zones file is well formed.",
+    postal_code_pattern: Regex | None = setting(
+        "Regular expression that a normalised code (capitals and digits only) matches fully; "
+        "default: a code is well formed when some code of the zones file has the same form.",
         None,
     )
 
@@ -118,7 +151,7 @@ class ZonesSettings(Section):
 class VisitColumns(Section):
     """The study's own column names in the visit records."""
 
-    record_id: str = setting("Record's identifier; absent: the row number.", "record_id")
+    record_id: str = setting("Record's identifier; absent: its row in the file.", "record_id")
     postal_code: str = setting("Postal code of the visitor's home.", "postal_code")
     site_id: str = setting("Site visited; may be absent with one site.", "site_id")
     trips: str = setting("Trips that the record stands for; absent: 1.", "trips")
@@ -126,25 +159,40 @@ class VisitColumns(Section):
     weight: str = setting("Sampling weight; absent: 1.", "weight")
 
 
-class VisitsSettings(Section):
+class CrosswalkColumns(Section):
+    """The study's own column names in the crosswalk."""
+
+    postal_code: str = setting("Code that is no zone of its own.", "postal_code")
+    zone_id: str = setting("Zone that the code belongs to.", "zone_id")
+
+
+class VisitsSettings(FileSection):
     """Visit records and what turns them into a year of visits."""
 
     section_name: ClassVar[str] = "visits"
     file: InputPath | None = setting("CSV, Excel or Parquet; one row per record.", None)
-    sheet: str | None = setting("Sheet, where the file is a workbook.", None)
     columns: VisitColumns = setting("Column names in that file.", VisitColumns())
     crosswalk: InputPath | None = setting(
-        "CSV of codes that are no zone of their own (columns postal_code, zone_id).", None
+        "CSV, Excel or Parquet of codes that are no zone of their own (PO boxes, retired codes).",
+        None,
     )
-    foreign_codes: tuple[str, ...] = setting(
-        "Regular expressions of codes that belong to other countries.", ()
+    crosswalk_columns: CrosswalkColumns = setting(
+        "Column names in the crosswalk.", CrosswalkColumns()
+    )
+    foreign_codes: tuple[Regex, ...] = setting(
+        "Regular expressions of codes of other countries; matched in full against the code as "
+        "written (in capitals) and as normalised, after the zones' own codes.",
+        (),
     )
     max_unmatched_share: Share = setting(
-        "The run stops when a larger share of the records has no zone.", 0.1, usual="0.05 to 0.2"
+        "The run stops when a larger share of the records that are not foreign has no zone.",
+        0.1,
+        unit="share",
+        usual="0.05 to 0.2",
     )
-    annual_visits: dict[str, float] = setting(
-        "Known person-visits in a year, per site; the records are expanded to it. "
-        "A site that is not named is taken as counted in full.",
+    annual_visits: dict[str, Positive] = setting(
+        "Known person-visits in a year, per site, visitors from abroad included; the records are "
+        "expanded to it. A site that is not named is taken as counted in full.",
         {},
         unit="visits/year",
         usual="a counter or ticket total",
@@ -184,8 +232,37 @@ class CostsSettings(Section):
         usual="0.10 to 0.45 in EUR or USD; common practice, no source",
         ge=0,
     )
-    party_size: Literal["records"] | float = setting(
-        "People who share the vehicle: 'records' takes the mean of the visit records.",
+    toll_per_km: float = setting(
+        "Toll per vehicle and km of toll road.",
+        0.0,
+        unit="currency/km",
+        usual="0.05 to 0.15 in EUR; common practice, no source",
+        ge=0,
+    )
+    ferry_fare_per_vehicle: float = setting(
+        "Ferry fare of the vehicle (with its driver where the operator counts so), one way.",
+        0.0,
+        unit="currency",
+        usual="the operator's tariff",
+        ge=0,
+    )
+    ferry_fare_per_person: float = setting(
+        "Ferry fare of each person, one way.",
+        0.0,
+        unit="currency",
+        usual="the operator's tariff",
+        ge=0,
+    )
+    other_cost_per_person: float = setting(
+        "Other spending that the trip itself makes necessary, per person and trip.",
+        0.0,
+        unit="currency",
+        usual="0; food and gear are no part of the price of the trip",
+        ge=0,
+    )
+    party_size: Literal["records"] | Positive = setting(
+        "People who share the vehicle: a number, or 'records': the mean per trip of the site's "
+        "visit records (of all records for substitutes).",
         "records",
         unit="people",
         usual="2 to 3.5",
@@ -236,6 +313,11 @@ class MarketSettings(Section):
         unit="min",
         usual="120 to 240",
         gt=0,
+    )
+    sites_are_substitutes: bool = setting(
+        "Whether the other valued sites count as substitutes of a site, too.",
+        False,
+        usual="false; true where the sites are alike",
     )
 
 

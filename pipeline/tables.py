@@ -29,6 +29,7 @@ PLACED_STATUSES = ("matched", "crosswalk", "point_in_zone")
 ROUTE_STATUSES = ("routed", "within_zone", "no_path", "too_far_from_road")
 REACHED_STATUSES = ("routed", "within_zone")
 SITE_ROLES = ("site", "substitute")
+CENTROID_SOURCES = ("given", "inside_polygon", "population_weighted")
 
 
 # --- what the study brings -------------------------------------------------------------------
@@ -62,9 +63,7 @@ class Zones(Table):
     )
     lon: Series[float] = column("longitude of the zone's centroid", unit="degree", ge=-180, le=180)
     lat: Series[float] = column("latitude of the zone's centroid", unit="degree", ge=-90, le=90)
-    centroid_source: Series[str] = column(
-        "where the centroid comes from: given, inside_polygon, population_weighted"
-    )
+    centroid_source: Series[str] = column("where the centroid comes from", isin=CENTROID_SOURCES)
 
     class Config:
         unique = ["zone_id"]
@@ -119,12 +118,17 @@ class Origins(Table):
 
 
 class OriginSummary(Table):
-    """How many records, trips and people have each status; the counts add up to what went in."""
+    """Records, trips and person-visits by site and status; they add up to what went in."""
 
     site_id: Series[str] = column("site that was visited")
     origin_status: Series[str] = column("how the zone was found, or why not", isin=ORIGIN_STATUSES)
     records: Series[int] = column("visit records", unit="records", ge=0)
     trips: Series[float] = column("trips in those records", unit="trips", ge=0)
+    person_visits: Series[float] = column(
+        "trips times party size times weight; unknown party sizes at the site's mean",
+        unit="visits",
+        ge=0,
+    )
     share: Series[float] = column("share of the site's records", ge=0, le=1)
 
     class Config:
@@ -212,13 +216,25 @@ class RouteLines(Table):
 
 
 class Costs(Table):
-    """Price of a visit per person, itemised: one row per zone and site."""
+    """Price of a visit per person, itemised: one row per zone and site.
+
+    Amounts keep their full precision; the items of a row add up to `travel_cost`.
+    """
 
     zone_id: Series[str] = column("zone of origin")
     site_id: Series[str] = column("site or substitute")
     round_trip_km: Series[float] = column("there and back", unit="km", ge=0, nullable=True)
     round_trip_hours: Series[float] = column("there and back", unit="h", ge=0, nullable=True)
+    driven_km: Series[float] = column(
+        "of round_trip_km, on the vehicle's own wheels (not by ferry)",
+        unit="km",
+        ge=0,
+        nullable=True,
+    )
     party_size: Series[float] = column("people who share the vehicle's cost", unit="people", gt=0)
+    time_value_per_hour: Series[float] = column(
+        "what an hour of travel costs a person", unit="currency/h", ge=0, nullable=True
+    )
     vehicle_cost: Series[float] = column(
         "vehicle, per person and trip", unit="currency", ge=0, nullable=True
     )
@@ -231,7 +247,9 @@ class Costs(Table):
     time_cost: Series[float] = column(
         "travel time, per person and trip", unit="currency", ge=0, nullable=True
     )
-    fee_cost: Series[float] = column("entrance, per person and trip", unit="currency", ge=0)
+    fee_cost: Series[float] = column(
+        "entrance, per person and trip", unit="currency", ge=0, nullable=True
+    )
     other_cost: Series[float] = column(
         "other spending, per person and trip", unit="currency", ge=0, nullable=True
     )
@@ -265,11 +283,14 @@ class ZoneTable(Table):
     zone_id: Series[str] = column("zone of origin")
     site_id: Series[str] = column("site that is valued")
     population: Series[float] = column("people who live in the zone", unit="people", ge=0)
-    household_income: Series[float] = column(
+    household_income: Series[float] | None = column(
         "household income per year", unit="currency/year", gt=0, nullable=True
     )
     sampled_visits: Series[float] | None = column(
         "person-visits in the records, before expansion", unit="visits", ge=0, nullable=True
+    )
+    expansion_factor: Series[float] | None = column(
+        "visits per year that a sampled visit of the site stands for", ge=0, nullable=True
     )
     visits: Series[float] = column(
         "person-visits per year, expanded to the known total", unit="visits/year", ge=0
@@ -295,6 +316,7 @@ class ZoneTable(Table):
         ge=0,
         nullable=True,
     )
+    substitute_id: Series[str] | None = column("the cheapest substitute", nullable=True)
     in_market: Series[bool] | None = column("whether the zone belongs to the market of the site")
     market_note: Series[str] | None = column("why the zone is left out", nullable=True)
 
