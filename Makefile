@@ -36,7 +36,7 @@ validate: $(VENV)/ready-test  ## the slow checks against outside sources
 	$(RUN) -m pytest -m slow
 
 docs: $(VENV)/ready  ## the reference documents that are made from the code
-	@$(RUN) -m pipeline.template docs
+	@$(RUN) -m pipeline.template
 
 clean:  ## remove what the flow made for STUDY (inputs stay)
 	rm -rf data/$(STUDY)/work data/$(STUDY)/output

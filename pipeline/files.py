@@ -5,6 +5,7 @@ A file or folder is written beside its final place, flushed to the disk, and ren
 
 from __future__ import annotations
 
+import fcntl
 import os
 import shutil
 import tempfile
@@ -16,6 +17,7 @@ import geopandas as gpd
 import pandas as pd
 import pyarrow.parquet as pq
 
+from pipeline.errors import PipelineError
 from pipeline.schema import Table
 
 
@@ -59,6 +61,26 @@ def atomic_folder(path: Path) -> Iterator[Path]:
     finally:
         shutil.rmtree(temporary, ignore_errors=True)
         shutil.rmtree(retired, ignore_errors=True)
+
+
+@contextmanager
+def locked(folder: Path) -> Iterator[None]:
+    """Hold a folder for one run; a second run there is refused, not mixed in.
+
+    Raises
+    ------
+    PipelineError
+        Another run holds the folder.
+    """
+    folder.mkdir(parents=True, exist_ok=True)
+    with (folder / ".lock").open("w") as handle:
+        try:
+            fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
+        except BlockingIOError:
+            raise PipelineError(
+                f"another run is at work in {folder}; wait for it, or give --output another folder."
+            ) from None
+        yield
 
 
 def _flush(path: Path) -> None:

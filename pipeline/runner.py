@@ -17,7 +17,7 @@ import pandas as pd
 
 from pipeline import stamps
 from pipeline.errors import PipelineError, StudyError
-from pipeline.files import atomic_folder, read_table, write_table, write_text
+from pipeline.files import atomic_folder, locked, read_table, write_table, write_text
 from pipeline.flow import INPUTS, Either, Kind, Maybe, Stage, brought, plan
 from pipeline.inputs import read_brought
 from pipeline.publish import Publication
@@ -35,7 +35,6 @@ class Run:
     tell: Tell
     again: bool = False
     _inputs: dict[Kind, Any] = field(default_factory=dict)
-    _stamps: dict[str, str] = field(default_factory=dict)
 
     def upto(self, last: str) -> None:
         """Run the stages that the study needs, up to and with `last`."""
@@ -46,7 +45,11 @@ class Run:
                 f"this study brings a ready table and has no stage {last!r}; "
                 f"its stages: {', '.join(names)}."
             )
-        stages = stages[: names.index(last) + 1]
+        with locked(self.folder / "work"):
+            self._upto(stages[: names.index(last) + 1], whole=last == names[-1])
+
+    def _upto(self, stages: tuple[Stage, ...], *, whole: bool) -> None:
+        last = stages[-1].name
         stale = {stage.name for stage in stages if not self._is_done(stage)}
         self._check_inputs([stage for stage in stages if stage.name in stale])
         for stage in stages:
@@ -54,7 +57,7 @@ class Run:
                 self.tell(f"{stage.name}: nothing has changed")
             else:
                 self._run(stage)
-        if last == names[-1]:
+        if whole:
             self._stamp_whole_run(stages)
 
     # --- what is done ------------------------------------------------------------------------

@@ -48,7 +48,7 @@ class Study(BaseModel):
     roads: RoadsSettings = RoadsSettings()
     routes: RoutesSettings = RoutesSettings()
     # None only where the study brings a finished table and prices nothing.
-    costs: CostsSettings = Field(default_factory=lambda: cast(CostsSettings, None))
+    costs: CostsSettings = Field(default_factory=lambda: cast("CostsSettings", None))
     market: MarketSettings = MarketSettings()
     demand: DemandSettings = DemandSettings()
     surplus: SurplusSettings = SurplusSettings()
@@ -58,10 +58,11 @@ class Study(BaseModel):
 
     def only(self, sections: tuple[type[Section], ...]) -> Study:
         """A study that holds [study] and the given sections; any other raises AttributeError."""
-        names = ["study", *(section.section_name for section in sections)]
-        return Study.model_construct(
-            _fields_set=set(names), **{name: getattr(self, name) for name in names}
-        )
+        names = {"study", *(section.section_name for section in sections)}
+        view = self.model_copy()
+        for name in set(vars(view)) - names:
+            del vars(view)[name]
+        return view
 
     def input_files(self) -> list[Path]:
         """Every input file that the study names, in the order of the file, without doubles."""
@@ -156,7 +157,7 @@ def _paths(value: Any) -> Iterator[Path]:
     if isinstance(value, BaseModel):
         for name, field in type(value).model_fields.items():
             if "output" not in field.metadata:
-                yield from _paths(getattr(value, name))
+                yield from _paths(vars(value).get(name))
     elif isinstance(value, tuple):
         for item in value:
             yield from _paths(item)

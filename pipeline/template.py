@@ -15,6 +15,7 @@ from pydantic_core import PydanticUndefined
 from pipeline.errors import StudyError
 from pipeline.settings import SECTIONS, Section
 from pipeline.stamps import CONFIG
+from pipeline.tables import TABLES
 
 WIDTH = 96
 
@@ -60,14 +61,15 @@ def commented_study(name: str) -> str:
     """A study file with every key, its meaning, unit and usual value as comments."""
     filled = {key: _fill(value, name) for key, value in FILLED.items()}
     filled |= {"study.name": name, "study.folder": f"../data/{name}"}
-    parts = [
+    head = (
         f"# Study file of {name}. Paths are relative to this file.\n"
         "# A key that is commented out has the value that it shows.\n"
-        "# Look at every 'usual' value: those assumptions move the answer.\n"
-    ]
-    for section in SECTIONS:
-        parts.append("\n".join(_section_lines(section, section.section_name, filled)))
-    return "\n".join(parts) + "\n"
+        "# Look at every 'usual' value: those assumptions move the answer.\n\n"
+    )
+    return head + "".join(
+        "\n".join(_section_lines(section, section.section_name, filled)) + "\n"
+        for section in SECTIONS
+    )
 
 
 def settings_reference() -> str:
@@ -77,6 +79,23 @@ def settings_reference() -> str:
         parts.append(f"## [{section.section_name}]\n\n{_summary(section)}\n")
         parts.append("| key | default | unit | usual value | meaning |\n|---|---|---|---|---|")
         parts.append("\n".join(_reference_rows(section, "")) + "\n")
+    return "\n".join(parts)
+
+
+def tables_reference() -> str:
+    """Every table and column as a Markdown document."""
+    parts = ["# Data dictionary\n\nMoney is in the study's currency.\n"]
+    for table in TABLES:
+        parts.append(f"## {table.table_name()}\n\n{table.describe()}\n")
+        parts.append("| column | type | unit | missing | meaning |\n|---|---|---|---|---|")
+        parts.append(
+            "\n".join(
+                f"| `{row.column}` | {row.type} | {row.unit} | "
+                f"{'may be' if row.missing_allowed else 'never'} | {row.meaning} |"
+                for row in table.dictionary().itertuples()
+            )
+            + "\n"
+        )
     return "\n".join(parts)
 
 
@@ -158,3 +177,15 @@ def _toml(value: Any) -> str:
     if isinstance(value, tuple | list):
         return "[" + ", ".join(map(_toml, value)) + "]"
     return json.dumps(value, ensure_ascii=False)
+
+
+def main() -> None:
+    """Write the documents that are made from the code (``make docs``)."""
+    docs = CONFIG.parent / "docs"
+    docs.mkdir(exist_ok=True)
+    (docs / "study_file.md").write_text(settings_reference(), encoding="utf-8")
+    (docs / "tables.md").write_text(tables_reference(), encoding="utf-8")
+
+
+if __name__ == "__main__":
+    main()
