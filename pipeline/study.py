@@ -191,9 +191,10 @@ def _key(where: list[str]) -> str:
 def _unknown_key(where: list[str]) -> str:
     valid = _valid_keys(where[:-1])
     near = difflib.get_close_matches(where[-1], valid, n=1, cutoff=0.0)
-    what = "unknown key" if len(where) > 1 else "unknown section"
+    kind = "key " if len(where) > 1 else ""
     return (
-        f"{what} {_key(where)}; the nearest valid one is {near[0]!r} (valid: {', '.join(valid)})."
+        f"unknown {kind}{_key(where)}; the nearest valid one is {near[0]!r} "
+        f"(valid: {', '.join(valid)})."
     )
 
 
