@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import re
-from numbers import Integral
+from collections.abc import Mapping
+from dataclasses import dataclass, field
 from typing import Any, Self, cast
 
+import numpy as np
 import pandas as pd
 import pandera.pandas as pa
 
@@ -15,6 +17,32 @@ from pipeline.errors import TableError
 def column(meaning: str, *, unit: str = "", **checks: Any) -> Any:
     """Declare a column: what it means, its unit ('' for none), its checks."""
     return pa.Field(description=meaning, metadata={"unit": unit}, **checks)
+
+
+@dataclass(frozen=True)
+class Source:
+    """Where a table came from, so that an error can speak of the file as its owner knows it.
+
+    Parameters
+    ----------
+    name : the file's name, or the stage's.
+    names : the owner's column names by ours, where they differ.
+    first_row : number of the first data row as a person counts it (2 under a header line).
+    """
+
+    name: str
+    names: Mapping[str, str] = field(default_factory=dict)
+    first_row: int = 1
+
+    def column(self, name: str) -> str:
+        """The column's name as its owner knows it."""
+        return self.names.get(name, name)
+
+    def row(self, index: object) -> str:
+        """' in row 7' for a position that counts from 0; '' for what is no position."""
+        if isinstance(index, int | float | np.integer) and index == index // 1:
+            return f" in row {int(index) + self.first_row}"
+        return ""
 
 
 class Table(pa.DataFrameModel):
@@ -30,20 +58,21 @@ class Table(pa.DataFrameModel):
         return re.sub(r"(?<!^)(?=[A-Z])", "_", cls.__name__).lower()
 
     @classmethod
-    def checked(cls, frame: pd.DataFrame, *, source: str = "") -> pd.DataFrame:
+    def checked(cls, frame: pd.DataFrame, *, source: str | Source = "") -> pd.DataFrame:
         """Return `frame` with declared types, or say what is wrong with it.
 
         Parameters
         ----------
         frame : any columns in any order; declared columns come first in the result.
-        source : where it came from, for the message (a file name, a stage).
+        source : where it came from, for the message (a file name, a stage, or a `Source` with
+            the owner's own column names and row numbers).
 
         Raises
         ------
         TableError
             A declared column is missing, or holds a wrong type, value or duplicate key.
         """
-        where = source or cls.table_name()
+        where = source if isinstance(source, Source) else Source(source or cls.table_name())
         try:
             table = cls.validate(frame, lazy=True)
         except pa.errors.SchemaErrors as error:
@@ -88,36 +117,48 @@ def _type_word(dtype: str) -> str:
 
 
 def _explain(
-    table: type[Table], frame: pd.DataFrame, error: pa.errors.SchemaErrors, where: str
+    table: type[Table], frame: pd.DataFrame, error: pa.errors.SchemaErrors, where: Source
 ) -> str:
     """One sentence per kind of failure: what, how many, an example, the remedy."""
     missing = [c for c in _required(table) if c not in frame.columns]
     if missing:
         have = ", ".join(map(str, frame.columns[:20]))
         return (
-            f"{where}: column {missing[0]!r} is missing (needed: {', '.join(missing)}; "
+            f"{where.name}: column {missing[0]!r} is missing (needed: {', '.join(missing)}; "
             f"the table has: {have}). Add it, or map the table's own name to it in the study file."
         )
     cases = error.failure_cases
-    first = cases.iloc[0]
+    first = _first_case(cases)
     if "unique" in str(first["check"]):
         return _explain_duplicates(table, frame, where)
     name = str(first["column"])
     same = cases[(cases["check"] == first["check"]) & (cases["column"] == first["column"])]
+    number = "1 value" if len(same) == 1 else f"{len(same)} values"
+    verb = "is" if len(same) == 1 else "are"
+    words = _check_words(str(first["check"]), table, name)
+    example = "" if pd.isna(first["failure_case"]) else f" {_plain(first['failure_case'])}"
     return (
-        f"{where}: {len(same)} value(s) in column {name!r} {_check_words(str(first['check']))}; "
-        f"first: {_plain(first['failure_case'])}{_row_word(first['index'])}. "
-        f"{name!r} is: {_meaning(table, name)}. Correct the table."
+        f"{where.name}: {number} in column {where.column(name)!r} {verb} {words}; "
+        f"first:{example}{where.row(first['index'])}. "
+        f"{where.column(name)!r} is: {_meaning(table, name)}. Correct the table."
     )
 
 
-def _explain_duplicates(table: type[Table], frame: pd.DataFrame, where: str) -> str:
+def _first_case(cases: pd.DataFrame) -> pd.Series[Any]:
+    """The failure to speak of: wrong types before wrong values, then the order of the rows."""
+    coerced = cases["check"].astype(str).str.startswith("coerce_dtype")
+    return cases[coerced].iloc[0] if coerced.any() else cases.iloc[0]
+
+
+def _explain_duplicates(table: type[Table], frame: pd.DataFrame, where: Source) -> str:
     key = list(table.to_schema().unique or [])
     doubled = frame[frame.duplicated(key, keep=False)]
-    example = ", ".join(f"{name} {_plain(doubled[name].iloc[0])}" for name in key)
+    same = (doubled[key] == doubled[key].iloc[0]).all(axis=1)
+    example = ", ".join(f"{where.column(name)} {_plain(doubled[name].iloc[0])}" for name in key)
+    rows = " and".join(where.row(index) for index in doubled.index[same][:2])
     return (
-        f"{where}: {len(doubled)} rows share a key that must be unique "
-        f"({', '.join(key)}); first: {example}{_row_word(doubled.index[0])}. "
+        f"{where.name}: {len(doubled)} rows share a key that must be unique "
+        f"({', '.join(map(where.column, key))}); first: {example}{rows}. "
         "Remove or merge the duplicate rows."
     )
 
@@ -137,24 +178,19 @@ def _plain(value: object) -> str:
     return repr(item() if callable(item) else value)
 
 
-def _row_word(index: object) -> str:
-    """Row as a person counts it: data rows from 1."""
-    return f" in row {int(index) + 1}" if isinstance(index, Integral) else ""
-
-
 _CHECKS = {
-    "not_nullable": "are missing",
-    "greater_than": "must be greater than",
-    "greater_than_or_equal_to": "must be at least",
-    "less_than_or_equal_to": "must be at most",
-    "isin": "must be one of",
+    "not_nullable": "missing",
+    "greater_than": "not greater than",
+    "greater_than_or_equal_to": "below",
+    "less_than_or_equal_to": "above",
+    "isin": "not one of",
 }
 
 
-def _check_words(check: str) -> str:
-    """A check in words: `greater_than(0)` becomes 'must be greater than 0'."""
-    name, _, argument = check.partition("(")
-    argument = argument.rstrip(")")
-    if name in ("coerce_dtype", "dtype"):
-        return f"must be of type {_type_word(argument.strip(chr(39)))}"
-    return f"{_CHECKS.get(name, name)} {argument}".strip()
+def _check_words(check: str, table: type[Table], name: str) -> str:
+    """A failed check in words: `greater_than(0)` becomes 'not greater than 0'."""
+    kind, _, argument = check.partition("(")
+    if kind in ("coerce_dtype", "dtype"):
+        return f"not of type {_type_word(str(table.to_schema().columns[name].dtype))}"
+    argument = argument.strip("[]()")
+    return f"{_CHECKS.get(kind, kind)} {argument}".strip()

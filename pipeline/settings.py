@@ -316,7 +316,7 @@ class MarketSettings(Section):
     )
     sites_are_substitutes: bool = setting(
         "Whether the other valued sites count as substitutes of a site, too.",
-        False,
+        default=False,
         usual="false; true where the sites are alike",
     )
 
