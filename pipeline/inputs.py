@@ -1,0 +1,289 @@
+"""The study's own files: visit records, zones, crosswalk, sites, and tables that it brings.
+
+Each reader maps the study's own column names to ours, fills what may be absent, and checks the
+result; an error names the file, the row and the column as their owner knows them.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import cast
+
+import geopandas as gpd
+import numpy as np
+import pandas as pd
+
+from pipeline.centroids import locate
+from pipeline.errors import InputError, StudyError, TableError
+from pipeline.schema import Table
+from pipeline.settings import FileSection, Section
+from pipeline.study import Study
+from pipeline.tables import Crosswalk, Sites, VisitRecords, Zones
+from pipeline.userfiles import PARQUET, TEXT, UserTable, first_true, read_user_table
+
+
+def read_visit_records(study: Study) -> pd.DataFrame:
+    """Read the visit records.
+
+    Absent columns: `record_id` is the row in the file; `site_id` is the only site to be valued;
+    `trips` and `weight` are 1; `party_size` is unknown.
+
+    Raises
+    ------
+    TableError
+        The file is empty, lacks a column, or holds a value that cannot be right: a party of
+        zero, a record twice, a site that is not in the sites file.
+    """
+    columns = study.visits.columns
+    table = _read(study.visits)
+    if table.frame.empty:
+        raise TableError(f"{table.name}: no visit record; fill in the rows under the header.")
+    sites = read_sites(study)
+    mapped = _Mapped(table, columns)
+    rows = table.frame.index
+    frame = pd.DataFrame(
+        {
+            "record_id": mapped.texts("record_id", pd.Series(rows + table.first_row, rows)),
+            "postal_code_raw": mapped.texts("postal_code"),
+            "site_id": mapped.texts("site_id", _only_site(sites)),
+            "trips": mapped.numbers("trips", 1.0),
+            "party_size": mapped.numbers("party_size", np.nan),
+            "weight": mapped.numbers("weight", 1.0),
+        },
+        index=rows,
+    )
+    names = {**columns.model_dump(), "postal_code_raw": columns.postal_code}
+    checked = VisitRecords.checked(frame, source=table.source(names))
+    _check_sites(table, columns.site_id, checked["site_id"], sites)
+    return checked.reset_index(drop=True)
+
+
+def read_zones(study: Study) -> gpd.GeoDataFrame:
+    """Read the zones of origin, with polygons where the file has them.
+
+    Absent columns: `postal_code` and `zone_name` are the identifier; `household_income` is
+    missing; `lon` and `lat` are a point inside the polygon. The columns that [zones] covariates
+    names are carried along under their own names.
+
+    Returns
+    -------
+    The `zones` table with `geometry` in EPSG:4326: polygons, or the centroid points.
+
+    Raises
+    ------
+    TableError
+        A column is missing, a zone is there twice, a population is negative, a layer has no
+        CRS, or a zone has neither polygon nor centroid.
+    """
+    columns = study.zones.columns
+    table = _read(study.zones)
+    if table.frame.empty:
+        raise TableError(f"{table.name}: no zone; fill in the rows under the header.")
+    mapped = _Mapped(table, columns)
+    zone_id = mapped.texts("zone_id")
+    frame = pd.DataFrame(
+        {
+            "zone_id": zone_id,
+            "postal_code": mapped.texts("postal_code", zone_id),
+            "zone_name": mapped.texts("zone_name", zone_id),
+            "population": mapped.numbers("population"),
+            "household_income": mapped.numbers("household_income", np.nan),
+        }
+    )
+    place = locate(table, lon=columns.lon, lat=columns.lat)
+    located = pd.concat([frame, place, _covariates(study, table)], axis=1)
+    zones = gpd.GeoDataFrame(located, geometry="geometry", crs=place.crs)
+    checked = Zones.checked(zones, source=table.source(columns.model_dump()))
+    return cast("gpd.GeoDataFrame", checked.reset_index(drop=True))
+
+
+def read_crosswalk(study: Study) -> pd.DataFrame | None:
+    """Read the crosswalk of codes that are no zone of their own; None where there is none."""
+    path = study.visits.crosswalk
+    if path is None:
+        return None
+    columns = study.visits.crosswalk_columns
+    table = read_user_table(path, encoding=study.visits.encoding)
+    mapped = _Mapped(table, columns)
+    frame = pd.DataFrame(
+        {"postal_code": mapped.texts("postal_code"), "zone_id": mapped.texts("zone_id")}
+    )
+    checked = Crosswalk.checked(frame, source=table.source(columns.model_dump()))
+    return checked.reset_index(drop=True)
+
+
+def read_sites(study: Study) -> pd.DataFrame:
+    """Read the sites to be valued and their substitutes, one row per access point.
+
+    Absent columns: `access_id` counts the rows of a site from 1; `site_name` is the identifier;
+    `role` is 'site'; `fee` is 0.
+
+    Raises
+    ------
+    TableError
+        A column is missing, an access point is there twice, no site is to be valued, or a site
+        has two roles.
+    """
+    columns = study.sites.columns
+    table = _read(study.sites)
+    mapped = _Mapped(table, columns)
+    site_id = mapped.texts("site_id")
+    numbered = (site_id.groupby(site_id).cumcount() + 1).astype("str")
+    frame = pd.DataFrame(
+        {
+            "site_id": site_id,
+            "access_id": mapped.texts("access_id", numbered),
+            "site_name": mapped.texts("site_name", site_id),
+            "role": mapped.texts("role", "site").str.lower(),
+            "fee": mapped.numbers("fee", 0.0),
+        }
+    )
+    place = locate(table, lon=columns.lon, lat=columns.lat)
+    frame = frame.assign(lon=place["lon"], lat=place["lat"])
+    checked = Sites.checked(frame, source=table.source(columns.model_dump()))
+    _check_roles(table, checked)
+    return checked.reset_index(drop=True)
+
+
+def read_brought(table_class: type[Table], path: Path) -> pd.DataFrame:
+    """Read a table that the study brings ready made.
+
+    Declared columns become what they are declared to be; of the others, a column of numbers
+    becomes numbers unless a value starts with a needless zero, as codes do.
+
+    Parameters
+    ----------
+    table_class : its declaration.
+    path : CSV or Parquet, with our column names.
+
+    Raises
+    ------
+    TableError
+        The file is no such table.
+    """
+    if path.suffix.lower() not in (*TEXT, *PARQUET):
+        raise InputError(
+            f"{path.name}: a ready {table_class.table_name()} is read from CSV or Parquet; "
+            "save it as one of them."
+        )
+    table = read_user_table(path)
+    declared = table_class.to_schema().columns
+    frame = pd.DataFrame(index=table.frame.index)
+    for name in table.frame.columns:
+        kind = str(declared[name].dtype) if name in declared else _kind(table, name)
+        frame[name] = _as_kind(table, str(name), kind)
+    if frame.empty:
+        raise TableError(f"{table.name}: the table has no row; fill it in.")
+    return table_class.checked(frame, source=table.source({})).reset_index(drop=True)
+
+
+class _Mapped:
+    """Columns of a user's table by our names; what may be absent has a default."""
+
+    def __init__(self, table: UserTable, columns: Section) -> None:
+        self.table, self.columns = table, columns
+
+    def texts(self, name: str, default: object = None) -> pd.Series[str]:
+        column = self._column(name, default)
+        if column is not None:
+            return self.table.texts(column)
+        return self._filled(default).astype("str").where(self._filled(default).notna())
+
+    def numbers(self, name: str, default: float | None = None) -> pd.Series[float]:
+        column = self._column(name, default)
+        return self._filled(default) if column is None else self.table.numbers(column)
+
+    def _filled(self, default: object) -> pd.Series:
+        if isinstance(default, pd.Series):
+            return default
+        return pd.Series(default, index=self.table.frame.index)
+
+    def _column(self, name: str, default: object) -> str | None:
+        """The user's column; None where it is absent and may be."""
+        column = str(getattr(self.columns, name))
+        asked_for = name in self.columns.model_fields_set
+        if default is None or asked_for or self.table.has(column):
+            meaning = type(self.columns).model_fields[name].description or name
+            self.table.need(column, meaning.split(";")[0].rstrip(".").lower())
+            return column
+        return None
+
+
+def _read(section: FileSection) -> UserTable:
+    """Read a section's own file."""
+    if section.file is None:
+        raise StudyError(
+            f"[{section.section_name}] file is needed and missing; name the file in the study file."
+        )
+    return read_user_table(
+        section.file, sheet=section.sheet, layer=section.layer, encoding=section.encoding
+    )
+
+
+def _covariates(study: Study, table: UserTable) -> pd.DataFrame:
+    """Further columns of the zones, as numbers."""
+    fixed = {*Zones.columns(), "site_id", "visits", "travel_cost", "geometry"}
+    for name in study.zones.covariates:
+        if name in fixed:
+            raise StudyError(f"[zones] covariates: {name!r} is a column of our own; remove it.")
+        table.need(name, "named in [zones] covariates")
+    columns = {name: table.numbers(name) for name in study.zones.covariates}
+    return pd.DataFrame(columns, index=table.frame.index)
+
+
+def _only_site(sites: pd.DataFrame) -> str | None:
+    """The one site to be valued, for records that do not name theirs; None if there are more."""
+    valued = sites.loc[sites["role"] == "site", "site_id"].unique()
+    return str(valued[0]) if len(valued) == 1 else None
+
+
+def _check_sites(table: UserTable, column: str, site_id: pd.Series, sites: pd.DataFrame) -> None:
+    """Every record is of a known site."""
+    unknown = ~site_id.isin(sites["site_id"])
+    if unknown.any():
+        first = first_true(unknown)
+        raise TableError(
+            f"{table.name}: {int(unknown.sum())} of {len(site_id)} records are of a site that is "
+            f"not in the sites file; first: {column} {site_id.iloc[first]!r}"
+            f"{table.row(unknown, first)} (sites: {', '.join(sites['site_id'].unique())}). "
+            "Add the site to the sites file, or correct the records."
+        )
+
+
+def _check_roles(table: UserTable, sites: pd.DataFrame) -> None:
+    """At least one site is to be valued, and each site has one role."""
+    if not (sites["role"] == "site").any():
+        raise TableError(f"{table.name}: no row has the role 'site'; say which site is valued.")
+    roles = sites.groupby("site_id")["role"].nunique()
+    if (roles > 1).any():
+        raise TableError(
+            f"{table.name}: site {roles.idxmax()!r} is both 'site' and 'substitute'; give all its "
+            "access points one role."
+        )
+
+
+def _kind(table: UserTable, name: str) -> str:
+    """Type of an undeclared column of a brought table."""
+    text = table.texts(name).dropna()
+    as_code = text.str.match(r"0\d").any()
+    numeric = pd.to_numeric(text, errors="coerce").notna().all()
+    return "float64" if numeric and not as_code and not text.empty else "str"
+
+
+TRUTH = {"true": True, "1": True, "yes": True, "false": False, "0": False, "no": False}
+
+
+def _as_kind(table: UserTable, name: str, kind: str) -> pd.Series:
+    if kind in ("float64", "int64"):
+        return table.numbers(name)
+    if kind != "bool":
+        return table.texts(name)
+    text = table.texts(name).str.lower()
+    wrong = ~text.isin(list(TRUTH))
+    if wrong.any():
+        first = first_true(wrong)
+        raise TableError(
+            f"{table.name}: {int(wrong.sum())} value(s) in column {name!r} are neither true nor "
+            f"false; first: {text.iloc[first]!r}{table.row(wrong, first)}. Write true or false."
+        )
+    return text.map(TRUTH).astype("bool")
