@@ -1,0 +1,129 @@
+"""Bad input: one clear line, exit code 1, and nothing published.
+
+Each case spoils one thing of a whole study (see ``ministudy``) and runs the command line.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+
+import geopandas as gpd
+import pandas as pd
+import pytest
+from tests.ministudy import sites, visits, write_ministudy, zones
+
+from pipeline.__main__ import main
+
+Spoil = Callable[[Path], None]
+
+
+def missing_column(folder: Path) -> None:
+    visits().drop(columns="home").to_csv(folder / "visits.csv", index=False)
+
+
+def wrong_type(folder: Path) -> None:
+    frame = zones().astype({"population": object})
+    frame.loc[4, "population"] = "many"
+    frame.to_csv(folder / "zones.csv", index=False)
+
+
+def duplicate_zone(folder: Path) -> None:
+    frame = zones()
+    frame.loc[3, "zone_id"] = "01"
+    frame.to_csv(folder / "zones.csv", index=False)
+
+
+def negative_population(folder: Path) -> None:
+    frame = zones()
+    frame.loc[6, "population"] = -5
+    frame.to_csv(folder / "zones.csv", index=False)
+
+
+def site_outside_the_extract(folder: Path) -> None:
+    frame = sites()
+    frame.loc[0, "lon"] = 12.5
+    frame.to_csv(folder / "sites.csv", index=False)
+
+
+def truncated_pbf(folder: Path) -> None:
+    path = folder / "roads.osm.pbf"
+    content = path.read_bytes()
+    path.write_bytes(content[: len(content) - 40])
+
+
+def empty_visits(folder: Path) -> None:
+    visits().head(0).to_csv(folder / "visits.csv", index=False)
+
+
+def empty_file(folder: Path) -> None:
+    (folder / "visits.csv").write_bytes(b"")
+
+
+def unknown_key(folder: Path) -> None:
+    path = folder / "mini.toml"
+    path.write_text(path.read_text().replace("wage_fraction", "wage_share"))
+
+
+def zones_without_crs(folder: Path) -> None:
+    frame = zones()
+    points = gpd.points_from_xy(frame.pop("lon"), frame.pop("lat"))
+    gpd.GeoDataFrame(frame, geometry=points.buffer(0.02)).to_file(folder / "zones.gpkg")
+    path = folder / "mini.toml"
+    path.write_text(path.read_text().replace("zones.csv", "zones.gpkg"))
+
+
+def party_size_zero(folder: Path) -> None:
+    frame = visits()
+    frame.loc[7, "people"] = 0
+    frame.to_csv(folder / "visits.csv", index=False)
+
+
+def visits_to_an_unknown_site(folder: Path) -> None:
+    visits().assign(site_id="bog").to_csv(folder / "visits.csv", index=False)
+
+
+def mostly_unknown_codes(folder: Path) -> None:
+    visits().assign(home="999Z").to_csv(folder / "visits.csv", index=False)
+
+
+CASES: list[tuple[Spoil, tuple[str, ...]]] = [
+    (missing_column, ("visits.csv", "home", "postal_code")),
+    (wrong_type, ("zones.csv", "population", "many", "row 5")),
+    (duplicate_zone, ("zones.csv", "zone_id", "01")),
+    (negative_population, ("zones.csv", "population", "-5", "row 7")),
+    (site_outside_the_extract, ("fen", "km")),
+    (truncated_pbf, ("roads.osm.pbf",)),
+    (empty_visits, ("visits.csv", "no ")),
+    (empty_file, ("visits.csv",)),
+    (unknown_key, ("mini.toml", "wage_share", "wage_fraction")),
+    (zones_without_crs, ("zones.gpkg", "coordinate reference system")),
+    (party_size_zero, ("visits.csv", "people", "row 8")),
+    (visits_to_an_unknown_site, ("bog",)),
+    (mostly_unknown_codes, ("999Z", "max_unmatched_share")),
+]
+
+
+@pytest.mark.parametrize(
+    ("spoil", "words"),
+    [pytest.param(spoil, words, id=spoil.__name__) for spoil, words in CASES],
+)
+def test_one_clear_line_and_nothing_published(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], spoil: Spoil, words: tuple[str, ...]
+) -> None:
+    study = write_ministudy(tmp_path)
+    spoil(tmp_path)
+    assert main(["all", str(study)]) == 1
+    said = capsys.readouterr().err
+    assert said.startswith("error: ")
+    assert said.rstrip("\n").count("\n") == 0, said
+    for word in words:
+        assert word in said
+    assert not (tmp_path / "mini" / "output").exists()
+
+
+def test_the_same_study_unspoiled_is_published(tmp_path: Path) -> None:
+    study = write_ministudy(tmp_path)
+    assert main(["all", str(study)]) == 0
+    assert (tmp_path / "mini" / "output" / "report.html").is_file()
+    assert len(pd.read_csv(tmp_path / "mini" / "output" / "zone_table.csv")) == 12
