@@ -11,9 +11,9 @@ from pathlib import Path
 import geopandas as gpd
 import pandas as pd
 import pytest
-from tests.ministudy import sites, visits, write_ministudy, zones
 
 from pipeline.__main__ import main
+from tests.ministudy import sites, visits, write_ministudy, zones
 
 Spoil = Callable[[Path], None]
 
