@@ -103,7 +103,7 @@ def test_a_study_elsewhere_gives_the_same_bytes(study: Path, tmp_path: Path) -> 
 
 
 def test_stage_by_stage_is_the_same_as_all(study: Path, tmp_path: Path) -> None:
-    stages = "geocode roads route cost join demand surplus publish".split()
+    stages = ["geocode", "roads", "route", "cost", "join", "demand", "surplus", "publish"]
     for stage in stages:
         assert run(stage, study, "--output", tmp_path / "out") == 0
     output = tmp_path / "out" / "output"
