@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import re
 from pathlib import Path
-from typing import Annotated, Any, ClassVar, Literal
+from typing import Annotated, Any, ClassVar, Literal, Self
 
 from pydantic import (
     AfterValidator,
@@ -18,6 +18,7 @@ from pydantic import (
     ConfigDict,
     Field,
     ValidationInfo,
+    model_validator,
 )
 
 
@@ -200,10 +201,60 @@ class VisitsSettings(FileSection):
 
 
 class RoadsSettings(Section):
-    """The road extract."""
+    """The road extract, and how its ways become roads that a car can use."""
 
     section_name: ClassVar[str] = "roads"
-    files: tuple[InputPath, ...] = setting("OSM PBF or OSM XML extracts.", ())
+    files: tuple[InputPath, ...] = setting(
+        "OSM PBF or OSM XML extracts (plain, .gz, .bz2); several are merged by OSM id.", ()
+    )
+    class_speed_kmh: dict[str, Annotated[float, Field(gt=0, le=200)]] = setting(
+        "Speed where no limit is tagged, by `highway` value; "
+        "the other classes keep the figure of config/roads.toml.",
+        {},
+        unit="km/h",
+        usual="as in config/roads.toml",
+    )
+    speed_factor: float = setting(
+        "Driven speed as a share of the limit or class speed; calibrate on known drive times.",
+        1.0,
+        unit="share",
+        usual="0.7 (towns) to 1.0 (open roads)",
+        gt=0.1,
+        le=1.5,
+    )
+    tracks: bool = setting(
+        "Whether ways of class `track` are roads to drive on.",
+        default=False,
+        usual="false; true where sites lie on farm, forest or highland tracks",
+    )
+    ferries: Literal["all", "car_tagged", "none"] = setting(
+        "Ferries to use: 'all' that are not closed to cars, only those tagged open to cars, none.",
+        "all",
+        usual="all",
+    )
+    ferry_speed_kmh: float = setting(
+        "Speed of a ferry that has no readable duration.",
+        20.0,
+        unit="km/h",
+        usual="15 to 35 (8 to 19 knots)",
+        gt=0,
+        le=90,
+    )
+    ferry_wait_min: float = setting(
+        "Waiting and boarding, once for each ferry taken.",
+        20.0,
+        unit="min",
+        usual="5 (shuttle) to 45 (sea crossing)",
+        ge=0,
+    )
+    main_network_km: float = setting(
+        "Besides the largest road network, one with at least this much road on which every "
+        "place can be reached and left is routed on too (a second island).",
+        100.0,
+        unit="km",
+        usual="50 to 500",
+        gt=0,
+    )
 
 
 class RoutesSettings(Section):
@@ -219,6 +270,48 @@ class RoutesSettings(Section):
         unit="km",
         usual="2 to 10",
         gt=0,
+    )
+    zone_gap_speed_kmh: float = setting(
+        "Speed on the straight gap between a zone's point and its road, charged as travelled.",
+        20.0,
+        unit="km/h",
+        usual="20 (unmapped lanes) to 30",
+        gt=0,
+    )
+    site_gap_speed_kmh: float = setting(
+        "Speed on the straight gap between an access point and its road, charged as travelled.",
+        20.0,
+        unit="km/h",
+        usual="5 (on foot) to 20 (unmapped lanes)",
+        gt=0,
+    )
+    detached_road_km: float = setting(
+        "Roads that join the main network nowhere and are at least this long in all count as "
+        "an island: a point beside them is not moved to the main network.",
+        0.5,
+        unit="km",
+        usual="0.2 to 2",
+        ge=0,
+    )
+    detached_jump_km: float = setting(
+        "A point beside such an island is moved to the main network all the same if that is no "
+        "more than this much further than the island's road; else it has no_path.",
+        0.3,
+        unit="km",
+        usual="0.1 to 0.5: less than a stretch of water without a bridge",
+        ge=0,
+    )
+    max_lines: int = setting(
+        "Route lines to keep; if there are more routed pairs, sites go before substitutes, "
+        "then the shortest drives.",
+        5000,
+        ge=0,
+    )
+    line_tolerance_m: float = setting(
+        "Route lines are thinned for maps by at most this much; distances are not touched.",
+        20.0,
+        unit="m",
+        ge=0,
     )
 
 
@@ -321,23 +414,53 @@ class MarketSettings(Section):
     )
 
 
+ModelName = Literal["poisson", "negative_binomial", "log_linear", "linear"]
+
+
 class DemandSettings(Section):
     """The regression of visits on travel cost."""
 
     section_name: ClassVar[str] = "demand"
-    models: tuple[str, ...] = setting(
-        "Models to fit.", ("poisson", "negative_binomial", "log_linear")
+    models: tuple[ModelName, ...] = setting(
+        "Models to fit: poisson and negative_binomial of the counts, with the population as "
+        "exposure; log_linear and linear: least squares of the log rate and of the rate.",
+        ("poisson", "negative_binomial", "log_linear"),
+        min_length=1,
     )
-    choose: str = setting(
+    choose: Literal["test"] | ModelName = setting(
         "'test': Poisson or negative binomial by the overdispersion test; or a model's name.",
         "test",
         usual="test",
     )
+    test_level: float = setting(
+        "The Poisson is rejected when the overdispersion test's p-value is below this.",
+        0.05,
+        usual="0.05",
+        gt=0,
+        lt=1,
+    )
+    errors: Literal["model", "HC0", "HC1", "HC2", "HC3"] = setting(
+        "Standard errors: 'model' takes the model's variance at its word; HC0 to HC3 are robust "
+        "to it, HC3 with the most care for zones that pull hard on the fit.",
+        "HC1",
+        usual="HC1; HC3 with fewer than about 100 zones",
+    )
     covariates: tuple[str, ...] = setting(
-        "Columns of the finished table beside travel_cost.",
+        "Columns of the finished table beside travel_cost; coefficients are per unit of the "
+        "column (income: per one of the currency a year).",
         (),
         usual="household_income, substitute_cost",
     )
+
+    @model_validator(mode="after")
+    def _choice_is_fitted(self) -> Self:
+        needed = ("poisson", "negative_binomial") if self.choose == "test" else (self.choose,)
+        missing = [name for name in needed if name not in self.models]
+        if missing:
+            raise ValueError(
+                f"choose = {self.choose!r} needs {missing[0]!r} among models; add it to models"
+            )
+        return self
 
 
 class SurplusSettings(Section):
@@ -345,9 +468,12 @@ class SurplusSettings(Section):
 
     section_name: ClassVar[str] = "surplus"
     confidence: float = setting("Level of every interval.", 0.95, usual="0.95", gt=0.5, lt=1)
-    draws: int = setting("Parameter draws for simulated intervals.", 10_000, ge=1000)
-    fees: tuple[float, ...] = setting(
-        "Added fees per person and visit to tabulate; default: a range up to a high fee.",
+    draws: int = setting(
+        "Parameter draws for simulated intervals.", 10_000, usual="1,000 to 10,000", ge=1000
+    )
+    fees: tuple[Annotated[float, Field(ge=0)], ...] = setting(
+        "Added fees per person and visit to tabulate; none: ten equal steps up to the fee that "
+        "keeps nine visits in ten away.",
         (),
         unit="currency",
     )

@@ -361,7 +361,8 @@ class Estimates(Table):
     ci_high: Series[float] = column("upper end of the confidence interval", nullable=True)
     p_value: Series[float] = column("two-sided p-value against zero", ge=0, le=1, nullable=True)
     covariance: Series[str] = column(
-        "JSON list: covariances with every term of the model, in the order of the rows"
+        "JSON list: covariances with every term of the model, in the order of the rows; "
+        "null where there is none"
     )
 
     class Config:
@@ -384,7 +385,10 @@ class Fit(Table):
         "p-value of the overdispersion test", ge=0, le=1, nullable=True
     )
     r_squared: Series[float] = column(
-        "squared correlation of observed and predicted", ge=0, le=1, nullable=True
+        "squared correlation of the observed and predicted rate per person",
+        ge=0,
+        le=1,
+        nullable=True,
     )
     converged: Series[bool] = column("whether the maximum was reached and verified")
     chosen: Series[bool] = column("whether the surplus comes from this model")
@@ -404,7 +408,9 @@ class Surplus(Table):
     model: Series[str] = column("model's name")
     site_id: Series[str] = column("site that is valued")
     measure: Series[str] = column(
-        "surplus_per_trip, annual_surplus, surplus_per_person_per_year, price_elasticity, ..."
+        "surplus_per_trip, annual_surplus (observed visits), annual_surplus_predicted, "
+        "surplus_per_person_per_year, price_elasticity, annual_visits_observed, "
+        "annual_visits_predicted, choke_cost (linear)"
     )
     value: Series[float] = column("the figure", nullable=True)
     std_error: Series[float] = column("its standard error", ge=0, nullable=True)
@@ -412,6 +418,7 @@ class Surplus(Table):
     ci_high: Series[float] = column("upper end of the confidence interval", nullable=True)
     method: Series[str] = column("how the interval was made: delta, simulated, ...")
     unit: Series[str] = column("unit of the figure")
+    chosen: Series[bool] = column("whether it comes from the model that was chosen")
     note: Series[str] = column("what to know before using it", nullable=True)
 
     class Config:
@@ -435,8 +442,13 @@ class FeeSchedule(Table):
     consumer_surplus_ci_low: Series[float] = column("lower end of its interval", nullable=True)
     consumer_surplus_ci_high: Series[float] = column("upper end of its interval", nullable=True)
     surplus_lost: Series[float] = column(
-        "surplus that visitors lose against no added fee", unit="currency/year", nullable=True
+        "surplus that visitors lose against no added fee, of which revenue is a part",
+        unit="currency/year",
+        nullable=True,
     )
+    surplus_lost_ci_low: Series[float] = column("lower end of its interval", nullable=True)
+    surplus_lost_ci_high: Series[float] = column("upper end of its interval", nullable=True)
+    note: Series[str] = column("why there is no schedule, where there is none", nullable=True)
 
     class Config:
         unique = ["site_id", "fee"]
@@ -451,7 +463,13 @@ class ZoneSurplus(Table):
         "visits per year by the chosen model", unit="visits/year", ge=0, nullable=True
     )
     annual_surplus: Series[float] = column(
-        "surplus of the zone's visitors per year", unit="currency/year", nullable=True
+        "surplus of the zone's predicted visits per year, scaled so that the zones of a site add "
+        "up to its annual_surplus",
+        unit="currency/year",
+        nullable=True,
+    )
+    surplus_per_person: Series[float] = column(
+        "annual_surplus per resident of the zone", unit="currency/person/year", nullable=True
     )
 
     class Config:

@@ -1,0 +1,165 @@
+"""Count models with mean exposure × exp(x'β): Poisson and negative binomial (NB2).
+
+Written out in Cameron and Trivedi, Regression Analysis of Count Data, chapter 3. NB2 has
+variance μ + αμ² and is fitted in log α, so that α stays positive.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+from scipy.special import digamma, gammaln, polygamma
+
+from pipeline.demand.family import ALPHA, FittedModel
+from pipeline.demand.likelihood import LikelihoodFamily, Rows
+from pipeline.demand.sample import FloatArray, Sample
+
+_NO_OVERDISPERSION = 1e-5
+
+
+class Poisson(LikelihoodFamily):
+    """Counts with variance equal to their mean; with robust errors, whatever their variance."""
+
+    name = "poisson"
+    label = "Poisson"
+
+    def start(self, rows: Rows) -> FloatArray:
+        """Least squares of the log count."""
+        return rows.first_guess()
+
+    def log_likelihood(self, theta: FloatArray, rows: Rows) -> FloatArray:
+        """Log-likelihood of each row."""
+        eta = rows.design @ theta + rows.offset
+        return np.asarray(rows.counts * eta - np.exp(eta) - rows.log_factorial, dtype=float)
+
+    def scores(self, theta: FloatArray, rows: Rows) -> FloatArray:
+        """Gradient of each row."""
+        return np.asarray((rows.counts - rows.mean(theta))[:, None] * rows.design, dtype=float)
+
+    def hessian(self, theta: FloatArray, rows: Rows) -> FloatArray:
+        """Minus X'WX with W the weighted means."""
+        weights = rows.weight * rows.mean(theta)
+        return np.asarray(-(rows.design.T * weights) @ rows.design, dtype=float)
+
+    def information(self, theta: FloatArray, rows: Rows) -> FloatArray:
+        """The mean."""
+        return rows.mean(theta)
+
+    def dispersion(self, model: FittedModel, sample: Sample) -> float:
+        """Pearson chi-square over residual degrees of freedom."""
+        mean = expected_counts(self, model, sample)
+        pearson = float(sample.weight @ ((sample.counts - mean) ** 2 / mean))
+        return pearson / (sample.nobs - len(sample.terms))
+
+
+class NegativeBinomial(LikelihoodFamily):
+    """Counts with variance μ + αμ² (NB2)."""
+
+    name = "negative_binomial"
+    label = "negative binomial"
+    extra_terms = (ALPHA,)
+
+    def fit(self, sample: Sample, *, errors: str) -> FittedModel:
+        """Fit to a sample; a Poisson with α = 0 where the counts vary no more than a Poisson's."""
+        poisson = Poisson().fit(sample, errors=errors)
+        if not poisson.converged:
+            return FittedModel.failed(self.name, sample, poisson.problem)
+        mean = expected_counts(Poisson(), poisson, sample)
+        excess = float(sample.weight @ ((sample.counts - mean) ** 2 - sample.counts))
+        # The slope of the likelihood in α at zero: where it does not rise, zero is the maximum.
+        if excess <= _NO_OVERDISPERSION * float(sample.weight @ mean):
+            return self._without_overdispersion(poisson)
+        return super().fit(sample, errors=errors)
+
+    def _without_overdispersion(self, poisson: FittedModel) -> FittedModel:
+        size = len(poisson.terms)
+        spread = np.full((size + 1, size + 1), np.nan)
+        spread[:size, :size] = poisson.covariance
+        return replace(
+            poisson,
+            model=self.name,
+            terms=(*poisson.terms, ALPHA),
+            estimate=np.append(poisson.estimate, 0.0),
+            covariance=spread,
+            parameters=size + 1,
+            dispersion=0.0,
+            notes=(
+                *poisson.notes,
+                (
+                    "The counts vary no more than a Poisson's: alpha is at its lower bound, zero, "
+                    "and the model is the Poisson."
+                ),
+            ),
+        )
+
+    def start(self, rows: Rows) -> FloatArray:
+        """Least squares of the log count, and α by moments."""
+        beta = rows.first_guess()
+        mean = rows.mean(beta)
+        excess = float(np.sum((rows.counts - mean) ** 2 - rows.counts))
+        alpha = np.clip(excess / float(np.sum(mean**2)), 0.01, 10.0)
+        return np.append(beta, np.log(alpha))
+
+    def log_likelihood(self, theta: FloatArray, rows: Rows) -> FloatArray:
+        """Log-likelihood of each row; the last parameter is log α."""
+        size = np.exp(-theta[-1])
+        eta = rows.design @ theta[:-1] + rows.offset
+        of_count = gammaln(rows.levels + size) - gammaln(size) - rows.levels * np.log(size)
+        spread = (rows.counts + size) * np.log1p(np.exp(eta) / size)
+        value = of_count[rows.place] - rows.log_factorial + rows.counts * eta - spread
+        return np.asarray(value, dtype=float)
+
+    def scores(self, theta: FloatArray, rows: Rows) -> FloatArray:
+        """Gradient of each row."""
+        size = np.exp(-theta[-1])
+        mean = rows.mean(theta[:-1])
+        in_eta = size * (rows.counts - mean) / (size + mean)
+        return np.column_stack(
+            [in_eta[:, None] * rows.design, -size * self._in_size(size, mean, rows)]
+        )
+
+    def hessian(self, theta: FloatArray, rows: Rows) -> FloatArray:
+        """Hessian in β and log α."""
+        size = np.exp(-theta[-1])
+        mean = rows.mean(theta[:-1])
+        total = size + mean
+        eta_eta = -size * mean * (size + rows.counts) / total**2
+        eta_log = -size * (rows.counts - mean) * mean / total**2
+        trigamma = polygamma(1, rows.levels + size) - polygamma(1, size)
+        size_size = trigamma[rows.place] + 1 / size - 1 / total - (mean - rows.counts) / total**2
+        log_log = size**2 * size_size + size * self._in_size(size, mean, rows)
+        cross = rows.design.T @ (rows.weight * eta_log)
+        inner = (rows.design.T * (rows.weight * eta_eta)) @ rows.design
+        corner = np.array([[float(rows.weight @ log_log)]])
+        return np.block([[inner, cross[:, None]], [cross[None, :], corner]])
+
+    def _in_size(self, size: float, mean: FloatArray, rows: Rows) -> FloatArray:
+        """Derivative of each row in 1/α."""
+        of_count = digamma(rows.levels + size) - digamma(size)
+        total = size + mean
+        return np.asarray(
+            of_count[rows.place] - np.log1p(mean / size) + (mean - rows.counts) / total,
+            dtype=float,
+        )
+
+    def information(self, theta: FloatArray, rows: Rows) -> FloatArray:
+        """μ / (1 + αμ)."""
+        mean = rows.mean(theta[:-1])
+        return np.asarray(mean / (1 + np.exp(theta[-1]) * mean), dtype=float)
+
+    def natural(self, theta: FloatArray, size: int) -> tuple[FloatArray, FloatArray]:
+        """α, and its derivative in log α, which is α."""
+        alpha = np.exp(theta[size:])
+        return alpha, alpha
+
+    def dispersion(self, model: FittedModel, sample: Sample) -> float:
+        """α."""
+        del sample
+        return float(model.estimate[-1])
+
+
+def expected_counts(family: LikelihoodFamily, model: FittedModel, sample: Sample) -> FloatArray:
+    """Expected count of each row, before expansion."""
+    visits, _ = family.predict(model.estimate, sample)
+    return visits / sample.people * sample.exposure

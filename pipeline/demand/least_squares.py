@@ -1,0 +1,105 @@
+"""Least squares of the visit rate: a straight line, and the log of the rate.
+
+Fitted by statsmodels on standardised regressors and transformed back. Intervals use Student's t.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+import statsmodels.api as sm
+
+from pipeline.demand.curves import LinearCurve, SemiLogCurve, index
+from pipeline.demand.design import caution_notes, require_fittable, standardise
+from pipeline.demand.family import FittedModel, squared_correlation
+from pipeline.demand.sample import FloatArray, Sample
+
+
+class Linear(LinearCurve):
+    """Rate per 1,000 people (per person for trip records) as a straight line in the cost."""
+
+    name = "linear"
+    label = "linear least squares of the rate"
+    student = True
+
+    def fit(self, sample: Sample, *, errors: str) -> FittedModel:
+        """Fit to a sample; every row counts alike, whatever its population."""
+        require_fittable(sample)
+        model = least_squares(self.name, sample, sample.rate * sample.per, errors)
+        predicted = self.predict(model.estimate, sample)[0] / sample.people
+        return replace(model, r_squared=squared_correlation(sample.rate, predicted))
+
+
+class LogLinear(SemiLogCurve):
+    """Log of the rate per person as a straight line in the cost; rows without visits drop out."""
+
+    name = "log_linear"
+    label = "least squares of the log rate"
+    student = True
+
+    def fit(self, sample: Sample, *, errors: str) -> FittedModel:
+        """Fit to the rows with visits, and say how many had none."""
+        visited = with_visits(sample)
+        require_fittable(sample, rows=visited.nobs)
+        require_fittable(visited)
+        model = least_squares(self.name, visited, np.log(visited.rate), errors)
+        predicted = self.predict(model.estimate, sample)[0] / sample.people
+        empty = sample.nobs - visited.nobs
+        note = (
+            f"{empty:,} of {sample.nobs:,} rows have no visit and cannot enter a logarithm, "
+            "which biases the estimate; a count model keeps them."
+        )
+        return replace(
+            model,
+            r_squared=squared_correlation(sample.rate, predicted),
+            notes=(*model.notes, *([note] if empty else [])),
+        )
+
+    def level(self, theta: FloatArray, sample: Sample) -> FloatArray:
+        """Mean of exp(residual) over the rows with visits.
+
+        Without it exp(x'β) is the median, not the mean (Duan, Journal of the American
+        Statistical Association 78, 1983). It cancels out of the surplus per trip.
+        """
+        visited = with_visits(sample)
+        residual = np.log(visited.rate) - index(theta, visited)
+        weighted = np.exp(residual) @ visited.weight / visited.weight.sum()
+        return np.asarray(weighted, dtype=float)
+
+
+def with_visits(sample: Sample) -> Sample:
+    """The rows with at least one visit."""
+    kept = sample.counts > 0
+    return replace(
+        sample,
+        zone_ids=tuple(z for z, keep in zip(sample.zone_ids, kept, strict=True) if keep),
+        design=sample.design[kept],
+        counts=sample.counts[kept],
+        exposure=sample.exposure[kept],
+        weight=sample.weight[kept],
+        people=sample.people[kept],
+        visits=sample.visits[kept],
+    )
+
+
+def least_squares(name: str, sample: Sample, response: FloatArray, errors: str) -> FittedModel:
+    """Weighted least squares of a response on the sample's regressors."""
+    standard = standardise(sample.design)
+    kind = "nonrobust" if errors == "model" else errors
+    result = sm.WLS(response, standard.matrix, weights=sample.weight).fit(cov_type=kind, use_t=True)
+    spread = np.asarray(result.cov_params(), dtype=float)
+    return FittedModel(
+        model=name,
+        site_id=sample.site_id,
+        terms=sample.terms,
+        estimate=standard.back @ np.asarray(result.params, dtype=float),
+        covariance=standard.back @ spread @ standard.back.T,
+        nobs=sample.nobs,
+        degrees=float(sample.nobs - len(sample.terms)),
+        parameters=len(sample.terms) + 1,
+        log_likelihood=float(result.llf),
+        dispersion=float(result.scale),
+        errors=errors,
+        notes=(*sample.notes, *caution_notes(sample)),
+    )

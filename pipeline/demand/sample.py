@@ -1,0 +1,226 @@
+"""Rows that a demand model is fitted to: one sample per site, from zones or from records.
+
+A model predicts a *rate*: visits per person and year. What is counted is the rate times the
+*exposure*::
+
+    expected count = exposure × rate          visits per year = people × rate
+
+=========  ==========================================  ==============  =================
+table      count                                       exposure        people
+=========  ==========================================  ==============  =================
+zones      person-visits in the records                population ÷    population
+                                                       expansion
+records    trips of the person in a year               1               weight
+=========  ==========================================  ==============  =================
+
+Expansion is the known annual total over the visits in the records. Visits that were multiplied
+up are not counts: 400 visits that stand for 40,000 carry the information of 400. So the counts
+before expansion are fitted, and the expansion stands in the exposure; predictions are per year.
+Robust errors of a Poisson do not mind a constant factor; model errors, the negative binomial
+and the overdispersion test do.
+
+Person-visits come in parties, and the members of a party do not decide independently. Errors
+that take the Poisson variance at its word are therefore too small; robust errors are the default.
+"""
+
+from __future__ import annotations
+
+import difflib
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+import pandas as pd
+
+from pipeline.errors import DemandError
+
+FloatArray = npt.NDArray[np.float64]
+
+CONST = "const"
+PRICE = "travel_cost"
+RESPONSES = ("visits", "sampled_visits", "visits_per_1000", "trips")
+PER_ZONE_RATE = 1000.0
+
+
+@dataclass(frozen=True)
+class Sample:
+    """The usable rows of one site; every array has one entry per row."""
+
+    site_id: str
+    zone_ids: tuple[str, ...]
+    terms: tuple[str, ...]
+    design: FloatArray
+    counts: FloatArray
+    exposure: FloatArray
+    weight: FloatArray
+    people: FloatArray
+    visits: FloatArray
+    per: float
+    notes: tuple[str, ...]
+
+    @property
+    def nobs(self) -> int:
+        """Number of rows."""
+        return len(self.counts)
+
+    @property
+    def price(self) -> FloatArray:
+        """Travel cost of each row, per person and trip."""
+        return self.design[:, self.terms.index(PRICE)]
+
+    @property
+    def rate(self) -> FloatArray:
+        """Observed visits per person and year."""
+        return self.counts / self.exposure
+
+    @property
+    def annual_visits(self) -> float:
+        """Observed visits per year, expanded."""
+        return float(self.visits.sum())
+
+
+def build_samples(
+    zone_table: pd.DataFrame | None, trip_table: pd.DataFrame | None, covariates: tuple[str, ...]
+) -> list[Sample]:
+    """One sample per site, sites in alphabetical order; the records where there are any.
+
+    Parameters
+    ----------
+    zone_table : one row per zone and site, or None.
+    trip_table : one row per record, or None; where both are given the records are used.
+    covariates : columns that stand in the regression beside the travel cost.
+
+    Raises
+    ------
+    DemandError
+        Neither table is given, or a covariate is not there, not a number, or the response.
+    """
+    table = trip_table if trip_table is not None else zone_table
+    if table is None:
+        raise DemandError(
+            "neither a zone_table nor a trip_table is there to fit a demand to; "
+            "run the join stage or bring one ([market] zone_table or trip_table)."
+        )
+    _check_covariates(table, covariates)
+    build = _zone_sample if trip_table is None else _trip_sample
+    by_site = table.groupby("site_id", sort=True)
+    samples = [build(str(site_id), rows, covariates) for site_id, rows in by_site]
+    if not samples:
+        raise DemandError("the finished table has no rows; nothing can be fitted to it.")
+    return samples
+
+
+def _check_covariates(table: pd.DataFrame, covariates: tuple[str, ...]) -> None:
+    for name in covariates:
+        if name in (PRICE, *RESPONSES) or covariates.count(name) > 1:
+            raise DemandError(
+                f"demand.covariates names {name!r}, which is in the regression already; remove it."
+            )
+        if name not in table:
+            near = difflib.get_close_matches(name, list(table.columns), n=1)
+            hint = f" Did you mean {near[0]!r}?" if near else ""
+            raise DemandError(
+                f"demand.covariates names {name!r}, which is no column of the finished table."
+                f"{hint} Correct demand.covariates or add the column (zones.covariates)."
+            )
+        if not pd.api.types.is_numeric_dtype(table[name]):
+            raise DemandError(
+                f"covariate {name!r} is not a number (first value: {table[name].iloc[0]!r}); "
+                "turn categories into columns of 0 and 1."
+            )
+
+
+def _zone_sample(site_id: str, rows: pd.DataFrame, covariates: tuple[str, ...]) -> Sample:
+    in_market = rows["in_market"].astype(bool) if "in_market" in rows else rows["visits"].ge(0)
+    market = rows[in_market]
+    lacking = {"inhabitants": market["population"].le(0)}
+    used, notes = _usable(market, covariates, lacking, visits="visits")
+    population = used["population"].to_numpy(dtype=float)
+    visits = used["visits"].to_numpy(dtype=float)
+    counts, expansion, expansion_notes = _counts_before_expansion(used, visits)
+    return Sample(
+        site_id=site_id,
+        zone_ids=tuple(used["zone_id"].astype(str)),
+        terms=(CONST, PRICE, *covariates),
+        design=_design(used, covariates),
+        counts=counts,
+        exposure=population / expansion,
+        weight=np.ones(len(used)),
+        people=population,
+        visits=visits,
+        per=PER_ZONE_RATE,
+        notes=(*notes, *expansion_notes),
+    )
+
+
+def _trip_sample(site_id: str, rows: pd.DataFrame, covariates: tuple[str, ...]) -> Sample:
+    weights = rows["weight"] if "weight" in rows else pd.Series(1.0, index=rows.index)
+    weighted = rows.assign(weight=weights, visits=rows["trips"] * weights)
+    lacking = {"weight": ~weighted["weight"].gt(0)}
+    used, notes = _usable(weighted, covariates, lacking, visits="visits")
+    people = used["weight"].to_numpy(dtype=float)
+    if "weight" not in rows:
+        notes = (*notes, "Without weights the annual figures are those of the records alone.")
+    zone_ids = used["zone_id"] if "zone_id" in used else pd.Series("", index=used.index)
+    return Sample(
+        site_id=site_id,
+        zone_ids=tuple(zone_ids.fillna("").astype(str)),
+        terms=(CONST, PRICE, *covariates),
+        design=_design(used, covariates),
+        counts=used["trips"].to_numpy(dtype=float),
+        exposure=np.ones(len(used)),
+        # Weights that average one leave the likelihood on the scale of the records.
+        weight=people / people.mean() if len(people) else people,
+        people=people,
+        visits=used["visits"].to_numpy(dtype=float),
+        per=1.0,
+        notes=notes,
+    )
+
+
+def _usable(
+    rows: pd.DataFrame, covariates: tuple[str, ...], lacking: dict[str, pd.Series], *, visits: str
+) -> tuple[pd.DataFrame, tuple[str, ...]]:
+    """Rows with everything that the regression needs, and how many lack what."""
+    reasons = {name: rows[name].isna() for name in (PRICE, *covariates)} | lacking
+    out = pd.Series(data=False, index=rows.index)
+    parts = []
+    for name, lacks in reasons.items():
+        if lacks.any():
+            parts.append(f"{int(lacks.sum()):,} without {name}")
+            out |= lacks
+    if not parts:
+        return rows, ()
+    lost = float(rows.loc[out, visits].sum())
+    return rows[~out], (
+        (
+            f"{int(out.sum()):,} of {len(rows):,} rows are left out ({', '.join(parts)}); "
+            f"their {lost:,.0f} visits a year are in no figure."
+        ),
+    )
+
+
+def _design(rows: pd.DataFrame, covariates: tuple[str, ...]) -> FloatArray:
+    columns = [np.ones(len(rows))]
+    columns += [rows[name].to_numpy(dtype=float) for name in (PRICE, *covariates)]
+    return np.column_stack(columns)
+
+
+def _counts_before_expansion(
+    rows: pd.DataFrame, visits: FloatArray
+) -> tuple[FloatArray, float, tuple[str, ...]]:
+    """Counts to fit, annual visits per counted visit, and what to know about them."""
+    if "sampled_visits" not in rows or rows["sampled_visits"].isna().any():
+        return visits, 1.0, ("Visits are taken as counted in full (no complete sampled_visits).",)
+    sampled = rows["sampled_visits"].to_numpy(dtype=float)
+    if sampled.sum() <= 0 or visits.sum() <= 0:
+        return sampled, 1.0, ()
+    expansion = float(visits.sum() / sampled.sum())
+    if np.allclose(visits, sampled * expansion, rtol=1e-6, atol=1e-9 * expansion):
+        return sampled, expansion, ()
+    # Weighted records: the weighted visits, brought back to the size of the sample.
+    return (
+        visits / expansion,
+        expansion,
+        ("The expansion differs between zones (weighted records): weighted counts are fitted.",),
+    )

@@ -1,0 +1,122 @@
+"""The surplus stage: estimates and finished table in, values in money out."""
+
+from __future__ import annotations
+
+import pandas as pd
+
+from pipeline.demand import Sample, build_samples, fitted_models
+from pipeline.demand.family import FittedModel
+from pipeline.demand.sample import FloatArray
+from pipeline.errors import SurplusError
+from pipeline.study import Study
+from pipeline.surplus.draws import parameter_draws
+from pipeline.surplus.fees import fee_rows
+from pipeline.surplus.intervals import DELTA, delta_rows, missing_rows, simulated_rows
+from pipeline.surplus.measures import ANNUAL, PER_TRIP, measure_units
+from pipeline.surplus.zones import every_zone, zone_rows
+from pipeline.tables import FeeSchedule, Surplus, ZoneSurplus
+
+
+def surplus(
+    estimates: pd.DataFrame,
+    fit: pd.DataFrame,
+    zone_table: pd.DataFrame | None,
+    trip_table: pd.DataFrame | None,
+    *,
+    study: Study,
+) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
+    """Value every model's demand curve; tabulate fees and zones by the chosen one.
+
+    Parameters
+    ----------
+    estimates, fit : the demand stage's tables.
+    zone_table, trip_table : the finished table that they were made from.
+    study : its sections [surplus] and [demand] (covariates), the seed and the currency are read.
+
+    Returns
+    -------
+    `surplus`, `fee_schedule`, `zone_surplus`. Where visits do not fall with cost the values are
+    missing and the `note` says why. Sites without a usable model have no fee schedule.
+
+    Raises
+    ------
+    SurplusError
+        The estimates belong to another finished table.
+    """
+    samples = {s.site_id: s for s in build_samples(zone_table, trip_table, study.demand.covariates)}
+    models = fitted_models(estimates, fit)
+    picked = {(str(s), str(m)) for s, m in fit.loc[fit["chosen"], ["site_id", "model"]].to_numpy()}
+    values, fees, zones = [], [], []
+    for key, model in models.items():
+        sample = _sample_of(model, samples)
+        draws = _draws(model, study)
+        values.append(_value_rows(model, sample, draws, study).assign(chosen=key in picked))
+        if key in picked and draws is not None:
+            settings = study.surplus
+            confidence = settings.confidence
+            fees.append(fee_rows(model, sample, draws, fees=settings.fees, confidence=confidence))
+            zones.append(zone_rows(model, sample))
+    table = trip_table if trip_table is not None else zone_table
+    if table is None or not values:
+        raise SurplusError("the demand stage wrote no model; run it on a finished table first.")
+    return (
+        Surplus.checked(pd.concat(values, ignore_index=True), source="surplus: surplus"),
+        FeeSchedule.checked(
+            pd.concat(fees, ignore_index=True) if fees else FeeSchedule.empty(),
+            source="surplus: fee_schedule",
+        ),
+        ZoneSurplus.checked(every_zone(zones, table), source="surplus: zone_surplus"),
+    )
+
+
+def _draws(model: FittedModel, study: Study) -> FloatArray | None:
+    if not model.converged:
+        return None
+    return parameter_draws(model, draws=study.surplus.draws, seed=study.study.seed)
+
+
+def _sample_of(model: FittedModel, samples: dict[str, Sample]) -> Sample:
+    sample = samples.get(model.site_id)
+    if sample is None or set(sample.terms) - set(model.terms):
+        raise SurplusError(
+            f"the estimates of {model.model!r} at site {model.site_id!r} were not made from this "
+            "finished table (another site or other covariates); run the demand stage again."
+        )
+    return sample
+
+
+def _value_rows(
+    model: FittedModel, sample: Sample, draws: FloatArray | None, study: Study
+) -> pd.DataFrame:
+    """Rows of `surplus` for one model at one site."""
+    confidence = study.surplus.confidence
+    if draws is None:
+        rows = missing_rows(model)
+    else:
+        rows = delta_rows(model, sample, confidence)
+        rows += simulated_rows(model, sample, draws, confidence)
+    units = measure_units(study.study.currency)
+    frame = pd.DataFrame(rows)
+    return frame.assign(
+        model=model.model, site_id=model.site_id, unit=frame["measure"].map(units)
+    ).sort_values("measure", key=lambda names: names.map(list(units).index), kind="stable")
+
+
+def summarise_surplus(outputs: tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]) -> str:
+    """The part after the colon of the stage's summary line."""
+    values = outputs[0]
+    rows = values[values["chosen"] & (values["method"] == DELTA)]
+    words: list[str] = []
+    for site_id, site in rows.groupby("site_id", sort=True):
+        by_measure = site.set_index("measure")
+        trip, year = by_measure.loc[PER_TRIP], by_measure.loc[ANNUAL]
+        if pd.isna(trip["value"]):
+            words.append(f"{site_id}: no finite surplus (see surplus.csv)")
+            continue
+        words.append(
+            f"{site_id}: {trip['value']:,.2f} {trip['unit']} "
+            f"({trip['ci_low']:,.2f} to {trip['ci_high']:,.2f}), "
+            f"{year['value']:,.0f} {year['unit']}"
+        )
+    more = f"; {len(words) - 3} more sites" if len(words) > 3 else ""
+    return "; ".join(words[:3]) + more
