@@ -1,0 +1,60 @@
+"""run.json: what the run was made from and what it found, for programs and for the file."""
+
+from __future__ import annotations
+
+import dataclasses
+import json
+import math
+from typing import Any
+
+from pipeline.publish.results import Headline, Results
+
+FORMAT_VERSION = 1
+
+
+def run_manifest(results: Results) -> dict[str, Any]:
+    """Inputs with SHA-256, settings in force, versions, seed, currency and headline values.
+
+    It holds no time of day: the same inputs give the same bytes.
+    """
+    about, provenance = results.study.study, results.provenance
+    return {
+        "format": "roadworth run",
+        "format_version": FORMAT_VERSION,
+        "study": {
+            "name": about.name,
+            "title": about.title,
+            "notice": about.notice,
+            "currency": about.currency,
+            "price_year": about.price_year,
+        },
+        "confidence": results.study.surplus.confidence,
+        "headline": [_headline(headline) for headline in results.headlines],
+        "inputs": [dataclasses.asdict(file) for file in provenance.inputs],
+        "settings": provenance.settings,
+        "settings_set": list(provenance.settings_set),
+        "seed": provenance.seed,
+        "versions": dict(sorted(provenance.versions.items())),
+        "code_sha256": provenance.code_sha256,
+        "study_sha256": provenance.study_sha256,
+    }
+
+
+def manifest_text(manifest: dict[str, Any]) -> str:
+    """The manifest as JSON; a figure that is not known is null."""
+    return json.dumps(_finite(manifest), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def _headline(headline: Headline) -> dict[str, Any]:
+    return dataclasses.asdict(headline)
+
+
+def _finite(value: Any) -> Any:
+    """JSON has no NaN and no infinity."""
+    if isinstance(value, dict):
+        return {key: _finite(item) for key, item in value.items()}
+    if isinstance(value, list | tuple):
+        return [_finite(item) for item in value]
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value

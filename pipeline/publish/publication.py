@@ -1,0 +1,175 @@
+"""The publish stage: everything that people take away, made in memory, then written plainly."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import geopandas as gpd
+import pandas as pd
+
+from pipeline.errors import PublishError
+from pipeline.provenance import Provenance
+from pipeline.publish.geofiles import write_geojson, write_geopackage
+from pipeline.publish.layers import build_layers
+from pipeline.publish.manifest import manifest_text, run_manifest
+from pipeline.publish.privacy import hide_small_cells, hide_zone_surplus, trip_means
+from pipeline.publish.report import build_report
+from pipeline.publish.results import Headline, Results, headlines
+from pipeline.publish.tabular import PUBLISHED, describe_tables, write_csv, write_table_files
+from pipeline.publish.words import count, figure, interval, level
+from pipeline.study import Study
+
+
+@dataclass(frozen=True)
+class Publication:
+    """What people take away.
+
+    Attributes
+    ----------
+    name : short name of the study; names the GeoPackage.
+    crs : coordinate reference system of the GeoPackage.
+    layers : GIS layers by name, in WGS 84.
+    tables : published tables by name; small cells are blank, records of people are absent.
+    dictionary : what every column of the tables means, one row per column.
+    report : the report, one HTML page without any outside reference.
+    manifest : content of run.json.
+    headlines : what every site is worth.
+    """
+
+    name: str
+    crs: str
+    layers: dict[str, gpd.GeoDataFrame]
+    tables: dict[str, pd.DataFrame]
+    dictionary: pd.DataFrame
+    report: str
+    manifest: dict[str, Any]
+    headlines: tuple[Headline, ...]
+
+    def write(self, folder: Path) -> None:
+        """Write report.html, run.json, `<name>.gpkg`, geojson/ and tables/ into `folder`."""
+        (folder / "report.html").write_text(self.report, encoding="utf-8", newline="\n")
+        run = manifest_text(self.manifest)
+        (folder / "run.json").write_text(run, encoding="utf-8", newline="\n")
+        if self.layers:
+            write_geopackage(self.layers, folder / f"{self.name}.gpkg", crs=self.crs)
+            (folder / "geojson").mkdir()
+        for name, layer in self.layers.items():
+            write_geojson(layer, folder / "geojson" / f"{name}.geojson")
+        (folder / "tables").mkdir()
+        for name, table in self.tables.items():
+            write_table_files(table, folder / "tables", name)
+        write_csv(self.dictionary, folder / "tables" / "data_dictionary.csv")
+
+
+def publish(
+    provenance: Provenance,
+    origin_summary: pd.DataFrame | None,
+    road_quality: pd.DataFrame | None,
+    road_lines: gpd.GeoDataFrame | None,
+    routes: pd.DataFrame | None,
+    route_lines: gpd.GeoDataFrame | None,
+    zones: gpd.GeoDataFrame | None,
+    sites: pd.DataFrame | None,
+    costs: pd.DataFrame | None,
+    zone_table: pd.DataFrame | None,
+    trip_table: pd.DataFrame | None,
+    estimates: pd.DataFrame,
+    fit: pd.DataFrame,
+    surplus: pd.DataFrame,
+    fee_schedule: pd.DataFrame,
+    zone_surplus: pd.DataFrame,
+    *,
+    study: Study,
+) -> tuple[Publication]:
+    """Make the layers, tables, report and run.json of a run.
+
+    Parameters
+    ----------
+    provenance : what the run was made from.
+    origin_summary, ..., zone_surplus : the tables of the flow; those that the study neither
+        built nor brought are None, and the report says what is missing for it.
+
+    Raises
+    ------
+    PublishError
+        There is no finished table, or no model was chosen for any site.
+    """
+    below = study.publish.suppress_below
+    shown = None if zone_table is None else hide_small_cells(zone_table, below=below)
+    results = Results(
+        study=study,
+        provenance=provenance,
+        origin_summary=origin_summary,
+        road_quality=road_quality,
+        road_lines=road_lines,
+        routes=routes,
+        route_lines=route_lines,
+        zones=zones,
+        sites=sites,
+        costs=costs,
+        zone_table=shown,
+        trip_means=None if trip_table is None else trip_means(trip_table, below=below),
+        estimates=estimates,
+        fit=fit,
+        surplus=surplus,
+        fee_schedule=fee_schedule,
+        zone_surplus=zone_surplus if shown is None else hide_zone_surplus(zone_surplus, shown),
+        headlines=headlines(fit, surplus, _finished(zone_table, trip_table), sites),
+    )
+    if not results.headlines:
+        raise PublishError(
+            "no model is chosen for any site (column 'chosen' of the fit table is false in all "
+            f"{len(fit)} rows), so there is no value to publish; see the notes in fit.csv."
+        )
+    return (_publication(results),)
+
+
+def summarise_publish(outputs: tuple[Publication]) -> str:
+    """What was written, and the headline values."""
+    (publication,) = outputs
+    parts = [
+        "report.html",
+        count(len(publication.layers), "layer"),
+        count(len(publication.tables), "table"),
+    ]
+    confidence = float(publication.manifest["confidence"])
+    currency = publication.manifest["study"]["currency"]
+    values = [
+        f"{headline.site_name}: {currency} "
+        f"{figure(value.value, value.ci_low, value.ci_high)} a year ({level(confidence)} "
+        f"interval {interval(value.ci_low, value.ci_high, value.value)})"
+        for headline in publication.headlines
+        if (value := headline.annual_surplus) is not None
+    ]
+    return "; ".join([", ".join(parts), *values])
+
+
+def _finished(zone_table: pd.DataFrame | None, trip_table: pd.DataFrame | None) -> pd.DataFrame:
+    finished = zone_table if zone_table is not None else trip_table
+    if finished is None:
+        raise PublishError(
+            "neither a zone_table nor a trip_table was handed over, so there is nothing to "
+            "publish; run the join stage, or name one under [market]."
+        )
+    return finished
+
+
+def _publication(results: Results) -> Publication:
+    names = {table.table_name() for table in PUBLISHED}
+    tables = {
+        name: table
+        for name, table in vars(results).items()
+        if name in names and isinstance(table, pd.DataFrame)
+    }
+    return Publication(
+        name=results.study.study.name,
+        crs=results.study.publish.crs,
+        layers=build_layers(results),
+        tables=tables,
+        dictionary=describe_tables(tables, currency=results.currency),
+        report=build_report(results),
+        manifest=run_manifest(results),
+        headlines=results.headlines,
+    )

@@ -1,0 +1,111 @@
+"""The report: one HTML page that needs no network, from the first line to the last source."""
+
+from __future__ import annotations
+
+import base64
+import hashlib
+from collections.abc import Callable
+from pathlib import Path
+
+from pipeline.publish.answer import masthead
+from pipeline.publish.assumptions import assumptions_table
+from pipeline.publish.closing import attribution, cautions, inputs_table, made_with
+from pipeline.publish.evidence import (
+    demand_figure,
+    fee_figure,
+    map_figure,
+    models_tried,
+    site_heading,
+    values_table,
+)
+from pipeline.publish.losses import losses, road_table
+from pipeline.publish.mapview import base_map
+from pipeline.publish.markup import Html, join, tag
+from pipeline.publish.results import Headline, Results
+
+STYLE_FILE = Path(__file__).with_name("report.css")
+
+
+def build_report(results: Results) -> str:
+    """The whole page. It refers to nothing outside itself, and its policy forbids it to."""
+    style = Html(STYLE_FILE.read_text(encoding="utf-8"))
+    head = tag(
+        "head",
+        tag("meta", charset="utf-8"),
+        tag("meta", http_equiv="Content-Security-Policy", content=_policy(style)),
+        tag("meta", name="viewport", content="width=device-width, initial-scale=1"),
+        tag("meta", name="color-scheme", content="light dark"),
+        tag("title", results.study.study.title),
+        tag("style", style),
+    )
+    base = base_map(results)
+    body = tag(
+        "body",
+        tag("a", "Skip to the evidence", href="#map", class_="skip"),
+        base.defs if base else None,
+        masthead(results),
+        tag("main", *_sections(results, lambda h: map_figure(results, base, h))),
+        tag("footer", attribution(results)),
+    )
+    return f"<!doctype html>\n{tag('html', head, body, lang='en')}\n"
+
+
+def _policy(style: str) -> str:
+    """Content security policy: nothing may be loaded, only this style applies."""
+    digest = base64.b64encode(hashlib.sha256(style.encode()).digest()).decode()
+    return f"default-src 'none'; style-src 'sha256-{digest}'; base-uri 'none'; form-action 'none'"
+
+
+def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Html]:
+    def each(draw: Callable[[Results, Headline], Html]) -> Html:
+        return join(
+            join([site_heading(results, headline), draw(results, headline)])
+            for headline in results.headlines
+        )
+
+    roads = road_table(results)
+    return [
+        _section("map", "Where visitors come from", _MAP, each(lambda _, h: draw_map(h))),
+        _section("demand", "How cost holds them back", _DEMAND, each(demand_figure)),
+        _section("values", "What it is worth", _VALUES, each(values_table)),
+        _section("fees", "What a fee would do", _FEES, each(fee_figure)),
+        _section("assumed", "What was assumed", _ASSUMED, assumptions_table(results)),
+        _section("lost", "What was lost on the way", _LOST, *losses(results)),
+        _section("models", "Models tried", _MODELS, each(models_tried)),
+        _section("roads", "The road data", _ROADS, roads) if roads else Html(""),
+        _section("care", "Cautions", "Read these before quoting a figure.", cautions()),
+        _section("sources", "Inputs", _SOURCES, inputs_table(results), made_with(results)),
+    ]
+
+
+_MAP = (
+    "Visits per 1,000 residents of each zone in a year, with the roads that bring them. A darker "
+    "zone sends more of its people; in dark mode, a lighter one."
+)
+_DEMAND = (
+    "People who live further away pay more to come, and come less often. The fall of the curve "
+    "is what puts a value on a visit."
+)
+_VALUES = "Every measure that the chosen model gives, with every kind of interval worked out."
+_FEES = (
+    "Each visitor would pay the added fee on top of today's costs. Visitors come less often; "
+    "some of their surplus turns into revenue, some is lost to everybody."
+)
+_ASSUMED = (
+    "Each of these moves the answer. A value that the study chose is marked; the others are "
+    "defaults."
+)
+_LOST = "Nothing is dropped silently. This is what did not reach the regression, and why."
+_MODELS = (
+    "Every model that was fitted, with the one that the value comes from. A small p of "
+    "overdispersion speaks against Poisson."
+)
+_ROADS = "A route is only as good as the roads it was found on."
+_SOURCES = "Whoever has these files, settings and this code can repeat the run."
+
+
+def _section(name: str, title: str, lead: str, *body: object) -> Html:
+    """A section: title and lead in the rail, the matter beside it."""
+    rail = tag("div", tag("h2", title, id=f"{name}-title"), tag("p", lead), class_="rail")
+    matter = tag("div", *body, class_="matter")
+    return tag("section", rail, matter, id=name, aria_labelledby=f"{name}-title")

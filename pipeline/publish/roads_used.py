@@ -1,0 +1,98 @@
+"""The roads that visitors use: route lines taken apart, and every stretch kept once."""
+
+from __future__ import annotations
+
+import geopandas as gpd
+import numpy as np
+import numpy.typing as npt
+import pandas as pd
+import shapely
+
+WGS84 = "EPSG:4326"
+COLUMNS = ["site_id", "zones", "visits"]
+DECIMALS = 7
+
+
+def roads_used(route_lines: gpd.GeoDataFrame, zone_table: pd.DataFrame | None) -> gpd.GeoDataFrame:
+    """Stretches of road by site, with how many zones' routes run over them and their visits.
+
+    Parameters
+    ----------
+    route_lines : one line per zone and site, WGS 84.
+    zone_table : gives the visits, person-visits per year; a hidden cell adds nothing.
+
+    Returns
+    -------
+    `site_id, zones, visits, geometry`: lines, cut wherever the traffic changes; `visits` is
+    missing without a zone table, and for substitutes.
+    """
+    parts = [
+        _of_site(site_id, route_lines[route_lines["site_id"] == site_id], zone_table)
+        for site_id in sorted(set(route_lines["site_id"]))
+    ]
+    parts = [part for part in parts if len(part)]
+    if not parts:
+        return gpd.GeoDataFrame({c: [] for c in COLUMNS}, geometry=[], crs=WGS84)
+    return gpd.GeoDataFrame(pd.concat(parts, ignore_index=True), geometry="geometry", crs=WGS84)
+
+
+def _of_site(
+    site_id: str, lines: gpd.GeoDataFrame, zone_table: pd.DataFrame | None
+) -> gpd.GeoDataFrame:
+    ends, owner = _stretches(lines.geometry.to_numpy())
+    unique, place = np.unique(ends, axis=0, return_inverse=True)
+    zones = np.bincount(place, minlength=len(unique)).astype(np.float64)
+    visits = _visits(site_id, lines, zone_table)
+    carried = np.bincount(place, weights=np.nan_to_num(visits)[owner], minlength=len(unique))
+    if np.isnan(visits).all():
+        carried = np.full(len(unique), np.nan)
+    return _merged(site_id, unique, zones, carried)
+
+
+def _stretches(
+    geometry: npt.NDArray[np.object_],
+) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.int64]]:
+    """Every stretch between two vertices as `x1, y1, x2, y2`, and the line that it is from.
+
+    The lesser end comes first, so that both directions of a road are one stretch.
+    """
+    points, line = shapely.get_coordinates(geometry, return_index=True)
+    points = points.round(DECIMALS)
+    inside = (line[1:] == line[:-1]) & (points[1:] != points[:-1]).any(axis=1)
+    start, end, owner = points[:-1][inside], points[1:][inside], line[:-1][inside]
+    swap = (start[:, 0] > end[:, 0]) | ((start[:, 0] == end[:, 0]) & (start[:, 1] > end[:, 1]))
+    start[swap], end[swap] = end[swap], start[swap].copy()
+    both = np.column_stack([start, end, owner])
+    once = np.unique(both, axis=0)  # a route that runs over a stretch twice counts once
+    return once[:, :4], once[:, 4].astype(np.int64)
+
+
+def _visits(
+    site_id: str, lines: gpd.GeoDataFrame, zone_table: pd.DataFrame | None
+) -> npt.NDArray[np.float64]:
+    """Visits of every line's zone; missing where there are none to know of."""
+    if zone_table is None:
+        return np.full(len(lines), np.nan)
+    of_site = zone_table[zone_table["site_id"] == site_id].set_index("zone_id")["visits"]
+    return of_site.reindex(lines["zone_id"]).to_numpy(dtype=np.float64)
+
+
+def _merged(
+    site_id: str,
+    ends: npt.NDArray[np.float64],
+    zones: npt.NDArray[np.float64],
+    visits: npt.NDArray[np.float64],
+) -> gpd.GeoDataFrame:
+    """Stretches with the same traffic joined to lines."""
+    kind = np.unique(np.column_stack([zones, visits]), axis=0, return_inverse=True)[1]
+    rows = []
+    for value in np.unique(kind):
+        same = kind == value
+        pieces = shapely.linestrings(ends[same].reshape(-1, 2, 2))
+        line = shapely.line_merge(shapely.multilinestrings(pieces))
+        rows += [
+            (site_id, int(zones[same][0]), float(visits[same][0]), part)
+            for part in shapely.get_parts(line)
+        ]
+    frame = pd.DataFrame(rows, columns=[*COLUMNS, "geometry"])
+    return gpd.GeoDataFrame(frame, geometry="geometry", crs=WGS84)
