@@ -1,0 +1,201 @@
+"""The stage ``roads``: from an extract to a road graph."""
+
+from __future__ import annotations
+
+import geopandas as gpd
+import numpy as np
+import pandas as pd
+
+from pipeline.errors import RoadsError
+from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64
+from pipeline.roads.contract import Chains, contract, reorder
+from pipeline.roads.extract import E7, RoadExtract
+from pipeline.roads.graph import CLOSED, RoadGraph, best_arcs, flag_bits, pack
+from pipeline.roads.networks import detached_km, main_networks
+from pipeline.roads.quality import lines_by_class, quality
+from pipeline.roads.rules import WayTraits, load_rules, way_traits
+from pipeline.roads.segments import Segments, segments_of
+from pipeline.settings import RoadsSettings
+from pipeline.study import Study
+
+
+def build_roads(
+    extract: RoadExtract, *, study: Study
+) -> tuple[RoadGraph, pd.DataFrame, gpd.GeoDataFrame]:
+    """Turn an extract into a directed, routable graph.
+
+    Parameters
+    ----------
+    extract : ways over located nodes.
+    study : section [roads].
+
+    Returns
+    -------
+    The graph, the table `road_quality`, and the lines of the graph (`road_lines`, WGS 84),
+    each road once whatever its directions.
+
+    Raises
+    ------
+    RoadsError
+        No way of the extract is open to cars.
+    StudyError
+        The study gives a speed for an unknown class.
+    """
+    settings = study.roads
+    rules = load_rules(settings)
+    traits = way_traits(extract, rules, settings)
+    segments, losses = segments_of(extract, traits, rules, settings)
+    if not segments.count or traits.is_ferry[segments.way].all():
+        raise RoadsError(
+            f"none of the {extract.ways} ways of the road extract is a road open to cars. "
+            "Give an extract with roads, or allow tracks by roads.tracks."
+        )
+    is_ferry = traits.is_ferry[segments.way]
+    chains = contract(segments, len(extract.node_id), is_ferry)
+    nodes, rank = _hilbert_order(extract, chains)
+    chains = reorder(chains, np.lexsort((rank[chains.end], rank[chains.start])))
+    graph, parts = _graph(extract, traits, segments, chains, nodes, rank, settings)
+    table = quality(extract, traits, rules, segments, losses, graph, parts)
+    return graph, table, lines_by_class(extract, traits, rules, segments, chains)
+
+
+def summarise_roads(outputs: tuple[RoadGraph, pd.DataFrame, gpd.GeoDataFrame]) -> str:
+    """One line for people: what the graph holds."""
+    graph, table, _ = outputs
+    total = table.loc[(table["measure"] == "road length") & (table["road_class"] == "all"), "value"]
+    return f"{total.iloc[0]:,.0f} km of road, {graph.nodes:,} junctions, {graph.arcs:,} arcs"
+
+
+def _hilbert_order(extract: RoadExtract, chains: Chains) -> tuple[Int64, Int32]:
+    """Junctions in the order of a Hilbert curve, and the rank of each node of the extract."""
+    junctions = np.unique(np.concatenate([chains.start, chains.end]))
+    points = gpd.GeoSeries(gpd.points_from_xy(*extract.degrees(junctions)))
+    west, south, east, north = points.total_bounds
+    bounds = (west, south, max(east, west + E7), max(north, south + E7))
+    along = points.hilbert_distance(total_bounds=bounds, level=16).to_numpy()
+    nodes = junctions[np.argsort(along, kind="stable")]
+    rank = np.full(len(extract.node_id), -1, dtype=np.int32)
+    rank[nodes] = np.arange(len(nodes), dtype=np.int32)
+    return nodes, rank
+
+
+def _graph(
+    extract: RoadExtract,
+    traits: WayTraits,
+    segments: Segments,
+    chains: Chains,
+    nodes: Int64,
+    rank: Int32,
+    settings: RoadsSettings,
+) -> tuple[RoadGraph, int]:
+    """The graph, and how many parts of it join no main network."""
+    start, end = rank[chains.start], rank[chains.end]
+    is_ferry = traits.is_ferry[segments.way[chains.segment[chains.first[:-1]]]]
+    forward, backward = _costs(segments, chains, is_ferry, settings)
+    number = np.arange(len(start), dtype=np.int32)
+    is_open = np.concatenate([forward != CLOSED, backward != CLOSED])
+    tail = np.concatenate([start, end])[is_open]
+    head = np.concatenate([end, start])[is_open]
+    cost = np.concatenate([forward, backward])[is_open]
+    directed = np.concatenate([2 * number, 2 * number + 1])[is_open]
+    arcs = best_arcs(tail, head, cost, directed, len(nodes))
+    arcs_in = best_arcs(head, tail, cost, directed, len(nodes))
+    road_km = np.where(is_ferry, 0, _edge_sums(segments.length_m, chains) / 1000)
+    network, weak = main_networks(tail, head, start, end, road_km, settings.main_network_km)
+    island_km, islands = detached_km(start, network, weak, road_km)
+    graph = RoadGraph(
+        node_lon_e7=extract.node_lon_e7[nodes],
+        node_lat_e7=extract.node_lat_e7[nodes],
+        node_network=network,
+        edge_start=start,
+        edge_end=end,
+        edge_forward_cost=forward,
+        edge_backward_cost=backward,
+        edge_is_ferry=is_ferry,
+        edge_toll_m=_flagged_m(traits.is_toll, segments, chains),
+        edge_unpaved_m=_flagged_m(traits.is_unpaved & ~traits.is_ferry, segments, chains),
+        edge_detached_km=island_km,
+        **_geometry(extract, traits, segments, chains),
+        **dict(zip(("arc_first", "arc_node", "arc_cost", "arc_edge"), arcs, strict=True)),
+        **dict(zip(("in_first", "in_node", "in_cost", "in_edge"), arcs_in, strict=True)),
+    )
+    return graph, islands
+
+
+def _costs(
+    segments: Segments, chains: Chains, is_ferry: Bool, settings: RoadsSettings
+) -> tuple[Int64, Int64]:
+    """Packed costs of each edge forward and backward.
+
+    Waiting and boarding come with the arc that leaves the land: a ferry edge whose tail is
+    also the end of a road. A crossing that is mapped in several pieces is boarded once.
+    """
+    times = _directed(segments.forward_s, segments.backward_s, chains)
+    length = _edge_sums(segments.length_m, chains)
+    on_land = np.zeros(int(max(chains.start.max(), chains.end.max())) + 1, dtype=np.bool_)
+    on_land[chains.start[~is_ferry]] = True
+    on_land[chains.end[~is_ferry]] = True
+    wait_s = settings.ferry_wait_min * 60
+    costs = []
+    for time_s, tail in zip(times, (chains.start, chains.end), strict=True):
+        time = np.add.reduceat(time_s, chains.first[:-1])
+        costs.append(pack(time + np.where(is_ferry & on_land[tail], wait_s, 0), length))
+    return costs[0], costs[1]
+
+
+def _directed(ab: Float64, ba: Float64, chains: Chains) -> tuple[Float64, Float64]:
+    """Values of the segments of each edge along the edge and against it."""
+    along, back = ab[chains.segment], ba[chains.segment]
+    return np.where(chains.against, back, along), np.where(chains.against, along, back)
+
+
+def _edge_sums(values: Float64, chains: Chains) -> Float64:
+    """Sum of a segment's value over the segments of each edge."""
+    return np.asarray(np.add.reduceat(values[chains.segment], chains.first[:-1]))
+
+
+def _flagged_m(flag: Bool, segments: Segments, chains: Chains) -> Float32:
+    """Length of each edge on ways with a flag."""
+    return _edge_sums(segments.length_m * flag[segments.way], chains).astype(np.float32)
+
+
+def _geometry(
+    extract: RoadExtract, traits: WayTraits, segments: Segments, chains: Chains
+) -> dict[str, np.ndarray[tuple[int, ...], np.dtype[np.generic]]]:
+    """Vertices of the edges, with what holds on the stretch from each to the next."""
+    edges = len(chains.start)
+    edge_first = chains.first + np.arange(edges + 1)
+    stretch = np.arange(len(chains.segment)) + np.repeat(
+        np.arange(edges), np.diff(chains.first)
+    )  # vertex that each segment starts at
+    tail = np.where(chains.against, segments.b[chains.segment], segments.a[chains.segment])
+    vertex = np.empty(edge_first[-1], dtype=np.int64)
+    vertex[stretch] = tail
+    vertex[edge_first[1:] - 1] = chains.end
+
+    def on_stretches(values: np.ndarray[tuple[int, ...], np.dtype[np.generic]]) -> Float32:
+        result = np.zeros(len(vertex), dtype=values.dtype)
+        result[stretch] = values
+        return result  # type: ignore[return-value]
+
+    way = segments.way[chains.segment]
+    kmh = _directed(*_speeds(segments), chains)
+    flags = flag_bits(traits.is_toll[way], traits.is_unpaved[way])
+    return {
+        "edge_first": edge_first,
+        "vertex_lon_e7": extract.node_lon_e7[vertex],
+        "vertex_lat_e7": extract.node_lat_e7[vertex],
+        "vertex_forward_kmh": on_stretches(kmh[0].astype(np.float32)),
+        "vertex_backward_kmh": on_stretches(kmh[1].astype(np.float32)),
+        "vertex_flags": on_stretches(flags),
+    }
+
+
+def _speeds(segments: Segments) -> tuple[Float64, Float64]:
+    """Speed of each segment in both directions, km/h; 0 where closed."""
+    speeds = []
+    for time_s in (segments.forward_s, segments.backward_s):
+        usable = np.where(time_s > 0, time_s, np.inf)
+        kmh = np.where(np.isnan(time_s), 0, segments.length_m / usable * 3.6)
+        speeds.append(np.where(time_s == 0, 1, kmh))  # no length: any speed will do
+    return speeds[0], speeds[1]

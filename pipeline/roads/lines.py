@@ -1,0 +1,44 @@
+"""Lines from arrays of vertices, cut where they cross the antimeridian."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+import shapely
+
+from pipeline.roads.arrays import Float64, Int64, offsets
+
+Geometries = npt.NDArray[Any]
+
+
+def line_strings(lon: Float64, lat: Float64, counts: Int64) -> Geometries:
+    """One line for each run of `counts[i]` vertices.
+
+    A line that crosses the 180th meridian becomes a MultiLineString cut there, as RFC 7946,
+    section 3.1.9, asks for.
+    """
+    line = np.repeat(np.arange(len(counts)), counts)
+    lines = shapely.linestrings(np.column_stack([lon, lat]), indices=line)
+    jumps = (np.abs(np.diff(lon)) > 180) & (line[1:] == line[:-1])
+    starts = offsets(counts)
+    for crossing in np.unique(line[:-1][jumps]):
+        run = slice(starts[crossing], starts[crossing + 1])
+        lines[crossing] = _cut(lon[run], lat[run])
+    return np.asarray(lines)
+
+
+def _cut(lon: Float64, lat: Float64) -> shapely.MultiLineString:
+    """Cut one line at the 180th meridian."""
+    parts: list[list[tuple[float, float]]] = [[(float(lon[0]), float(lat[0]))]]
+    for i in range(1, len(lon)):
+        if abs(lon[i] - lon[i - 1]) > 180:
+            side = float(np.sign(lon[i - 1])) * 180
+            ahead = lon[i] + 2 * side  # the next vertex, beyond the meridian
+            share = (side - lon[i - 1]) / (ahead - lon[i - 1])
+            middle = float(lat[i - 1] + share * (lat[i] - lat[i - 1]))
+            parts[-1].append((side, middle))
+            parts.append([(-side, middle)])
+        parts[-1].append((float(lon[i]), float(lat[i])))
+    return shapely.MultiLineString(parts)

@@ -1,0 +1,159 @@
+"""What a road extract holds and what was lost of it: a table, and lines for maps."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import geopandas as gpd
+import numpy as np
+import pandas as pd
+
+from pipeline.roads.arrays import Bool, Float64, Int64
+from pipeline.roads.contract import Chains
+from pipeline.roads.extract import RoadExtract
+from pipeline.roads.graph import RoadGraph, unpack_distance_km
+from pipeline.roads.lines import line_strings
+from pipeline.roads.rules import FERRY, RoadRules, WayTraits
+from pipeline.roads.segments import Losses, Segments
+
+NO_CLASS = "all"
+
+
+def quality(
+    extract: RoadExtract,
+    traits: WayTraits,
+    rules: RoadRules,
+    segments: Segments,
+    losses: Losses,
+    graph: RoadGraph,
+    islands: int,
+) -> pd.DataFrame:
+    """The table `road_quality`: lengths and tagged limits by class, then what was lost."""
+    by_class = _by_class(traits, rules, segments)
+    whole = _whole(extract, traits, segments, losses, graph, islands)
+    return pd.DataFrame(
+        by_class + whole, columns=["measure", "road_class", "value", "unit", "note"]
+    )
+
+
+def _by_class(traits: WayTraits, rules: RoadRules, segments: Segments) -> list[tuple[Any, ...]]:
+    """Length of each class, and the share of it that has a readable limit."""
+    code = traits.class_code[segments.way]
+    km = segments.length_m / 1000
+    readable = (traits.limit_tagged & ~traits.limit_unreadable)[segments.way]
+    names = rules.classes
+    length = np.bincount(code, km, minlength=len(names))
+    tagged = np.bincount(code, km * readable, minlength=len(names))
+    rows: list[tuple[Any, ...]] = []
+    for name, total, with_limit in zip(names, length, tagged, strict=True):
+        if total > 0:
+            what = "ferry length" if name == FERRY else "road length"
+            rows.append((what, name, total, "km", "each road once, both directions together"))
+        if total > 0 and name != FERRY:
+            note = "the rest is driven at the default speed of its class"
+            rows.append(("share with a speed limit", name, with_limit / total, "share", note))
+    on_land = code != names.index(FERRY)
+    road = float(km[on_land].sum())
+    share = float(km[on_land & readable].sum()) / road
+    rows.append(("road length", NO_CLASS, road, "km", "ferries not included"))
+    rows.append(
+        ("share with a speed limit", NO_CLASS, share, "share", "times rest on defaults elsewhere")
+    )
+    return rows
+
+
+def _whole(
+    extract: RoadExtract,
+    traits: WayTraits,
+    segments: Segments,
+    losses: Losses,
+    graph: RoadGraph,
+    islands: int,
+) -> list[tuple[Any, ...]]:
+    """Counts over the whole extract and graph."""
+    way = segments.way
+    km = segments.length_m / 1000
+    road = ~traits.is_ferry
+    on_road = (traits.class_code >= 0) & road
+    networks = int(graph.node_network.max()) + 1
+    outside = (graph.node_network[graph.edge_start] < 0) | (
+        graph.node_network[graph.edge_start] != graph.node_network[graph.edge_end]
+    )
+    dropped_km = float(km_of_edges(graph)[outside & ~graph.edge_is_ferry].sum())
+    rows = [
+        ("ways in the extract", extract.ways, "ways", "highway or ferry tag"),
+        ("ways for cars", int((traits.class_code >= 0).sum()), "ways", "of a class in use"),
+        ("ways closed to cars", int(traits.closed.sum()), "ways", "by their access tags"),
+        (
+            "unreadable speed limits",
+            int((traits.limit_unreadable & on_road).sum()),
+            "ways",
+            "driven at the default speed of their class",
+        ),
+        ("ways cut", losses.cut_ways, "ways", "nodes outside the extract; the rest is used"),
+        ("pieces cut out", losses.cut_places, "pieces", "between nodes that were not given"),
+        (
+            "ferries without duration",
+            losses.fallback_ferries,
+            "ways",
+            "run at roads.ferry_speed_kmh",
+        ),
+        ("one-way length", _one_way_km(segments, road), "km", "without ferries"),
+        ("toll length", float(km[traits.is_toll[way]].sum()), "km", "ferries included"),
+        (
+            "unpaved length",
+            float(km[(traits.is_unpaved & road)[way]].sum()),
+            "km",
+            "by surface, or by class where none is tagged",
+        ),
+        ("junctions", graph.nodes, "junctions", "nodes of the graph"),
+        ("edges", graph.edges, "edges", "stretches between junctions"),
+        ("arcs", graph.arcs, "arcs", "directed; of parallel ones the best, loops left out"),
+        ("main networks", networks, "networks", "in which every place can be reached and left"),
+        ("islands", islands, "parts", "join no main network; not routed to"),
+        ("road off the main networks", dropped_km, "km", "no point is tied to it"),
+    ]
+    return [(measure, NO_CLASS, float(value), unit, note) for measure, value, unit, note in rows]
+
+
+def km_of_edges(graph: RoadGraph) -> Float64:
+    """Length of each edge, km."""
+    cost = np.where(graph.edge_forward_cost >= 0, graph.edge_forward_cost, graph.edge_backward_cost)
+    return unpack_distance_km(cost)
+
+
+def _one_way_km(segments: Segments, road: Bool) -> float:
+    one_way = np.isnan(segments.forward_s) != np.isnan(segments.backward_s)
+    return float(segments.length_m[one_way & road[segments.way]].sum() / 1000)
+
+
+def lines_by_class(
+    extract: RoadExtract,
+    traits: WayTraits,
+    rules: RoadRules,
+    segments: Segments,
+    chains: Chains,
+) -> gpd.GeoDataFrame:
+    """The table `road_lines`: a line for each run of one class along an edge."""
+    code = traits.class_code[segments.way[chains.segment]]
+    begins = np.zeros(len(code), dtype=np.bool_)
+    begins[chains.first[:-1]] = True
+    begins[1:] |= code[1:] != code[:-1]
+    first = np.flatnonzero(begins)
+    counts: Int64 = np.diff(np.append(first, len(code))).astype(np.int64)
+    tail = np.where(chains.against, segments.b[chains.segment], segments.a[chains.segment])
+    head = np.where(chains.against, segments.a[chains.segment], segments.b[chains.segment])
+    run = np.repeat(np.arange(len(first)), counts)
+    vertex = np.empty(len(code) + len(first), dtype=np.int64)
+    vertex[np.arange(len(code)) + run] = tail
+    vertex[np.cumsum(counts + 1) - 1] = head[first + counts - 1]
+    lon, lat = extract.degrees(vertex)
+    names = np.array(rules.classes, dtype=object)
+    return gpd.GeoDataFrame(
+        {
+            "road_class": names[code[first]],
+            "distance_km": np.add.reduceat(segments.length_m[chains.segment], first) / 1000,
+        },
+        geometry=line_strings(lon, lat, counts + 1),
+        crs="EPSG:4326",
+    )

@@ -1,0 +1,219 @@
+"""Rules of the road: what each way allows, by the table in ``config/roads.toml``.
+
+Every rule is a function of a tag's value. A column of tags is categorical, so each rule is
+worked out once per distinct value and spread over the ways.
+"""
+
+from __future__ import annotations
+
+import tomllib
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from pipeline.errors import StudyError
+from pipeline.roads.arrays import Bool, Float64, Int8, Int32, Int64
+from pipeline.roads.extract import RoadExtract
+from pipeline.roads.speeds import read_duration_min, read_limit_kmh
+from pipeline.settings import RoadsSettings
+
+RULES_FILE = Path(__file__).parents[2] / "config" / "roads.toml"
+FERRY = "ferry"
+
+
+@dataclass(frozen=True)
+class RoadRules:
+    """The table of rules, with what the study replaces in it.
+
+    Attributes
+    ----------
+    classes : road classes in order; a class's code is its position; ferries come last.
+    class_kmh, class_oneway, class_unpaved : defaults of each class, in that order.
+    access, oneway, speed, unpaved_kmh, ferry : sections of the table, as they stand there.
+    """
+
+    classes: tuple[str, ...]
+    class_kmh: Float64
+    class_oneway: Bool
+    class_unpaved: Bool
+    access: dict[str, Any]
+    oneway: dict[str, Any]
+    speed: dict[str, float]
+    unpaved_kmh: dict[str, float]
+    ferry: dict[str, float]
+
+
+@dataclass(frozen=True)
+class WayTraits:
+    """What a car may do on each way: arrays with one value per way of the extract.
+
+    Attributes
+    ----------
+    class_code : position in ``RoadRules.classes``; -1: no way for cars (a path, a class that
+        the study leaves out).
+    closed : whether access tags close it to cars.
+    forward, backward : whether it can be driven in the order of its nodes, and against it.
+    forward_kmh, backward_kmh : driven speed; of ferries NaN (see `ferry_min`).
+    limit_tagged, limit_unreadable : whether a limit is tagged, and cannot be read.
+    is_ferry, is_toll, is_unpaved : what it is.
+    ferry_min : crossing by its `duration`, minutes; NaN where there is none to read.
+    """
+
+    class_code: Int32
+    closed: Bool
+    forward: Bool
+    backward: Bool
+    forward_kmh: Float64
+    backward_kmh: Float64
+    limit_tagged: Bool
+    limit_unreadable: Bool
+    is_ferry: Bool
+    is_toll: Bool
+    is_unpaved: Bool
+    ferry_min: Float64
+
+
+def load_rules(settings: RoadsSettings, file: Path = RULES_FILE) -> RoadRules:
+    """Read the table of rules and put the study's own speeds in it.
+
+    Raises
+    ------
+    StudyError
+        The study gives a speed for a class that the table does not know.
+    """
+    table = tomllib.loads(file.read_text(encoding="utf-8"))
+    classes = table["classes"]
+    for name, kmh in settings.class_speed_kmh.items():
+        if name not in classes:
+            raise StudyError(
+                f"roads.class_speed_kmh: {name!r} is no road class; known: {', '.join(classes)}."
+            )
+        classes[name] = classes[name] | {"kmh": kmh}
+    rows = [*classes.values(), {"kmh": np.nan, "oneway": False, "unpaved": False}]
+    return RoadRules(
+        classes=(*classes, FERRY),
+        class_kmh=np.array([row["kmh"] for row in rows], dtype=np.float64),
+        class_oneway=np.array([row["oneway"] for row in rows], dtype=np.bool_),
+        class_unpaved=np.array([row["unpaved"] for row in rows], dtype=np.bool_),
+        access=table["access"],
+        oneway=table["oneway"],
+        speed=table["speed"],
+        unpaved_kmh=table["unpaved_kmh"],
+        ferry=table["ferry"],
+    )
+
+
+def way_traits(extract: RoadExtract, rules: RoadRules, settings: RoadsSettings) -> WayTraits:
+    """Apply the rules to every way of an extract."""
+    tags = extract.way_tags
+    class_code = _class_codes(tags, rules, settings)
+    is_ferry = class_code == len(rules.classes) - 1
+    has_class = class_code >= 0
+    access = _access(tags, rules)
+    closed = (access == 0) | _untagged_ferry(is_ferry, access, settings)
+    direction = _direction(tags, class_code, rules)
+    surface_kmh = _by_value(tags["surface"], lambda v: rules.unpaved_kmh.get(v, np.inf), np.nan)
+    default_unpaved = np.isnan(surface_kmh) & has_class & rules.class_unpaved[class_code]
+    forward_kmh, backward_kmh, unreadable = _speeds(tags, class_code, surface_kmh, rules)
+    is_open = has_class & ~closed
+    return WayTraits(
+        class_code=class_code,
+        closed=closed & has_class,
+        forward=is_open & (direction >= 0) & (direction != CLOSED),
+        backward=is_open & (direction <= 0),
+        forward_kmh=forward_kmh * settings.speed_factor,
+        backward_kmh=backward_kmh * settings.speed_factor,
+        limit_tagged=tags["maxspeed"].notna().to_numpy(),
+        limit_unreadable=unreadable,
+        is_ferry=is_ferry,
+        is_toll=_last_tagged(tags, ("toll", "toll:motorcar"), lambda v: float(v == "yes")) == 1,
+        is_unpaved=np.isfinite(surface_kmh) | default_unpaved,
+        ferry_min=np.where(is_ferry, _by_value(tags["duration"], read_duration_min), np.nan),
+    )
+
+
+CLOSED = 2  # a direction: 1 forward only, -1 backward only, 0 both, 2 neither
+
+
+def _class_codes(tags: pd.DataFrame, rules: RoadRules, settings: RoadsSettings) -> Int32:
+    """Code of each way's class; a way that is a road and a ferry counts as a ferry."""
+    codes = {name: code for code, name in enumerate(rules.classes)}
+    if not settings.tracks:
+        del codes["track"]
+    ferry = codes.pop(FERRY) if settings.ferries != "none" else -1
+    road = _by_value(tags["highway"], lambda value: codes.get(value, -1), -1)
+    is_ferry = _by_value(tags["route"], lambda value: value == FERRY, 0) == 1
+    return np.where(is_ferry, ferry, road).astype(np.int32)
+
+
+def _access(tags: pd.DataFrame, rules: RoadRules) -> Float64:
+    """1 open, 0 closed, NaN untagged: the most specific key with a known value decides."""
+    known = dict.fromkeys(rules.access["closed"], 0.0) | dict.fromkeys(rules.access["open"], 1.0)
+    return _last_tagged(tags, rules.access["keys"], lambda value: known.get(value, np.nan))
+
+
+def _untagged_ferry(is_ferry: Bool, access: Float64, settings: RoadsSettings) -> Bool:
+    """Ferries that do not say that they take cars, where the study wants them to."""
+    return is_ferry & (access != 1) & (settings.ferries == "car_tagged")
+
+
+def _direction(tags: pd.DataFrame, class_code: Int32, rules: RoadRules) -> Int8:
+    """1 forward only, -1 backward only, 0 both, 2 neither."""
+    known = dict.fromkeys(rules.oneway["forward"], 1.0)
+    known |= dict.fromkeys(rules.oneway["backward"], -1.0)
+    known |= dict.fromkeys(rules.oneway["both"], 0.0)
+    known |= dict.fromkeys(rules.oneway["closed"], float(CLOSED))
+    tagged = _last_tagged(tags, rules.oneway["keys"], lambda value: known.get(value, np.nan))
+    around = rules.oneway["implied_by_junction"]
+    implied = (_by_value(tags["junction"], lambda value: value in around, 0) == 1) | (
+        (class_code >= 0) & rules.class_oneway[class_code]
+    )
+    return np.where(np.isnan(tagged), implied, tagged).astype(np.int8)
+
+
+def _speeds(
+    tags: pd.DataFrame, class_code: Int32, surface_kmh: Float64, rules: RoadRules
+) -> tuple[Float64, Float64, Bool]:
+    """Speed along and against each way: the limit, else the class's, capped by the surface.
+
+    The third array says where a limit is tagged that cannot be read.
+    """
+
+    def limit(key: str) -> Float64:
+        return _by_value(tags[key], lambda value: read_limit_kmh(value, rules.speed))
+
+    default = np.where(class_code >= 0, rules.class_kmh[class_code], np.nan)
+    both = limit("maxspeed")
+    unreadable = tags["maxspeed"].notna().to_numpy() & np.isnan(both)
+    speeds = []
+    for key in ("maxspeed:forward", "maxspeed:backward"):
+        one = limit(key)
+        unreadable |= tags[key].notna().to_numpy() & np.isnan(one)
+        kmh = np.where(np.isnan(one), both, one)
+        speeds.append(np.fmin(np.where(np.isnan(kmh), default, kmh), surface_kmh))
+    return speeds[0], speeds[1], unreadable
+
+
+def _by_value(
+    column: pd.Series[Any], meaning: Callable[[str], float], missing: float = np.nan
+) -> Float64:
+    """`meaning` of each value, worked out once per distinct value; `missing` where untagged."""
+    values = [float(meaning(value)) for value in column.cat.categories]
+    table = np.array([*values, missing], dtype=np.float64)
+    codes: Int64 = column.cat.codes.to_numpy(dtype=np.int64)
+    return table[codes]  # code -1, untagged, takes the last entry
+
+
+def _last_tagged(
+    tags: pd.DataFrame, keys: tuple[str, ...] | list[str], meaning: Callable[[str], float]
+) -> Float64:
+    """Meaning by the last of `keys` that has one; keys run from the general to the specific."""
+    result = np.full(len(tags), np.nan)
+    for key in keys:
+        value = _by_value(tags[key], meaning)
+        result = np.where(np.isnan(value), result, value)
+    return result
