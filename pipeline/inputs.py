@@ -43,7 +43,7 @@ def read_visit_records(study: Study) -> pd.DataFrame:
     rows = table.frame.index
     frame = pd.DataFrame(
         {
-            "record_id": mapped.texts("record_id", pd.Series(rows + table.first_row, rows)),
+            "record_id": mapped.texts("record_id", pd.Series(rows + 1, rows)),
             "postal_code_raw": mapped.texts("postal_code"),
             "site_id": mapped.texts("site_id", _only_site(sites)),
             "trips": mapped.numbers("trips", 1.0),

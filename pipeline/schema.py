@@ -27,21 +27,22 @@ class Source:
     ----------
     name : the file's name, or the stage's.
     names : the owner's column names by ours, where they differ.
-    first_row : number of the first data row as a person counts it (2 under a header line).
+    first_line : line of the file that the first data row stands in; 0 where there are no lines.
     """
 
     name: str
     names: Mapping[str, str] = field(default_factory=dict)
-    first_row: int = 1
+    first_line: int = 0
 
     def column(self, name: str) -> str:
         """The column's name as its owner knows it."""
         return self.names.get(name, name)
 
     def row(self, index: object) -> str:
-        """' in row 7' for a position that counts from 0; '' for what is no position."""
+        """' in row 7 (line 8)' for position 6 of a file; '' for what is no position."""
         if isinstance(index, int | float | np.integer) and index == index // 1:
-            return f" in row {int(index) + self.first_row}"
+            line = f" (line {int(index) + self.first_line})" if self.first_line else ""
+            return f" in row {int(index) + 1}{line}"
         return ""
 
 

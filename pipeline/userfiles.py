@@ -42,13 +42,13 @@ class UserTable:
     name : the file's name.
     frame : the columns as they stand; the index is the position in the file, from 0, and
         entirely blank rows are gone.
-    first_row : number of the first data row as the owner counts it: 2 where line 1 is a header.
+    first_line : line of the file that row 1 stands in, under a header 2; 0 without lines.
     decimal_comma : whether a comma in a number is its decimal mark (files with ';').
     """
 
     name: str
     frame: pd.DataFrame
-    first_row: int = 1
+    first_line: int = 0
     decimal_comma: bool = False
 
     def has(self, column: str) -> bool:
@@ -61,7 +61,7 @@ class UserTable:
 
     def source(self, names: dict[str, str]) -> Source:
         """Where a table made of this one came from; `names`: the file's columns by ours."""
-        return Source(self.name, names, self.first_row)
+        return Source(self.name, names, self.first_line)
 
     def need(self, column: str, meaning: str) -> None:
         """Raise TableError unless the file has the column."""
@@ -158,7 +158,7 @@ def read_user_table(
     attributes = table.frame.drop(columns="geometry", errors="ignore")
     blank = attributes.isna().all(axis=1) if "geometry" not in table.frame else None
     if blank is not None and blank.any():
-        return UserTable(table.name, table.frame[~blank], table.first_row, table.decimal_comma)
+        return UserTable(table.name, table.frame[~blank], table.first_line, table.decimal_comma)
     return table
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import itertools
 import time
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -21,7 +22,7 @@ from tests.visit_world import make_records, make_study, make_zones
 ANY = make_study(visits={"max_unmatched_share": 1.0})
 
 
-def place(code: str | None, **sections: dict[str, object]) -> pd.Series:
+def place(code: str | None, **sections: Any) -> pd.Series[Any]:
     """The row of `origins` that one written code becomes."""
     visits = {"max_unmatched_share": 1.0, **sections.pop("visits", {})}
     study = make_study(visits=visits, **sections)
