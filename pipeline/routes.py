@@ -1,0 +1,268 @@
+"""The stage ``route``: the fastest route of every zone to every site and home again.
+
+One search per access point against the traffic gives every zone's way there, one with the
+traffic the way home, one more the shortest distance; zones cost next to nothing.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+
+import geopandas as gpd
+import numpy as np
+import numpy.typing as npt
+import pandas as pd
+
+from pipeline.errors import RouteError
+from pipeline.roads.arrays import Bool, Float64, Int64
+from pipeline.roads.graph import (
+    DISTANCE_MASK,
+    RoadGraph,
+    unpack_distance_km,
+    unpack_time_min,
+)
+from pipeline.roads.route_lines import Leg, draw_legs
+from pipeline.roads.snapping import TIED, TOO_FAR, Tied, tie_to_roads
+from pipeline.roads.trips import Trips, trips_to
+from pipeline.search import UNREACHED
+from pipeline.settings import RoutesSettings
+from pipeline.study import Study
+from pipeline.tables import REACHED_STATUSES, ROUTE_STATUSES
+
+ALONG = ("ferry_km", "ferry_min", "toll_km", "unpaved_km")
+
+
+@dataclass(frozen=True)
+class Ends:
+    """The points at the two ends of all trips, tied to the roads."""
+
+    homes: Tied  # one per zone
+    doors: Tied  # one per access point
+
+
+def route(
+    zones: pd.DataFrame, sites: pd.DataFrame, graph: RoadGraph, *, study: Study
+) -> tuple[pd.DataFrame, gpd.GeoDataFrame]:
+    """Route every zone to every site and back.
+
+    Parameters
+    ----------
+    zones, sites : tables of these names; a site has one row per access point.
+    graph : the road graph.
+    study : sections [routes] and [compute].
+
+    Returns
+    -------
+    `routes`, with a row for every zone and site, and `route_lines` of the routed pairs.
+    Distances and times run from door to site: the straight gaps between the points and
+    their roads are charged at the speeds that the study states. A site is reached by the
+    access point with the fastest route there, and left by the same one;
+    `shortest_distance_km` is to whichever access point is nearest by road.
+
+    Raises
+    ------
+    RouteError
+        A site has no access point near a road, or no zone reaches any site.
+    """
+    settings = study.routes
+    ends = Ends(
+        homes=tie_to_roads(graph, zones, settings, gap_kmh=settings.zone_gap_speed_kmh),
+        doors=tie_to_roads(graph, sites, settings, gap_kmh=settings.site_gap_speed_kmh),
+    )
+    _refuse_sites_off_the_roads(sites, ends.doors, settings)
+    tables, legs = [], []
+    for rows, trips in _site_by_site(sites, ends, graph, study.compute.workers):
+        site, door = _site_routes(zones, sites, ends, rows, trips)
+        tables.append(site)
+        legs += _legs(graph, ends, site, door, trips, settings.max_lines)
+    routes = _zone_by_zone(tables)
+    if not routes["route_status"].isin(REACHED_STATUSES).any():
+        raise RouteError(_nothing_routed(routes))
+    return routes, _lines(legs, sites, graph, ends, settings)
+
+
+def summarise_route(outputs: tuple[pd.DataFrame, gpd.GeoDataFrame]) -> str:
+    """One line for people: how many pairs, and what became of them."""
+    routes = outputs[0]
+    words = [f"{routes['zone_id'].nunique():,} zones × {routes['site_id'].nunique():,} sites"]
+    for status in ROUTE_STATUSES:
+        count = int((routes["route_status"] == status).sum())
+        if count or status == "routed":
+            words.append(f"{count:,} {status.replace('_', ' ')}")
+    return ", ".join(words) + " (see routes.csv)"
+
+
+def _site_by_site(
+    sites: pd.DataFrame, ends: Ends, graph: RoadGraph, workers: int
+) -> Iterator[tuple[Int64, dict[int, Trips]]]:
+    """Rows of each site's access points, and the trips to those that are on a road.
+
+    The searches run ahead on `workers` threads, one site each; compiled code holds no lock.
+    """
+
+    def all_trips(rows: Int64) -> dict[int, Trips]:
+        on_road = rows[ends.doors.status[rows] == TIED]
+        places = ends.doors.places
+        return {int(row): trips_to(graph, ends.homes.places, places, int(row)) for row in on_road}
+
+    site_ids = sites["site_id"].to_numpy()
+    groups = [np.flatnonzero(site_ids == site_id) for site_id in pd.unique(sites["site_id"])]
+    with ThreadPoolExecutor(workers) as pool:
+        for start in range(0, len(groups), workers):
+            batch = groups[start : start + workers]
+            yield from zip(batch, pool.map(all_trips, batch), strict=True)
+
+
+# --- one site --------------------------------------------------------------------------------
+
+
+def _site_routes(
+    zones: pd.DataFrame, sites: pd.DataFrame, ends: Ends, rows: Int64, trips: dict[int, Trips]
+) -> tuple[pd.DataFrame, Int64]:
+    """The routes of all zones to one site, and the row of the access point that each takes."""
+    door, shortest = _choose_doors(len(zones), ends, trips)
+    there, home, along = _of_doors(len(zones), door, trips)
+    gaps = ends.homes.gap_cost + np.where(door >= 0, ends.doors.gap_cost[door], 0)
+    reached = there < UNREACHED
+    status = _status(ends.homes.status, there)
+    columns: dict[str, npt.NDArray[np.generic] | str] = {
+        "zone_id": zones["zone_id"].to_numpy(),
+        "site_id": sites["site_id"].iloc[rows[0]],
+        "access_id": np.where(reached, sites["access_id"].to_numpy(dtype=object)[door], None),
+        "distance_km": _where(reached, unpack_distance_km(there + gaps)),
+        "drive_time_min": _where(reached, unpack_time_min(there + gaps)),
+        "shortest_distance_km": _where(reached, shortest / 1e6),
+        "return_distance_km": _where(home < UNREACHED, unpack_distance_km(home + gaps)),
+        "return_drive_time_min": _where(home < UNREACHED, unpack_time_min(home + gaps)),
+    }
+    columns |= dict(zip(ALONG, along.T, strict=True))
+    columns["zone_snap_m"] = _where(np.isfinite(ends.homes.gap_m), ends.homes.gap_m)
+    nearest = rows[np.argmin(ends.doors.gap_m[rows])]
+    columns["site_snap_m"] = ends.doors.gap_m[np.where(door >= 0, door, nearest)]
+    columns["route_status"] = status
+    return pd.DataFrame(columns), np.where(status == "routed", door, -1)
+
+
+def _choose_doors(count: int, ends: Ends, trips: dict[int, Trips]) -> tuple[Int64, Int64]:
+    """Row of the access point with the fastest route from each zone (-1: none reached).
+
+    The second array is the shortest distance to any access point, gaps included, mm.
+    """
+    door = np.full(count, -1, dtype=np.int64)
+    best = np.full(count, UNREACHED)
+    shortest = np.full(count, UNREACHED)
+    home_gap_mm = ends.homes.gap_cost & DISTANCE_MASK
+    for row, trip in trips.items():
+        gap = ends.doors.gap_cost[row]
+        total = np.where(trip.there < UNREACHED, trip.there + gap, UNREACHED)
+        better = total < best
+        door[better], best[better] = row, total[better]
+        length = trip.shortest + (gap & DISTANCE_MASK) + home_gap_mm
+        shortest = np.where(trip.shortest < UNREACHED, np.minimum(shortest, length), shortest)
+    return door, shortest
+
+
+def _of_doors(count: int, door: Int64, trips: dict[int, Trips]) -> tuple[Int64, Int64, Float64]:
+    """Costs there and home, and what the route runs on, by the chosen access point."""
+    there, home = np.full(count, UNREACHED), np.full(count, UNREACHED)
+    along = np.full((count, len(ALONG)), np.nan)
+    for row, trip in trips.items():
+        chosen = door == row
+        there[chosen], home[chosen] = trip.there[chosen], trip.home[chosen]
+        along[chosen] = trip.along[chosen]
+    return there, home, along
+
+
+def _status(zone_status: npt.NDArray[np.object_], there: Int64) -> npt.NDArray[np.object_]:
+    """Status of each pair; a trip of no length on the road lies within the zone."""
+    reached = np.where((there & DISTANCE_MASK) == 0, "within_zone", "routed")
+    status = np.where(there < UNREACHED, reached, "no_path").astype(object)
+    return np.where(zone_status == TOO_FAR, TOO_FAR, status)
+
+
+def _where(condition: Bool, values: Float64) -> Float64:
+    return np.where(condition, values, np.nan)
+
+
+def _zone_by_zone(tables: list[pd.DataFrame]) -> pd.DataFrame:
+    """All sites' tables in one, the sites of a zone together, both in the order given."""
+    routes = pd.concat(tables)
+    return routes.sort_index(kind="stable").reset_index(drop=True)
+
+
+# --- lines -----------------------------------------------------------------------------------
+
+
+def _legs(
+    graph: RoadGraph,
+    ends: Ends,
+    site: pd.DataFrame,
+    door: Int64,
+    trips: dict[int, Trips],
+    most: int,
+) -> list[Leg]:
+    """Ways through the graph of a site's routed pairs, the shortest drives first."""
+    routed = np.flatnonzero(door >= 0)
+    minutes = site["drive_time_min"].to_numpy()
+    order = routed[np.argsort(minutes[routed], kind="stable")][:most]
+    return [
+        Leg.of(
+            graph,
+            ends.homes.places,
+            trips[int(door[zone])],
+            zone=int(zone),
+            door=int(door[zone]),
+            names=(str(site["zone_id"].iloc[zone]), str(site["site_id"].iloc[zone])),
+            drive_time_min=float(minutes[zone]),
+        )
+        for zone in order
+    ]
+
+
+def _lines(
+    legs: list[Leg],
+    sites: pd.DataFrame,
+    graph: RoadGraph,
+    ends: Ends,
+    settings: RoutesSettings,
+) -> gpd.GeoDataFrame:
+    """Lines of the pairs that are kept: sites before substitutes, then the shortest drives."""
+    roles = dict(zip(sites["site_id"], sites["role"], strict=True))
+    kept = sorted(legs, key=lambda leg: (roles[leg.site_id] != "site", leg.drive_time_min))
+    kept = kept[: settings.max_lines]
+    return draw_legs(
+        graph, ends.homes.places, ends.doors.places, kept, tolerance_m=settings.line_tolerance_m
+    )
+
+
+# --- what cannot be --------------------------------------------------------------------------
+
+
+def _refuse_sites_off_the_roads(
+    sites: pd.DataFrame, doors: Tied, settings: RoutesSettings
+) -> None:
+    """Every site needs an access point near a road (be it an island's)."""
+    far = pd.Series(doors.status == TOO_FAR).groupby(sites["site_id"].to_numpy()).all()
+    lost = [site_id for site_id in pd.unique(sites["site_id"]) if far[site_id]]
+    if not lost:
+        return
+    row = int(np.flatnonzero((sites["site_id"] == lost[0]).to_numpy())[0])
+    where = f"longitude {sites['lon'].iloc[row]:g}, latitude {sites['lat'].iloc[row]:g}"
+    gap_km = doors.gap_m[row] / 1000
+    raise RouteError(
+        f"{len(lost)} site(s) too far from every road; first: {lost[0]!r} ({where}), "
+        f"{gap_km:,.1f} km from the nearest one, and routes.max_snap_km is "
+        f"{settings.max_snap_km:g}. Correct its coordinates (are they swapped?), give an access "
+        "point on a road, give a road extract that reaches it, or raise routes.max_snap_km."
+    )
+
+
+def _nothing_routed(routes: pd.DataFrame) -> str:
+    counts = routes["route_status"].value_counts()
+    found = ", ".join(f"{count} {status}" for status, count in counts.items())
+    return (
+        f"no zone reaches any site ({found}). Look at the coordinates of zones and sites, and "
+        "whether the road extract covers both and the roads and ferries between them."
+    )

@@ -1,0 +1,269 @@
+"""Fastest and shortest routes from one place to every junction, or to it from every junction.
+
+A label-correcting search with a bucket queue (Dial 1969; buckets wider than the smallest arc
+as in Meyer and Sanders 2003, one bucket at a time). Costs are the packed integers of
+``roads.graph``, so one search carries time and distance, and ties of time are decided by
+distance. The result is exact; it does not depend on the width of the buckets.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64, compiled
+from pipeline.roads.graph import DISTANCE_BITS, DISTANCE_MASK
+
+UNREACHED = np.int64(2**62)
+BITS = DISTANCE_BITS
+MASK = DISTANCE_MASK
+MOST_BUCKETS = 1 << 16
+
+
+@dataclass(frozen=True)
+class Tree:
+    """Best routes between one place and all junctions.
+
+    Attributes
+    ----------
+    cost : (n,) packed cost of the best route; of a shortest-distance search millimetres;
+        `UNREACHED` where there is none.
+    parent : (n,) next junction towards the place; -1 at the ends of the place's own edge and
+        where there is no route.
+    via : (n,) arc taken to `parent`, as an index into the arcs that were searched; at the ends
+        of the place's own edge -2 minus the number of the seed.
+    """
+
+    cost: Int64
+    parent: Int32
+    via: Int32
+
+
+def search(
+    first: Int64,
+    node: Int32,
+    cost: Int64,
+    seed_node: Int32,
+    seed_cost: Int64,
+    *,
+    by_time: bool,
+) -> Tree:
+    """Search from the seeds along the given arcs to every node.
+
+    Parameters
+    ----------
+    first, node, cost : arcs by the node they leave, as in ``RoadGraph.arc_*``; with the arrays
+        ``in_*`` the search runs against the traffic, from the place to all that can reach it.
+    seed_node, seed_cost : nodes to start from, with the packed cost already spent there;
+        -1: not to be started from.
+    by_time : least time, then least distance; else least distance alone.
+    """
+    width = _bucket_bits(cost, by_time=by_time)
+    return Tree(*_search(first, node, cost, seed_node, seed_cost, by_time, width))
+
+
+def _bucket_bits(cost: Int64, *, by_time: bool) -> int:
+    """How many bits of a cost one bucket spans: about a mean arc, at most 65,536 buckets."""
+    low = BITS if by_time else 0
+    sample = cost[:: max(1, len(cost) // 10_000)]
+    sizes = (sample >> BITS) if by_time else (sample & MASK)
+    mean = float(sizes.mean()) if len(sizes) else 1.0
+    return low + max(0, int(np.log2(mean + 1)))
+
+
+@compiled
+def _search(
+    first: Int64,
+    node: Int32,
+    cost: Int64,
+    seed_node: Int32,
+    seed_cost: Int64,
+    by_time: bool,  # noqa: FBT001 (compiled code takes positions)
+    width: int,
+) -> tuple[Int64, Int32, Int32]:
+    mask = -1 if by_time else MASK
+    nodes = len(first) - 1
+    label = np.full(nodes, UNREACHED)
+    parent = np.full(nodes, -1, dtype=np.int32)
+    via = np.full(nodes, -1, dtype=np.int32)
+    pending = np.zeros(nodes, dtype=np.bool_)
+
+    largest, lowest = np.int64(0), UNREACHED
+    for arc in range(len(cost)):
+        largest = max(largest, cost[arc] & mask)
+    for seed in range(len(seed_node)):
+        if seed_cost[seed] >= 0:
+            largest = max(largest, seed_cost[seed] & mask)
+            lowest = min(lowest, seed_cost[seed] & mask)
+    while (largest >> width) + 2 > MOST_BUCKETS:
+        width += 1
+    buckets = 1
+    while buckets < (largest >> width) + 2:
+        buckets *= 2
+    head = np.full(buckets, -1, dtype=np.int32)
+    # A pool of list items; an item that was taken out is used again.
+    item_node = np.empty(1024, dtype=np.int32)
+    item_next = np.empty(1024, dtype=np.int32)
+    free, used, waiting = -1, 0, 0
+
+    for seed in range(len(seed_node)):
+        start = seed_node[seed]
+        value = seed_cost[seed] & mask
+        if seed_cost[seed] < 0 or value >= label[start]:
+            continue
+        label[start] = value
+        via[start] = -2 - seed
+        pending[start] = True
+        bucket = (value >> width) & (buckets - 1)
+        item_node[used] = start
+        item_next[used] = head[bucket]
+        head[bucket] = used
+        used += 1
+        waiting += 1
+
+    current = lowest >> width
+    while waiting > 0:
+        bucket = current & (buckets - 1)
+        while head[bucket] >= 0:
+            item = head[bucket]
+            here = item_node[item]
+            head[bucket] = item_next[item]
+            item_next[item] = free
+            free = item
+            waiting -= 1
+            if not pending[here]:
+                continue  # reached more cheaply since, and settled
+            pending[here] = False
+            base = label[here]
+            for arc in range(first[here], first[here + 1]):
+                there = node[arc]
+                value = base + (cost[arc] & mask)
+                old = label[there]
+                if value >= old:
+                    continue
+                label[there] = value
+                parent[there] = here
+                via[there] = arc
+                goal = value >> width
+                if pending[there] and (old >> width) == goal:
+                    continue
+                pending[there] = True
+                if free >= 0:
+                    item = free
+                    free = item_next[item]
+                else:
+                    if used == len(item_node):
+                        grown = np.empty(2 * used, dtype=np.int32)
+                        grown[:used] = item_node
+                        item_node = grown
+                        grown = np.empty(2 * used, dtype=np.int32)
+                        grown[:used] = item_next
+                        item_next = grown
+                    item = used
+                    used += 1
+                item_node[item] = there
+                item_next[item] = head[goal & (buckets - 1)]
+                head[goal & (buckets - 1)] = item
+                waiting += 1
+        current += 1
+    return label, parent, via
+
+
+def sums_along(
+    tree: Tree,
+    nodes: Int64,
+    arc_edge: Int32,
+    arc_cost: Int64,
+    edge_is_ferry: Bool,
+    edge_toll_m: Float32,
+    edge_unpaved_m: Float32,
+    seed_m: Float64,
+) -> Float64:
+    """What the routes between some junctions and the tree's place run on.
+
+    Parameters
+    ----------
+    tree : a search along the arcs that `arc_edge` and `arc_cost` describe.
+    nodes : (k,) junctions that the tree reaches.
+    arc_edge, arc_cost : of the arcs that were searched.
+    edge_is_ferry, edge_toll_m, edge_unpaved_m : of the edges.
+    seed_m : (seeds, 2) toll and unpaved metres between each seed and the place.
+
+    Returns
+    -------
+    (k, 4): ferry km, ferry minutes, toll km, unpaved km.
+    """
+    sums = _sums(
+        tree.parent,
+        tree.via,
+        nodes,
+        arc_edge,
+        arc_cost,
+        edge_is_ferry,
+        edge_toll_m,
+        edge_unpaved_m,
+        seed_m,
+    )
+    return np.asarray(sums / np.array([1e6, 6000.0, 1000.0, 1000.0]))
+
+
+@compiled
+def _sums(
+    parent: Int32,
+    via: Int32,
+    nodes: Int64,
+    arc_edge: Int32,
+    arc_cost: Int64,
+    edge_is_ferry: Bool,
+    edge_toll_m: Float32,
+    edge_unpaved_m: Float32,
+    seed_m: Float64,
+) -> Float64:
+    """Climb from each node until a node with known sums, then hand them down again."""
+    known = np.zeros(len(parent), dtype=np.bool_)
+    sums = np.empty((len(parent), 4), dtype=np.float64)
+    climbed = np.empty(len(parent), dtype=np.int32)
+    result = np.empty((len(nodes), 4), dtype=np.float64)
+    for k in range(len(nodes)):
+        here = np.int64(nodes[k])
+        height = 0
+        while not known[here] and parent[here] >= 0:
+            climbed[height] = here
+            height += 1
+            here = np.int64(parent[here])
+        if not known[here]:
+            known[here] = True
+            sums[here, :2] = 0.0
+            sums[here, 2:] = seed_m[-2 - via[here]]
+        while height > 0:
+            height -= 1
+            below = climbed[height]
+            arc = via[below]
+            edge = arc_edge[arc] // 2
+            sums[below] = sums[here]
+            if edge_is_ferry[edge]:
+                sums[below, 0] += arc_cost[arc] & MASK
+                sums[below, 1] += arc_cost[arc] >> BITS
+            sums[below, 2] += edge_toll_m[edge]
+            sums[below, 3] += edge_unpaved_m[edge]
+            known[below] = True
+            here = np.int64(below)
+        result[k] = sums[nodes[k]]
+    return result
+
+
+@compiled
+def path_edges(parent: Int32, via: Int32, arc_edge: Int32, node: int) -> tuple[Int64, int]:
+    """Directed edges from `node` to the tree's place, and the number of the seed at its end."""
+    count = 0
+    here = node
+    while parent[here] >= 0:
+        count += 1
+        here = parent[here]
+    edges = np.empty(count, dtype=np.int64)
+    here = node
+    for step in range(count):
+        edges[step] = arc_edge[via[here]]
+        here = parent[here]
+    return edges, -2 - via[here]
