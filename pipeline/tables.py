@@ -416,7 +416,7 @@ class Surplus(Table):
     std_error: Series[float] = column("its standard error", ge=0, nullable=True)
     ci_low: Series[float] = column("lower end of the confidence interval", nullable=True)
     ci_high: Series[float] = column("upper end of the confidence interval", nullable=True)
-    method: Series[str] = column("how the interval was made: delta, simulated, ...")
+    method: Series[str] = column("how the interval was made: delta, simulated; observed: a count without one")
     unit: Series[str] = column("unit of the figure")
     chosen: Series[bool] = column("whether it comes from the model that was chosen")
     note: Series[str] = column("what to know before using it", nullable=True)

@@ -12,10 +12,11 @@ import numpy as np
 from scipy.special import digamma, gammaln, polygamma
 
 from pipeline.demand.family import ALPHA, FittedModel
-from pipeline.demand.likelihood import LikelihoodFamily, Rows
+from pipeline.demand.likelihood import LikelihoodFamily, Rows, climb
 from pipeline.demand.sample import FloatArray, Sample
 
-_NO_OVERDISPERSION = 1e-5
+#: Overdispersion below this share of the mean cannot be told from none.
+_NO_OVERDISPERSION = 1e-3
 
 
 class Poisson(LikelihoodFamily):
@@ -94,12 +95,20 @@ class NegativeBinomial(LikelihoodFamily):
         )
 
     def start(self, rows: Rows) -> FloatArray:
-        """Least squares of the log count, and α by moments."""
-        beta = rows.first_guess()
-        mean = rows.mean(beta)
-        excess = float(np.sum((rows.counts - mean) ** 2 - rows.counts))
-        alpha = np.clip(excess / float(np.sum(mean**2)), 0.01, 10.0)
-        return np.append(beta, np.log(alpha))
+        """The Poisson's maximum, and the α of the overdispersion seen there.
+
+        α is halved until the point beats the Poisson, so that a climb from it cannot end there.
+        """
+        top = climb(Poisson(), rows)
+        mean = rows.mean(top.theta)
+        excess = float(rows.weight @ ((rows.counts - mean) ** 2 - rows.counts))
+        alpha = max(excess, 0.0) / float(rows.weight @ mean**2) + 1e-8
+        start = np.append(top.theta, np.log(alpha))
+        for _ in range(40):
+            if rows.weight @ self.log_likelihood(start, rows) > top.value:
+                break
+            start[-1] -= np.log(2)
+        return start
 
     def log_likelihood(self, theta: FloatArray, rows: Rows) -> FloatArray:
         """Log-likelihood of each row; the last parameter is log α."""

@@ -11,7 +11,7 @@ from dataclasses import dataclass, field
 from typing import Protocol
 
 import numpy as np
-from scipy import stats
+from scipy import special
 
 from pipeline.demand.sample import PRICE, FloatArray, Sample
 
@@ -89,7 +89,7 @@ class FittedModel:
         """Half-width of a two-sided interval, in standard errors."""
         tail = 0.5 + confidence / 2
         normal = np.isinf(self.degrees)
-        return float(stats.norm.ppf(tail) if normal else stats.t.ppf(tail, self.degrees))
+        return float(special.ndtri(tail) if normal else special.stdtrit(self.degrees, tail))
 
 
 @dataclass(frozen=True)

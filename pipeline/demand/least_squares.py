@@ -8,7 +8,6 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
-import statsmodels.api as sm
 
 from pipeline.demand.curves import LinearCurve, SemiLogCurve, index
 from pipeline.demand.design import caution_notes, require_fittable, standardise
@@ -85,9 +84,12 @@ def with_visits(sample: Sample) -> Sample:
 
 def least_squares(name: str, sample: Sample, response: FloatArray, errors: str) -> FittedModel:
     """Weighted least squares of a response on the sample's regressors."""
+    # Loading statsmodels takes longer than the fit; who fits nothing does not wait for it.
+    from statsmodels.regression.linear_model import WLS
+
     standard = standardise(sample.design)
     kind = "nonrobust" if errors == "model" else errors
-    result = sm.WLS(response, standard.matrix, weights=sample.weight).fit(cov_type=kind, use_t=True)
+    result = WLS(response, standard.matrix, weights=sample.weight).fit(cov_type=kind, use_t=True)
     spread = np.asarray(result.cov_params(), dtype=float)
     return FittedModel(
         model=name,

@@ -21,7 +21,7 @@ from pipeline.demand.design import (
     standardise,
 )
 from pipeline.demand.family import FittedModel, squared_correlation
-from pipeline.demand.maximum import maximise
+from pipeline.demand.maximum import Maximum, maximise
 from pipeline.demand.sample import FloatArray, Sample
 
 
@@ -120,14 +120,7 @@ class LikelihoodFamily(SemiLogCurve, ABC):
         require_overlap(sample)
         standard = standardise(sample.design)
         rows = Rows.of(sample, standard.matrix)
-
-        def value_gradient_hessian(theta: FloatArray) -> tuple[float, FloatArray, FloatArray]:
-            with np.errstate(all="ignore"):
-                value = float(rows.weight @ self.log_likelihood(theta, rows))
-                gradient = rows.weight @ self.scores(theta, rows)
-                return value, gradient, self.hessian(theta, rows)
-
-        top = maximise(value_gradient_hessian, self.start(rows))
+        top = climb(self, rows)
         if top.problem:
             return FittedModel.failed(self.name, sample, f"No verified maximum: {top.problem}.")
         size = len(sample.terms)
@@ -177,3 +170,16 @@ class LikelihoodFamily(SemiLogCurve, ABC):
     @abstractmethod
     def dispersion(self, model: FittedModel, sample: Sample) -> float:
         """How much the counts vary beyond the model's mean."""
+
+
+def climb(family: LikelihoodFamily, rows: Rows) -> Maximum:
+    """The verified maximum of a family's weighted log-likelihood, from its own start."""
+
+    def value_gradient_hessian(theta: FloatArray) -> tuple[float, FloatArray, FloatArray]:
+        # A step too far overflows; the line search sees a value that is not finite.
+        with np.errstate(all="ignore"):
+            value = float(rows.weight @ family.log_likelihood(theta, rows))
+            gradient = rows.weight @ family.scores(theta, rows)
+            return value, gradient, family.hessian(theta, rows)
+
+    return maximise(value_gradient_hessian, family.start(rows))

@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 import pandas as pd
-from scipy import stats
+from scipy import special
 
 from pipeline.demand.choice import Choice
 from pipeline.demand.family import ALPHA, FittedModel
@@ -44,7 +44,7 @@ def estimate_rows(model: FittedModel, confidence: float) -> pd.DataFrame:
 def _p_values(model: FittedModel) -> FloatArray:
     statistic = np.abs(model.estimate / model.std_error)
     normal = np.isinf(model.degrees)
-    one_sided = stats.norm.sf(statistic) if normal else stats.t.sf(statistic, model.degrees)
+    one_sided = special.ndtr(-statistic) if normal else special.stdtr(model.degrees, -statistic)
     p_values = np.asarray(2 * one_sided, dtype=float)
     if model.terms[-1] == ALPHA:
         p_values[-1] = np.nan
@@ -77,11 +77,11 @@ def fit_row(model: FittedModel, choice: Choice) -> dict[str, Any]:
 
 def fitted_models(estimates: pd.DataFrame, fit: pd.DataFrame) -> dict[tuple[str, str], FittedModel]:
     """Fitted models by site and model, read back from the two tables."""
-    rows = dict(estimates.groupby(["site_id", "model"], sort=False))
+    groups = estimates.groupby(["site_id", "model"], sort=False)
     models = {}
     for one in fit.to_dict("records"):
         site_id, model = str(one["site_id"]), str(one["model"])
-        models[site_id, model] = _model(rows[site_id, model], one)
+        models[site_id, model] = _model(groups.get_group((site_id, model)), one)
     return models
 
 

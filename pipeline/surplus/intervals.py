@@ -21,6 +21,7 @@ from pipeline.surplus.measures import (
 
 DELTA = "delta"
 SIMULATED = "simulated"
+OBSERVED = "observed"
 _STEP = 1e-4
 
 Row = dict[str, Any]
@@ -43,12 +44,14 @@ def delta_rows(model: FittedModel, sample: Sample, confidence: float) -> list[Ro
         if measure in AREAS and model.price_coefficient >= 0:
             rows.append(_row(measure, DELTA, note=no_area_words(model)))
             continue
+        if measure == VISITS_OBSERVED:
+            rows.append(_row(measure, OBSERVED, float(values[0]), note=notes[measure]))
+            continue
         up, down = values[1 : len(free) + 1], values[len(free) + 1 :]
         with np.errstate(invalid="ignore"):
             gradient = (up - down) / (2 * _STEP * model.std_error[free])
             variance = float(gradient @ covariance @ gradient)
-        known = measure == VISITS_OBSERVED
-        error = float(np.sqrt(variance)) if np.isfinite(variance) and not known else np.nan
+        error = float(np.sqrt(variance)) if np.isfinite(variance) else np.nan
         width = model.quantile(confidence) * error
         value = float(values[0])
         rows.append(
