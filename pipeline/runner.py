@@ -100,7 +100,9 @@ class Run:
         stamp = self._stamp(stage)
         arguments = self._arguments(stage)
         results = stage.run(*arguments, study=self.study.only(stage.sections))
-        checked = tuple(map(_checked, stage.writes, results, strict=True))
+        checked = tuple(
+            _checked(kind, result) for kind, result in zip(stage.writes, results, strict=True)
+        )
         for kind, result in zip(stage.writes, checked, strict=True):
             self._write(kind, result)
         self._write_stamp(stage.name, stamp, [self._path(kind) for kind in stage.writes])
