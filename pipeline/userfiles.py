@@ -14,7 +14,7 @@ import warnings
 import zipfile
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, cast
+from typing import Any
 
 import geopandas as gpd
 import numpy as np
@@ -68,8 +68,9 @@ class UserTable:
         if self.has(column):
             return
         have = [str(name) for name in self.frame.columns if name != "geometry"]
-        near = difflib.get_close_matches(column, have, n=1)
-        hint = f"; the nearest is {near[0]!r}" if near else ""
+        folded = {name.casefold(): name for name in have}
+        near = difflib.get_close_matches(column.casefold(), folded, n=1)
+        hint = f"; the nearest is {folded[near[0]]!r}" if near else ""
         raise TableError(
             f"{self.name}: column {column!r} ({meaning}) is missing; the file has: "
             f"{', '.join(have[:20])}{hint}. Add it, or name the file's own column in the "
@@ -239,7 +240,13 @@ def _read_excel(path: Path, sheet: str | None) -> UserTable:
                         f"{path.name}: there is no sheet {sheet!r}; it has: {', '.join(names)}. "
                         "Correct the key 'sheet' in the study file."
                     )
-                frame = book.parse(sheet or 0, dtype=str, keep_default_na=False, na_values=[""])
+                frame = pd.read_excel(
+                    book,
+                    sheet_name=sheet or 0,
+                    dtype=str,
+                    keep_default_na=False,
+                    na_values=[""],
+                )
     except (zipfile.BadZipFile, ValueError, KeyError, OSError) as error:
         raise TableError(
             f"{path.name}: not a readable workbook ({error}); save it again as .xlsx or CSV."
@@ -254,8 +261,8 @@ def _read_parquet(path: Path) -> UserTable:
         frame = gpd.read_parquet(path) if is_geo else pd.read_parquet(path)
     except (OSError, ValueError) as error:
         raise TableError(f"{path.name}: not a readable Parquet file ({error}).") from None
-    if is_geo:
-        frame = cast("gpd.GeoDataFrame", frame).rename_geometry("geometry")
+    if isinstance(frame, gpd.GeoDataFrame):
+        frame = _named_geometry(frame)
     return UserTable(path.name, frame.reset_index(drop=True))
 
 
@@ -278,4 +285,10 @@ def _read_layer(path: Path, layer: str | None) -> UserTable:
         raise InputError(f"{path.name}: not a readable GIS layer ({error}).") from None
     if not isinstance(frame, gpd.GeoDataFrame):
         return UserTable(path.name, frame)
-    return UserTable(path.name, frame.rename_geometry("geometry"))
+    return UserTable(path.name, _named_geometry(frame))
+
+
+def _named_geometry(frame: gpd.GeoDataFrame) -> gpd.GeoDataFrame:
+    """Call the geometry 'geometry'."""
+    name = frame.geometry.name
+    return frame if name == "geometry" else frame.rename_geometry("geometry")
