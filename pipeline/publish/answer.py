@@ -54,14 +54,16 @@ def _one_site(results: Results, headline: Headline) -> Html:
         f", at prices of {year}. This is what visitors would have been willing to pay over and "
         "above what their trips cost them. Nobody receives it as cash.",
     )
-    gauge = (
-        interval_bar(annual.value, annual.ci_low, annual.ci_high, words="Annual value")
-        if known and annual.ci_high > 0
-        else None
-    )
+    gauge = _gauge(annual, currency, sure) if known and annual.ci_high > 0 else None
     note = tag("p", annual.note, class_="small") if annual.note else None
     left = tag("div", claim, span, gauge, note, class_="say")
     return tag("div", left, _facts(results, headline), class_="answer")
+
+
+def _gauge(annual: Figure, currency: str, sure: str) -> Html:
+    bar = interval_bar(annual.value, annual.ci_low, annual.ci_high, words="Annual value")
+    words = f"{currency} a year. Pale: the {sure} interval. Upright mark: the estimate."
+    return tag("figure", bar, tag("figcaption", words))
 
 
 def _facts(results: Results, headline: Headline) -> Html:

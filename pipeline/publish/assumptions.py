@@ -26,7 +26,7 @@ def assumption_rows(results: Results) -> list[tuple[object, ...]]:
             extra = field.json_schema_extra
             about = extra if isinstance(extra, dict) else {}
             unit = str(about.get("unit", "")).replace("currency", results.currency)
-            what = join([field.description or "", " ", tag("code", key)])
+            what = join([_with_code(field.description or ""), " ", tag("code", key, class_="key")])
             who = tag("b", "study") if _is_set(key, given) else "default"
             rows.append((what, _shown(value), unit, about.get("usual", ""), who))
     return rows
@@ -41,6 +41,12 @@ def _assumptions(section: BaseModel, prefix: str) -> Iterator[tuple[str, FieldIn
             yield from _assumptions(value, f"{prefix}{name}.")
         elif isinstance(extra, dict) and extra.get("usual"):
             yield f"{prefix}{name}", field, value
+
+
+def _with_code(meaning: str) -> Html:
+    """A meaning whose `quoted` words are set as code."""
+    parts = meaning.split("`")
+    return join(tag("code", part) if i % 2 else part for i, part in enumerate(parts))
 
 
 def _is_set(key: str, given: frozenset[str]) -> bool:

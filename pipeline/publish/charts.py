@@ -47,7 +47,7 @@ def demand_chart(
     points : `cost, rate, size, label, outside`; size is a share of the greatest, 0 to 1.
     """
     cost, rate = points["cost"].to_numpy(), points["rate"].to_numpy()
-    top = max(float(rate.max()), float(curve.rate.max()) if curve else 0.0)
+    top = _top(rate, curve)
     step = round_up(max(float(cost.max()), 1e-9) / 6)
     x = Axis(0.0, float(np.ceil(cost.max() / step - 1e-9) * step), 84.0, 704.0)
     y = Axis(0.0, _headroom(top), 344.0, 46.0, root=is_skewed(rate))
@@ -71,15 +71,23 @@ def demand_chart(
             "text",
             f"Travel cost, {currency} per person and trip",
             x=704,
-            y=396,
+            y=412,
             text_anchor="end",
             class_="head",
         ),
         title=name,
         width=720,
-        height=404,
+        height=420,
         class_="chart",
     )
+
+
+def _top(rate: Numbers, curve: Curve | None) -> float:
+    """Greatest figure to show: points and curve in full, a wide band only so far."""
+    if curve is None:
+        return float(rate.max())
+    shown = max(float(rate.max()), float(curve.rate.max()))
+    return max(shown, min(float(np.nan_to_num(curve.high).max()), 1.5 * shown))
 
 
 def _headroom(top: float) -> float:

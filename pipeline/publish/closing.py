@@ -81,6 +81,7 @@ def attribution(results: Results) -> Html:
     return tag(
         "p",
         tag("b", data),
-        ". Colours of the map: cividis, which reads alike with and without colour vision "
-        "deficiency (Nuñez, Anderton and Renslow, 2018, PLOS ONE 13(7), e0199239).",
+        ". Colours of the map: scheme YlGnBu with five classes from ColorBrewer by Cynthia "
+        "A. Brewer, which keeps its order with colour vision deficiency (Harrower and Brewer, "
+        "2003, The Cartographic Journal 40(1)).",
     )

@@ -11,9 +11,20 @@ from pipeline.publish.mapview import BaseMap, rate_map
 from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Headline, Results
 from pipeline.publish.rows import rows_of
-from pipeline.publish.words import figure, interval, level, model_words, number
+from pipeline.publish.words import (
+    figure,
+    fixed,
+    interval,
+    level,
+    model_words,
+    number,
+    p_value,
+    whole,
+    words_of,
+)
 
 MOST_ROWS = 250
+TERM_WORDS = {"const": "constant", "alpha": "alpha (dispersion)"}
 ZONE_HEAD = (
     ("visits_per_1000", "Visits per 1,000"),
     ("visits", "Visits a year"),
@@ -221,12 +232,12 @@ def _fit_table(fit: pd.DataFrame) -> Html:
         (
             model_words(str(row.model)),
             "chosen" if row.chosen else "",
-            number(row.nobs, 9),
-            number(row.log_likelihood, 5),
-            number(row.aic, 5),
-            number(row.bic, 5),
+            whole(row.nobs),
+            fixed(row.log_likelihood),
+            fixed(row.aic),
+            fixed(row.bic),
             number(row.dispersion),
-            number(row.overdispersion_p, 2),
+            p_value(row.overdispersion_p),
             number(row.r_squared),
             "yes" if row.converged else "no",
             row.errors,
@@ -258,12 +269,12 @@ def _estimates(results: Results, fit: pd.DataFrame) -> Html:
     rows = [
         (
             model_words(model),
-            str(row.term).replace("_", " "),
+            TERM_WORDS.get(row.term, words_of(str(row.term))),
             number(row.estimate, 4),
             number(row.std_error),
             number(row.ci_low, 4),
             number(row.ci_high, 4),
-            number(row.p_value, 2),
+            p_value(row.p_value),
         )
         for model in order
         for row in rows_of(of_site[of_site["model"] == model])
@@ -282,14 +293,14 @@ def values_table(results: Results, headline: Headline) -> Html:
     ]
     body = [
         (
-            str(row.measure).replace("_", " "),
+            words_of(str(row.measure)),
             figure(row.value, row.ci_low, row.ci_high),
             interval(row.ci_low, row.ci_high, row.value),
             str(row.unit).replace("currency", results.currency),
             row.method,
             "" if pd.isna(row.note) else row.note,
         )
-        for row in rows_of(rows)
+        for row in rows_of(rows.sort_values(["measure", "method"], kind="stable"))
     ]
     sure = level(results.study.surplus.confidence)
     head = ("Measure", "Value", f"{sure} interval", "Unit", "Kind of interval", "To know")

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-LETTER = 0.56
+LETTER = 0.66
 """Mean width of a letter over its height, generous for the faces that readers have."""
 
 

@@ -8,7 +8,7 @@ from pipeline.publish.markup import Html, table, tag
 from pipeline.publish.privacy import REASON
 from pipeline.publish.results import Results
 from pipeline.publish.rows import rows_of
-from pipeline.publish.words import count, number, percent
+from pipeline.publish.words import count, number, percent, whole, words_of
 from pipeline.tables import PLACED_STATUSES, REACHED_STATUSES
 
 ORIGIN_WORDS = {
@@ -46,15 +46,15 @@ def _origins(results: Results) -> Html | None:
     share = (all_records - placed) / all_records if all_records else 0.0
     lead = tag(
         "p",
-        f"{count(all_records, 'visit record')} came in; {number(placed, 9)} have a zone of origin "
-        f"and {number(all_records - placed, 9)} ({percent(share)}) do not.",
+        f"{count(all_records, 'visit record')} came in; {whole(placed)} have a zone of origin "
+        f"and {whole(all_records - placed)} ({percent(share)}) do not.",
     )
     rows = [
         (
             ORIGIN_WORDS.get(str(row.Index), str(row.Index)),
             "kept" if row.Index in PLACED_STATUSES else "left out",
-            number(row.records, 9),
-            number(row.trips, 9),
+            whole(row.records),
+            whole(row.trips),
         )
         for row in rows_of(totals)
     ]
@@ -70,14 +70,14 @@ def _routes(results: Results) -> Html | None:
     counts = pd.crosstab(routes["site_id"], routes["route_status"])
     statuses = [status for status in ROUTE_WORDS if status in counts]
     rows = [
-        (results.site_name(str(site_id)), *(number(row[status], 9) for status in statuses))
+        (results.site_name(str(site_id)), *(whole(row[status]) for status in statuses))
         for site_id, row in counts.iterrows()
     ]
     failed = int((~routes["route_status"].isin(REACHED_STATUSES)).sum())
     lead = tag(
         "p",
-        f"Of {count(len(routes), 'pair')} of zone and site, {number(failed, 9)} have no route. "
-        "Such a zone has no travel cost to that site.",
+        f"No route was found for {whole(failed)} of {count(len(routes), 'pair')} of zone and site. "
+        "A zone without a route has no travel cost to that site.",
     )
     head = ("Site", *(ROUTE_WORDS[status] for status in statuses))
     numbers = range(1, len(head))
@@ -98,9 +98,9 @@ def _market(results: Results) -> Html | None:
         (
             results.site_name(str(site_id)),
             reason,
-            number(len(group), 9),
-            number(group["population"].sum(), 9),
-            number(round(group["visits"].sum()), 9),
+            whole(len(group)),
+            whole(group["population"].sum()),
+            whole(group["visits"].sum()),
             percent(_share(group, zones[zones["site_id"] == site_id])),
         )
         for (site_id, reason), group in groups
@@ -137,8 +137,8 @@ def road_table(results: Results) -> Html | None:
         return None
     rows = [
         (
-            str(row.measure).replace("_", " "),
-            "" if row.road_class == "all" else str(row.road_class).replace("_", " "),
+            words_of(str(row.measure)),
+            "" if row.road_class == "all" else words_of(str(row.road_class)),
             number(row.value),
             row.unit,
             "" if pd.isna(row.note) else row.note,

@@ -54,7 +54,7 @@ def base_map(results: Results) -> BaseMap | None:
     shapes, has_areas = _zone_shapes(zones, frame)
     roads, left_out = _road_shapes(results.road_lines, frame)
     names = zones["zone_name"].where(zones["zone_name"].notna(), zones["zone_id"])
-    defs = tag("defs", shapes, roads, _hatch("outside", "hatch"), _hatch("nothing", "void"))
+    defs = tag("defs", shapes, roads, _lines_across(), _dotted())
     return BaseMap(
         frame=frame,
         defs=tag("svg", defs, class_="store", width=0, height=0, aria_hidden="true"),
@@ -109,24 +109,24 @@ def _road_shapes(lines: gpd.GeoDataFrame | None, frame: MapFrame) -> tuple[Html,
         shapes = mapframe.simplified_lines(frame.project(of_rank.geometry), frame.metres_per_px)
         points += int(shapely.get_num_coordinates(shapes).sum())
         if points > MOST_ROAD_POINTS and parts:
-            return tag("g", *parts, id="roads"), "minor roads are not drawn"
+            return tag("g", *parts, id="road-lines"), "minor roads are not drawn"
         kind = "ferry" if rank == 0 else f"road rank{rank}"
         parts.append(tag("path", class_=kind, d=mapframe.line_path(shapes, frame)))
-    return tag("g", *parts, id="roads"), ""
+    return tag("g", *parts, id="road-lines"), ""
 
 
-def _hatch(name: str, class_: str) -> Html:
-    """Lines across an area, for what is no class of the measure."""
-    stroke = tag("line", x1=0, y1=0, x2=0, y2=70, class_=class_)
-    return tag(
-        "pattern",
-        stroke,
-        id=name,
-        width=70,
-        height=70,
-        patternUnits="userSpaceOnUse",
-        patternTransform="rotate(45)",
-    )
+def _lines_across() -> Html:
+    """Lines over a zone that is outside the market."""
+    stroke = tag("line", x1=0, y1=0, x2=0, y2=70, class_="hatch")
+    return tag("pattern", stroke, id="outside", patternTransform="rotate(45)", **_TILE)
+
+
+def _dotted() -> Html:
+    """Dots in a zone without a figure."""
+    return tag("pattern", tag("circle", cx=35, cy=35, r=9, class_="void"), id="nothing", **_TILE)
+
+
+_TILE: dict[str, object] = {"width": 70, "height": 70, "patternUnits": "userSpaceOnUse"}
 
 
 def rate_map(results: Results, base: BaseMap, site_id: str, figures: pd.DataFrame) -> Html:
@@ -146,8 +146,8 @@ def rate_map(results: Results, base: BaseMap, site_id: str, figures: pd.DataFram
         tag(
             "g",
             _zones(base, rates, classes, outside),
-            tag("use", href="#roads", class_="casing") if base.has_roads else None,
-            tag("use", href="#roads", class_="roads") if base.has_roads else None,
+            tag("use", href="#road-lines", class_="casing") if base.has_roads else None,
+            tag("use", href="#road-lines", class_="roads") if base.has_roads else None,
             _routes(results, base, site_id),
             transform="scale(.1)",
         ),

@@ -51,17 +51,22 @@ def table(
 ) -> Html:
     """A table with a caption, one header row and row headers in the first column.
 
+    A column that is empty in every row is left out.
+
     Parameters
     ----------
     numbers : positions of the columns that are set flush right.
     """
     right = frozenset(numbers)
+    names, cells = list(head), [list(row) for row in rows]
+    filled = {i for row in cells for i, cell in enumerate(row) if i == 0 or cell != ""}
+    kept = sorted(filled) if cells else list(range(len(names)))
 
     def side(position: int) -> str | None:
         return "n" if position in right else None
 
     header = tag(
-        "tr", *(tag("th", cell, scope="col", class_=side(i)) for i, cell in enumerate(head))
+        "tr", *(tag("th", cell, scope="col", class_=side(i)) for i, cell in _at(names, kept))
     )
     body = [
         tag(
@@ -70,11 +75,15 @@ def table(
                 tag("th", cell, scope="row", class_=side(i))
                 if i == 0
                 else tag("td", cell, class_=side(i))
-                for i, cell in enumerate(row)
+                for i, cell in _at(row, kept)
             ),
         )
-        for row in rows
+        for row in cells
     ]
-    inner = (tag("caption", caption), tag("thead", header), tag("tbody", *body))
+    inner = (tag("caption", tag("span", caption)), tag("thead", header), tag("tbody", *body))
     grid = tag("table", *inner, class_=class_)
     return tag("div", grid, class_="wide", tabindex="0", role="region", aria_label=caption)
+
+
+def _at(cells: list[object], places: list[int]) -> list[tuple[int, object]]:
+    return [(place, cells[place]) for place in places]

@@ -79,8 +79,8 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Ht
 
 
 _MAP = (
-    "Visits per 1,000 residents of each zone in a year, with the roads that bring them. A darker "
-    "zone sends more of its people; in dark mode, a lighter one."
+    "Visits per 1,000 residents of each zone in a year, with the roads that bring them and the "
+    "routes they take."
 )
 _DEMAND = (
     "People who live further away pay more to come, and come less often. The fall of the curve "

@@ -24,7 +24,8 @@ def roads_used(route_lines: gpd.GeoDataFrame, zone_table: pd.DataFrame | None) -
     Returns
     -------
     `site_id, zones, visits, geometry`: lines, cut wherever the traffic changes; `visits` is
-    missing without a zone table, and for substitutes.
+    missing without a zone table, and for substitutes. The piece from a zone's own place to the
+    next vertex of its road is a line of its own.
     """
     parts = [
         _of_site(site_id, route_lines[route_lines["site_id"] == site_id], zone_table)
@@ -41,12 +42,13 @@ def _of_site(
 ) -> gpd.GeoDataFrame:
     ends, owner = _stretches(lines.geometry.to_numpy())
     unique, place = np.unique(ends, axis=0, return_inverse=True)
-    zones = np.bincount(place, minlength=len(unique)).astype(np.float64)
+    zones = np.bincount(place, minlength=len(unique))
     visits = _visits(site_id, lines, zone_table)
-    carried = np.bincount(place, weights=np.nan_to_num(visits)[owner], minlength=len(unique))
+    carried = np.zeros(len(unique))
+    np.add.at(carried, place, np.nan_to_num(visits)[owner])
     if np.isnan(visits).all():
-        carried = np.full(len(unique), np.nan)
-    return _merged(site_id, unique, zones, carried)
+        carried[:] = np.nan
+    return _merged(site_id, unique, zones.astype(np.float64), carried)
 
 
 def _stretches(

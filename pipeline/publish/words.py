@@ -86,6 +86,23 @@ def number(value: object, digits: int = 3) -> str:
     return f"{amount:,.{decimals}f}".replace("-", "−")
 
 
+def fixed(value: float, decimals: int = 1) -> str:
+    """A number with a fixed number of decimals; missing is an en dash."""
+    return f"{value:,.{decimals}f}".replace("-", "−") if is_known(value) else "–"
+
+
+def p_value(value: float) -> str:
+    """A p-value; very small ones as a bound."""
+    if not is_known(value):
+        return "–"
+    return "< 0.0001" if value < 0.0001 else f"{value:.2g}"
+
+
+def whole(value: float) -> str:
+    """A whole number with thousands marked; missing is an en dash."""
+    return f"{value:,.0f}" if is_known(value) else "–"
+
+
 def count(value: float, word: str, plural: str = "") -> str:
     """'1 zone', '12 zones'."""
     return f"{value:,.0f} {word if value == 1 else plural or word + 's'}"

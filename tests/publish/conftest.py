@@ -69,7 +69,12 @@ def make_provenance(study: Study) -> Provenance:
     return Provenance(
         inputs=(InputFile("visits.csv", "visits.file", 1234, "ab" * 32),),
         settings=study.resolved(),
-        settings_set=("study.name", "study.title", "costs.vehicle_cost_per_km"),
+        settings_set=(
+            "study.name",
+            "study.title",
+            "costs.vehicle_cost_per_km",
+            "costs.wage_fraction",
+        ),
         versions={"roadworth": "0.1.0", "python": "3.11.0"},
         seed=1,
         code_sha256="cd" * 32,
@@ -121,7 +126,7 @@ def make_routes(zones: pd.DataFrame, sites: pd.DataFrame) -> pd.DataFrame:
     pairs = zones[["zone_id"]].merge(sites[["site_id", "access_id"]], how="cross")
     km = 4.0 * pairs["zone_id"].map(COST)
     lost = (pairs["zone_id"] == "009") & (pairs["site_id"] == MERE)
-    figures = {
+    figures: dict[str, Any] = {
         "distance_km": km,
         "drive_time_min": 1.2 * km,
         "shortest_distance_km": km,
@@ -140,7 +145,7 @@ def make_routes(zones: pd.DataFrame, sites: pd.DataFrame) -> pd.DataFrame:
 
 
 def make_route_lines(zones: pd.DataFrame, sites: pd.DataFrame) -> gpd.GeoDataFrame:
-    """Along the zone's own column to the main road, along that, then down to the site."""
+    """To the main road, along that, then down to the site; 002 has its own lane to the fen."""
     rows, lines = [], []
     for site in sites.to_dict("records"):
         for zone in zones.to_dict("records"):
@@ -150,6 +155,8 @@ def make_route_lines(zones: pd.DataFrame, sites: pd.DataFrame) -> gpd.GeoDataFra
             steps = np.arange(min(zone["lon"], site["lon"]), max(zone["lon"], site["lon"]), 0.05)
             along = sorted({*steps, zone["lon"], site["lon"]}, reverse=zone["lon"] > site["lon"])
             path = [(zone["lon"], zone["lat"]), *((x, main) for x in along)]
+            if (zone["zone_id"], site["site_id"]) == ("002", SITE):
+                path = path[:1]
             lines.append(shapely.LineString([*path, (site["lon"], site["lat"])]))
             rows.append({"zone_id": zone["zone_id"], "site_id": site["site_id"]})
     return gpd.GeoDataFrame(pd.DataFrame(rows), geometry=lines, crs="EPSG:4326")
