@@ -204,7 +204,7 @@ class _Mapped:
         asked_for = name in self.columns.model_fields_set
         if default is None or asked_for or self.table.has(column):
             meaning = type(self.columns).model_fields[name].description or name
-            self.table.need(column, meaning.split(";")[0].rstrip(".").lower())
+            self.table.need(column, f"{name}: {meaning.split(';')[0].rstrip('.').lower()}")
             return column
         return None
 

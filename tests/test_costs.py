@@ -177,7 +177,7 @@ AMOUNT = st.floats(0, 1e4, allow_nan=False)
 
 
 @given(AMOUNT, AMOUNT, AMOUNT, AMOUNT, st.floats(0, 2), st.floats(0.5, 60), st.floats(0, 30))
-@settings(derandomize=True, max_examples=100, deadline=None)
+@settings(derandomize=True, max_examples=40, deadline=None)
 def test_items_add_up_to_the_travel_cost(
     per_km: float,
     toll: float,

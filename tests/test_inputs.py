@@ -153,7 +153,7 @@ def test_blank_lines_are_no_records_but_count_as_rows(tmp_path: Path) -> None:
     [
         ("Nr,PLZ,Personen\n", "visits.csv: no visit record"),
         ("", "visits.csv: the file is empty"),
-        ("Nr,Plz,Personen\n1,2,3\n", "column 'PLZ' .postal code.* is missing.*nearest is 'Plz'"),
+        ("Nr,Plz,Personen\n1,2,3\n", "column 'PLZ' .postal_code: .* is missing.*nearest is 'Plz'"),
         ("PLZ,Personen\n01001,2\n", "column 'Nr' .* is missing"),
         (VISITS + "4,01001,0\n", r"1 value in column 'Personen' is not.*: 0.0 in row 4 \(line 5"),
         (VISITS + "4,01001,two\n", r"'Personen' is no number; first: 'two' in row 4 \(line 5"),

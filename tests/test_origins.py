@@ -195,7 +195,7 @@ CODES = st.one_of(
         max_size=30,
     )
 )
-@settings(derandomize=True, max_examples=100, deadline=None)
+@settings(derandomize=True, max_examples=25, deadline=None)
 def test_what_goes_in_comes_out(rows: list[tuple[str | None, str, int]]) -> None:
     codes, sites, trips = (list(column) for column in zip(*rows, strict=True))
     records = make_records(codes, site_id=sites, trips=trips)
