@@ -74,6 +74,7 @@ class Table(pa.DataFrameModel):
             A declared column is missing, or holds a wrong type, value or duplicate key.
         """
         where = source if isinstance(source, Source) else Source(source or cls.table_name())
+        _refuse_fractions(cls, frame, where)
         try:
             table = cls.validate(frame, lazy=True)
         except pa.errors.SchemaErrors as error:
@@ -115,6 +116,22 @@ class Table(pa.DataFrameModel):
 def _type_word(dtype: str) -> str:
     words = {"float64": "number", "int64": "integer", "bool": "boolean"}
     return words.get(dtype, "string")
+
+
+def _refuse_fractions(table: type[Table], frame: pd.DataFrame, where: Source) -> None:
+    """A count with a fraction is an error; coercion alone would cut the fraction off."""
+    for name, column in table.to_schema().columns.items():
+        if str(column.dtype) != "int64" or name not in frame:
+            continue
+        numbers = pd.to_numeric(frame[name], errors="coerce").to_numpy(dtype=float, na_value=0)
+        broken = numbers != np.floor(numbers)
+        if broken.any():
+            first = int(broken.argmax())
+            raise TableError(
+                f"{where.name}: {int(broken.sum())} value(s) in column {where.column(name)!r} are "
+                f"no whole numbers; first: {_plain(frame[name].iloc[first])}"
+                f"{where.row(frame.index[first])}. Correct the table."
+            )
 
 
 def _explain(
