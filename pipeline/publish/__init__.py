@@ -9,10 +9,10 @@ module         makes
 ``geofiles``   GeoPackage and GeoJSON files
 ``tabular``    CSV and Parquet files, data dictionary
 ``manifest``   run.json
-``report``     the HTML page, from ``answer``, ``evidence``, ``assumptions``, ``losses`` and
-               ``closing``; figures by ``mapview`` (``mapframe``, ``classes``, ``labels``)
-               and ``charts`` (``axes``, ``curve``); elements by ``markup``, wording by
-               ``words``, looks in ``report.css``
+``report``     the HTML page, from ``answer``, ``evidence``, ``findings``, ``assumptions``,
+               ``losses`` and ``closing``; figures by ``mapview`` (``mapframe``, ``classes``,
+               ``labels``, ``legend``) and ``charts`` (``axes``, ``curve``); elements by
+               ``markup``, wording by ``words``, looks in ``report.css``
 =============  =========================================================================
 """
 

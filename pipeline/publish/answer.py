@@ -5,7 +5,7 @@ from __future__ import annotations
 from pipeline.publish.charts import interval_bar
 from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Figure, Headline, Results
-from pipeline.publish.words import count, figure, interval, is_known, level, model_words, number
+from pipeline.publish.words import count, figure, interval, is_known, level, model_words
 
 
 def masthead(results: Results) -> Html:
@@ -77,7 +77,7 @@ def _facts(results: Results, headline: Headline) -> Html:
     if rows is not None:
         inside = int(rows["in_market"].sum()) if "in_market" in rows else len(rows)
         people = rows.loc[rows["in_market"].astype(bool)] if "in_market" in rows else rows
-        words = f"{count(inside, 'zone')} with {number(float(people['population'].sum()))} people"
+        words = f"{count(inside, 'zone')} with {figure(float(people['population'].sum()))} people"
         facts.append(("Market", words))
     chosen = results.fit[
         (results.fit["site_id"] == headline.site_id) & (results.fit["model"] == headline.model)

@@ -17,7 +17,7 @@ from pipeline.publish.axes import (
     titled,
 )
 from pipeline.publish.curve import Curve
-from pipeline.publish.markup import Html, join, tag
+from pipeline.publish.markup import Html, tag
 from pipeline.publish.rows import rows_of
 from pipeline.publish.words import figure, number
 
@@ -64,8 +64,9 @@ def demand_chart(
     ]
     return titled(
         grid(x, y),
-        _curve_parts(x, y, curve),
+        _curve_band(x, y, curve),
         tag("g", *circles),
+        _curve_line(x, y, curve),
         tag("text", rate_words, x=4, y=20, class_="head"),
         tag(
             "text",
@@ -95,15 +96,16 @@ def _headroom(top: float) -> float:
     return float(np.ceil(top / step - 1e-9) * step)
 
 
-def _curve_parts(x: Axis, y: Axis, curve: Curve | None) -> Html | None:
+def _curve_band(x: Axis, y: Axis, curve: Curve | None) -> Html | None:
+    if curve is None or np.isnan(curve.low).any():
+        return None
+    return tag("path", d=band(x.at(curve.cost), y.at(curve.low), y.at(curve.high)), class_="band")
+
+
+def _curve_line(x: Axis, y: Axis, curve: Curve | None) -> Html | None:
     if curve is None:
         return None
-    across = x.at(curve.cost)
-    fitted = tag("path", d=line(across, y.at(curve.rate)), class_="fitted")
-    if np.isnan(curve.low).any():
-        return fitted
-    area = tag("path", d=band(across, y.at(curve.low), y.at(curve.high)), class_="band")
-    return join([area, fitted])
+    return tag("path", d=line(x.at(curve.cost), y.at(curve.rate)), class_="fitted")
 
 
 def fee_charts(schedule: pd.DataFrame, *, currency: str) -> Html:

@@ -13,15 +13,17 @@ import shapely
 from pipeline.publish import mapframe
 from pipeline.publish.classes import Classes, quantile_classes
 from pipeline.publish.labels import place_labels
+from pipeline.publish.legend import class_name, legend, marker
 from pipeline.publish.mapframe import MapFrame
-from pipeline.publish.markup import Html, join, tag, text
+from pipeline.publish.markup import Html, join, tag
 from pipeline.publish.results import Results
 from pipeline.publish.rows import rows_of
 from pipeline.publish.words import number
 
 LABEL_SIZE = 25.0
 MOST_LABELS = 12
-MOST_ROAD_POINTS = 30_000
+MOST_ROAD_PX = 25_000.0
+MOST_NAMED_ZONES = 4_000
 ROAD_RANK = (
     ("ferry",),
     ("motorway", "motorway_link", "trunk", "trunk_link"),
@@ -97,18 +99,18 @@ def _dot(index: int, shape: shapely.Geometry, frame: MapFrame, total: int) -> Ht
 
 
 def _road_shapes(lines: gpd.GeoDataFrame | None, frame: MapFrame) -> tuple[Html, str]:
-    """Roads by rank, the great ones first, until the drawing would grow too heavy."""
+    """Roads by rank, the great ones first, until they would hide the zones."""
     if lines is None or not len(lines):
         return Html(""), ""
     parts: list[Html] = []
-    points = 0
+    drawn_px = 0.0
     for rank, kinds in enumerate(ROAD_RANK):
         of_rank = lines[lines["road_class"].isin(kinds)]
         if of_rank.empty:
             continue
         shapes = mapframe.simplified_lines(frame.project(of_rank.geometry), frame.metres_per_px)
-        points += int(shapely.get_num_coordinates(shapes).sum())
-        if points > MOST_ROAD_POINTS and parts:
+        drawn_px += float(shapely.length(shapes).sum()) / frame.metres_per_px
+        if drawn_px > MOST_ROAD_PX and parts:
             return tag("g", *parts, id="road-lines"), "minor roads are not drawn"
         kind = "ferry" if rank == 0 else f"road rank{rank}"
         parts.append(tag("path", class_=kind, d=mapframe.line_path(shapes, frame)))
@@ -157,7 +159,7 @@ def rate_map(results: Results, base: BaseMap, site_id: str, figures: pd.DataFram
         role="img",
         class_="map",
     )
-    return join([picture, _legend(classes, rates, outside, results)])
+    return join([picture, legend(classes, rates, outside, results)])
 
 
 def _outside(rows: pd.DataFrame) -> npt.NDArray[np.bool_]:
@@ -177,18 +179,12 @@ def _zones(
     used = []
     for i, (name, rate, place) in enumerate(zip(base.zone_names, rates, places, strict=True)):
         words = "no figure" if place == -2 else f"{number(rate)} visits per 1,000"
-        class_ = _class_name(int(place), len(classes))
-        used.append(tag("use", tag("title", f"{name}: {words}"), href=f"#z{i}", class_=class_))
+        class_ = class_name(int(place), len(classes))
+        title = tag("title", f"{name}: {words}") if len(rates) <= MOST_NAMED_ZONES else None
+        used.append(tag("use", title, href=f"#z{i}", class_=class_))
         if outside[i]:
             used.append(tag("use", href=f"#z{i}", class_="over"))
     return tag("g", *used, class_="zones" if base.has_areas else "zones dots")
-
-
-def _class_name(place: int, total: int) -> str:
-    """Style of a class: its colour out of five, spread when there are fewer classes."""
-    if place < 0:
-        return "zero" if place == -1 else "none"
-    return f"c{round(place * 4 / max(1, total - 1)) if total > 1 else 3}"
 
 
 def _routes(results: Results, base: BaseMap, site_id: str) -> Html | None:
@@ -239,77 +235,9 @@ def _sites(results: Results, base: BaseMap, site_id: str) -> Html | None:
     return tag("g", *marks, tag("g", *names, class_="names"))
 
 
-def marker(x: float, y: float, kind: str) -> Html:
-    """A ring with a dot for the site of the map, a ring for another, a square for a substitute."""
-    if kind == "substitute":
-        return tag("rect", x=f"{x - 5:.1f}", y=f"{y - 5:.1f}", width=10, height=10, class_="mark")
-    ring = tag("circle", cx=f"{x:.1f}", cy=f"{y:.1f}", r=7, class_="mark")
-    dot = tag("circle", cx=f"{x:.1f}", cy=f"{y:.1f}", r=3, class_="dot") if kind == "here" else None
-    return join([ring, dot])
-
-
 def _scale(frame: MapFrame) -> Html:
     length_km, length_px = mapframe.scale_bar(frame)
     y = frame.height - 14
     bar = tag("path", d=f"M16 {y - 6:g}v6h{length_px:.1f}v-6", class_="bar")
     words = tag("text", f"{length_km:g} km", x=f"{22 + length_px:.1f}", y=f"{y:g}")
     return tag("g", bar, words, class_="scale")
-
-
-def _legend(
-    classes: Classes,
-    rates: npt.NDArray[np.float64],
-    outside: npt.NDArray[np.bool_],
-    results: Results,
-) -> Html:
-    """Colours with their bounds and number of zones, then the marks."""
-    places = classes.of(rates)
-    entries = [
-        (_class_name(k, len(classes)), label, int((places == k).sum()))
-        for k, label in enumerate(classes.labels())
-    ]
-    if (places == -1).any():
-        entries.insert(0, ("zero", "no visit recorded", int((places == -1).sum())))
-    if (places == -2).any():
-        entries.append(("none", "no figure", int((places == -2).sum())))
-    if outside.any():
-        entries.append(("over", "outside the market", int(outside.sum())))
-    items = [
-        tag("li", _swatch(class_), label, tag("small", f" {total:,}"))
-        for class_, label, total in entries
-    ]
-    items += [tag("li", _swatch_mark(kind), words) for kind, words in _marks(results)]
-    title = tag("p", tag("b", "Visits per 1,000 people and year"), tag("small", " (zones)"))
-    return tag("div", title, tag("ul", *items), class_="legend")
-
-
-def _swatch(class_: str) -> Html:
-    square = tag("rect", width=180, height=120, class_=class_)
-    scaled = tag("g", square, transform="scale(.1)", class_="zones")
-    return tag("svg", scaled, viewBox="0 0 18 12", class_="swatch", aria_hidden="true")
-
-
-def _marks(results: Results) -> list[tuple[str, str]]:
-    marks = []
-    if results.sites is not None:
-        marks.append(("here", "the site"))
-        if len(results.headlines) > 1:
-            marks.append(("site", "another valued site"))
-        if results.sites["role"].eq("substitute").any():
-            marks.append(("substitute", "substitute"))
-    if results.road_lines is not None and len(results.road_lines):
-        marks.append(("roads", "road"))
-        if results.road_lines["road_class"].eq("ferry").any():
-            marks.append(("ferry", "ferry"))
-    if results.route_lines is not None and len(results.route_lines):
-        marks.append(("routes", "route to the site"))
-    return marks
-
-
-def _swatch_mark(kind: str) -> Html:
-    shape = (
-        marker(9, 8, kind)
-        if kind in ("here", "site", "substitute")
-        else tag("path", d="M0 8h18", class_=text(f"key {kind}"))
-    )
-    return tag("svg", shape, viewBox="0 0 18 16", class_="swatch tall", aria_hidden="true")

@@ -10,14 +10,8 @@ from pathlib import Path
 from pipeline.publish.answer import masthead
 from pipeline.publish.assumptions import assumptions_table
 from pipeline.publish.closing import attribution, cautions, inputs_table, made_with
-from pipeline.publish.evidence import (
-    demand_figure,
-    fee_figure,
-    map_figure,
-    models_tried,
-    site_heading,
-    values_table,
-)
+from pipeline.publish.evidence import demand_figure, map_figure, site_heading
+from pipeline.publish.findings import fee_figure, models_tried, values_table
 from pipeline.publish.losses import losses, road_table
 from pipeline.publish.mapview import base_map
 from pipeline.publish.markup import Html, join, tag
