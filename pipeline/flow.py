@@ -36,6 +36,7 @@ from pipeline.settings import (
     MarketSettings,
     RoadsSettings,
     RoutesSettings,
+    ScenarioSettings,
     Section,
     SitesSettings,
     SurplusSettings,
@@ -233,7 +234,7 @@ FLOW: tuple[Stage, ...] = (
             ZoneSurplus,
         ),
         writes=(Publication,),
-        sections=SECTIONS[1:],
+        sections=(*SECTIONS[1:], ScenarioSettings),
         summarise=summarise_publish,
     ),
 )
