@@ -352,7 +352,10 @@ class Estimates(Table):
 
     model: Series[str] = column("model's name")
     site_id: Series[str] = column("site that is valued")
-    term: Series[str] = column("'const', 'travel_cost', a covariate, or 'alpha' (dispersion)")
+    term: Series[str] = column(
+        "'const', 'travel_cost', a covariate, 'alpha' (dispersion), or 'smearing' (log_linear: "
+        "factor from the median to the mean)"
+    )
     estimate: Series[float] = column(
         "coefficient in the units of the finished table", nullable=True
     )

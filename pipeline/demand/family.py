@@ -16,6 +16,7 @@ from scipy import special
 from pipeline.demand.sample import PRICE, FloatArray, Sample
 
 ALPHA = "alpha"
+SMEARING = "smearing"
 
 
 @dataclass(frozen=True)
@@ -24,7 +25,7 @@ class FittedModel:
 
     Attributes
     ----------
-    terms : names of the parameters; the dispersion stands last where there is one.
+    terms : names of the parameters; a dispersion or a smearing factor stands last.
     estimate, covariance : (p,) and (p, p); NaN where a parameter has no maximum of its own.
     degrees : residual degrees of freedom of Student's t; infinite for the normal.
     parameters : how many were estimated, for AIC and BIC.

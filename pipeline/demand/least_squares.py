@@ -11,7 +11,7 @@ import numpy as np
 
 from pipeline.demand.curves import LinearCurve, SemiLogCurve, index
 from pipeline.demand.design import caution_notes, require_fittable, standardise
-from pipeline.demand.family import FittedModel, squared_correlation
+from pipeline.demand.family import SMEARING, FittedModel, squared_correlation
 from pipeline.demand.sample import FloatArray, Sample
 
 
@@ -42,7 +42,8 @@ class LogLinear(SemiLogCurve):
         visited = with_visits(sample)
         require_fittable(sample, rows=visited.nobs)
         require_fittable(visited)
-        model = least_squares(self.name, visited, np.log(visited.rate), errors)
+        response = np.log(visited.rate)
+        model = _with_smearing(least_squares(self.name, visited, response, errors), visited)
         predicted = self.predict(model.estimate, sample)[0] / sample.people
         empty = sample.nobs - visited.nobs
         note = (
@@ -56,15 +57,28 @@ class LogLinear(SemiLogCurve):
         )
 
     def level(self, theta: FloatArray, sample: Sample) -> FloatArray:
-        """Mean of exp(residual) over the rows with visits.
+        """The smearing factor."""
+        del sample
+        return theta[:, -1]
 
-        Without it exp(x'β) is the median, not the mean (Duan, Journal of the American
-        Statistical Association 78, 1983). It cancels out of the surplus per trip.
-        """
-        visited = with_visits(sample)
-        residual = np.log(visited.rate) - index(theta, visited)
-        weighted = np.exp(residual) @ visited.weight / visited.weight.sum()
-        return np.asarray(weighted, dtype=float)
+
+def _with_smearing(model: FittedModel, visited: Sample) -> FittedModel:
+    """Add the factor that turns exp(x'β), the median, into the mean: the mean of exp(residual).
+
+    Duan, Journal of the American Statistical Association 78, 1983. It is taken as known (no
+    covariance), and cancels out of the surplus per trip and of the fee schedule.
+    """
+    residual = np.log(visited.rate) - index(model.estimate[None, :], visited)[0]
+    factor = float(visited.weight @ np.exp(residual) / visited.weight.sum())
+    size = len(model.terms)
+    spread = np.full((size + 1, size + 1), np.nan)
+    spread[:size, :size] = model.covariance
+    return replace(
+        model,
+        terms=(*model.terms, SMEARING),
+        estimate=np.append(model.estimate, factor),
+        covariance=spread,
+    )
 
 
 def with_visits(sample: Sample) -> Sample:

@@ -88,6 +88,7 @@ def fitted_models(estimates: pd.DataFrame, fit: pd.DataFrame) -> dict[tuple[str,
 def _model(rows: pd.DataFrame, one: dict[Hashable, Any]) -> FittedModel:
     covariance = np.array([_from_json(row) for row in rows["covariance"]])
     note = one["note"] if isinstance(one["note"], str) else ""
+    own = int(np.isfinite(np.diag(covariance)).sum())
     student = FAMILIES[one["model"]].student
     return FittedModel(
         model=one["model"],
@@ -96,7 +97,7 @@ def _model(rows: pd.DataFrame, one: dict[Hashable, Any]) -> FittedModel:
         estimate=rows["estimate"].to_numpy(dtype=float),
         covariance=covariance,
         nobs=int(one["nobs"]),
-        degrees=float(one["nobs"] - len(rows)) if student else np.inf,
+        degrees=float(one["nobs"] - own) if student else np.inf,
         parameters=len(rows),
         log_likelihood=float(one["log_likelihood"]),
         dispersion=float(one["dispersion"]),

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import pandas as pd
 
 from pipeline.demand.choice import Choice, choose, p_words
@@ -57,9 +59,10 @@ def demand(
 
 def _fit(name: str, sample: Sample, settings: DemandSettings) -> FittedModel:
     try:
-        return FAMILIES[name].fit(sample, errors=settings.errors)
+        model = FAMILIES[name].fit(sample, errors=settings.errors)
     except DemandError as error:
-        return FittedModel.failed(name, sample, str(error))
+        model = FittedModel.failed(name, sample, str(error))
+    return replace(model, errors=settings.errors)
 
 
 def _require_choice(choices: list[Choice]) -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+import pandas as pd
 import pytest
 import statsmodels.api as sm
 
@@ -87,9 +88,10 @@ def test_nb2_and_its_covariance_with_alpha_agree_with_statsmodels() -> None:
 
 def test_hc1_is_hc0_with_the_small_sample_factor() -> None:
     sample = a_sample(zones(count=50))
-    ratio = Poisson().fit(sample, errors="HC1").covariance / Poisson().fit(
-        sample, errors="HC0"
-    ).covariance
+    ratio = (
+        Poisson().fit(sample, errors="HC1").covariance
+        / Poisson().fit(sample, errors="HC0").covariance
+    )
     np.testing.assert_allclose(ratio, 50 / 48)
 
 
@@ -142,8 +144,6 @@ def test_counts_without_overdispersion_give_a_poisson_with_alpha_zero() -> None:
 
 
 def test_a_record_of_weight_two_is_two_records() -> None:
-    import pandas as pd
-
     table = pd.DataFrame(
         {
             "record_id": [str(i) for i in range(8)],

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Hashable
 from pathlib import Path
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 import pandas as pd
 
 from pipeline.demand.sample import FloatArray, Sample, build_samples
@@ -71,10 +73,11 @@ def a_sample(table: pd.DataFrame, *covariates: str) -> Sample:
 
 
 def bare_sample(
-    counts: list[float], cost: list[float], people: list[float], **covariates: list[float]
+    counts: npt.ArrayLike, cost: npt.ArrayLike, people: npt.ArrayLike, **covariates: npt.ArrayLike
 ) -> Sample:
     """A sample straight from numbers, without expansion."""
-    n = len(counts)
+    counted, inhabitants = (np.array(values, dtype=float) for values in (counts, people))
+    n = len(counted)
     columns: list[FloatArray] = [np.ones(n), np.array(cost, dtype=float)]
     columns += [np.array(values, dtype=float) for values in covariates.values()]
     return Sample(
@@ -82,11 +85,16 @@ def bare_sample(
         zone_ids=tuple(f"{i:04d}" for i in range(n)),
         terms=("const", "travel_cost", *covariates),
         design=np.column_stack(columns),
-        counts=np.array(counts, dtype=float),
-        exposure=np.array(people, dtype=float),
+        counts=counted,
+        exposure=inhabitants,
         weight=np.ones(n),
-        people=np.array(people, dtype=float),
-        visits=np.array(counts, dtype=float),
+        people=inhabitants,
+        visits=counted,
         per=1000.0,
         notes=(),
     )
+
+
+def number(frame: pd.DataFrame, row: Hashable, column: str) -> float:
+    """One figure of a table, by the label of its row."""
+    return float(frame[column].astype(float).to_dict()[row])
