@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import pandas as pd
 
@@ -15,8 +16,7 @@ from pipeline.origins.codes import READINGS, ValidCodes, form, normalise
 NO_CODE = ("", "NA", "NAN", "NONE", "NULL")
 
 
-@dataclass(frozen=True)
-class Placement:
+class Placement(NamedTuple):
     """What one written code stands for: a row of `origins`, less the record."""
 
     postal_code: str | None

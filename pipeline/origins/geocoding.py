@@ -60,8 +60,7 @@ def geocode(
     )
     # Millions of records share some thousand codes, so each written code is placed once.
     positions, written = pd.factorize(records["postal_code_raw"])
-    placements = [*map(book.place, written), MISSING]
-    placed = pd.DataFrame(placements).astype("str").where(pd.DataFrame(placements).notna())
+    placed = pd.DataFrame([*map(book.place, written), MISSING]).astype("str")
     # pd.factorize gives -1 to a missing code, which is the last placement.
     columns = placed.iloc[positions].set_axis(records.index)
     origins = records.assign(**{str(name): columns[name] for name in columns})
