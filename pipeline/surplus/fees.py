@@ -20,6 +20,7 @@ import pandas as pd
 from pipeline.demand.family import FittedModel
 from pipeline.demand.registry import FAMILIES
 from pipeline.demand.sample import FloatArray, Sample
+from pipeline.settings import SurplusSettings
 from pipeline.surplus.intervals import no_area_words
 
 STEPS = 10
@@ -108,14 +109,10 @@ def nice_step(least: float) -> float:
 
 
 def fee_rows(
-    model: FittedModel,
-    sample: Sample,
-    draws: FloatArray,
-    *,
-    fees: tuple[float, ...],
-    confidence: float,
+    model: FittedModel, sample: Sample, draws: FloatArray, *, settings: SurplusSettings
 ) -> pd.DataFrame:
     """Rows of `fee_schedule` for one site; only the one without a fee where demand rises."""
+    fees = settings.fees
     steps = np.array(sorted({0.0, *fees})) if fees else default_fees(model, sample)
     falls = model.price_coefficient < 0
     if not falls:
@@ -125,7 +122,7 @@ def fee_rows(
     columns: dict[str, object] = {"site_id": sample.site_id, "fee": steps}
     for name in ("visits", "revenue", "consumer_surplus", "surplus_lost"):
         values = getattr(point, name)[0]
-        low, high = _ends(getattr(drawn, name), confidence)
+        low, high = _ends(getattr(drawn, name), settings.confidence)
         finite = falls or name != "consumer_surplus"
         columns[name] = values if finite else np.nan
         columns[f"{name}_ci_low"] = low if finite else np.nan

@@ -41,30 +41,24 @@ def surplus(
     Raises
     ------
     SurplusError
-        The estimates belong to another finished table.
+        The estimates belong to another finished table, or none of them was chosen.
     """
+    table = trip_table if trip_table is not None else zone_table
     samples = {s.site_id: s for s in build_samples(zone_table, trip_table, study.demand.covariates)}
-    models = fitted_models(estimates, fit)
     picked = {(str(s), str(m)) for s, m in fit.loc[fit["chosen"], ["site_id", "model"]].to_numpy()}
     values, fees, zones = [], [], []
-    for key, model in models.items():
+    for key, model in fitted_models(estimates, fit).items():
         sample = _sample_of(model, samples)
         draws = _draws(model, study)
         values.append(_value_rows(model, sample, draws, study).assign(chosen=key in picked))
         if key in picked and draws is not None:
-            settings = study.surplus
-            confidence = settings.confidence
-            fees.append(fee_rows(model, sample, draws, fees=settings.fees, confidence=confidence))
+            fees.append(fee_rows(model, sample, draws, settings=study.surplus))
             zones.append(zone_rows(model, sample))
-    table = trip_table if trip_table is not None else zone_table
-    if table is None or not values:
-        raise SurplusError("the demand stage wrote no model; run it on a finished table first.")
+    if table is None or not fees:
+        raise SurplusError("no model was chosen at any site; run the demand stage first.")
     return (
         Surplus.checked(pd.concat(values, ignore_index=True), source="surplus: surplus"),
-        FeeSchedule.checked(
-            pd.concat(fees, ignore_index=True) if fees else FeeSchedule.empty(),
-            source="surplus: fee_schedule",
-        ),
+        FeeSchedule.checked(pd.concat(fees, ignore_index=True), source="surplus: fee_schedule"),
         ZoneSurplus.checked(every_zone(zones, table), source="surplus: zone_surplus"),
     )
 

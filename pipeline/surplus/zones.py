@@ -40,9 +40,7 @@ def every_zone(rows: list[pd.DataFrame], table: pd.DataFrame) -> pd.DataFrame:
         table = table.assign(zone_id=None)
     pairs = table[["zone_id", "site_id"]].dropna().drop_duplicates()
     figures = ["predicted_visits", "annual_surplus", "surplus_per_person"]
-    empty = pd.DataFrame({"zone_id": [], "site_id": [], **{name: [] for name in figures}})
-    found = pd.concat(rows, ignore_index=True) if rows else empty.astype({"zone_id": str})
-    found = found.astype({"zone_id": str, "site_id": str})
+    found = pd.concat(rows, ignore_index=True).astype({"zone_id": str, "site_id": str})
     pairs = pairs.astype({"zone_id": str, "site_id": str})
     merged = pairs.merge(found, on=["zone_id", "site_id"], how="left", validate="one_to_one")
     return merged[["zone_id", "site_id", *figures]].reset_index(drop=True)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from pathlib import Path
 from typing import get_args
 
 import numpy as np
@@ -10,11 +11,13 @@ import pandas as pd
 import pytest
 
 from pipeline.demand import demand, fitted_models, summarise_demand
-from pipeline.demand.choice import overdispersion_test
+from pipeline.demand.choice import choose, overdispersion_test
 from pipeline.demand.counts import Poisson
+from pipeline.demand.family import FittedModel
 from pipeline.demand.registry import FAMILIES
 from pipeline.errors import DemandError, StudyError
 from pipeline.settings import ModelName
+from pipeline.tables import Estimates, Fit
 from tests.demand.worlds import a_sample, a_study, number, zones
 
 ALL = tuple(FAMILIES)
@@ -141,3 +144,23 @@ def test_trip_records_are_fitted_one_by_one() -> None:
     price = estimates[estimates["term"] == "travel_cost"].set_index("model")
     assert number(price, "poisson", "ci_low") < -0.08 < number(price, "poisson", "ci_high")
     assert fit["nobs"].iloc[0] == 600
+
+
+def test_an_unusable_negative_binomial_leaves_the_poisson_and_says_why() -> None:
+    sample = a_sample(zones())
+    poisson = Poisson().fit(sample, errors="HC3")
+    failed = FittedModel.failed("negative_binomial", sample, "the Hessian is not definite")
+    models = {"poisson": poisson, "negative_binomial": failed}
+    choice = choose(models, sample, how="test", level=0.05)
+    assert choice.model == "poisson"
+    assert "no usable fit (the Hessian is not definite)" in choice.reason
+    assert choose(models, sample, how="negative_binomial", level=0.05).model is None
+
+
+def test_tables_survive_a_csv_file(tmp_path: Path) -> None:
+    table = pd.concat([zones(), zones(count=3, site_id="weir")], ignore_index=True)
+    written = demand(table, None, study=a_study(demand={"covariates": ("household_income",)}))
+    for frame, kind in zip(written, (Estimates, Fit), strict=True):
+        file = tmp_path / "table.csv"
+        frame.to_csv(file, index=False)
+        pd.testing.assert_frame_equal(kind.checked(pd.read_csv(file)), frame)
