@@ -130,7 +130,7 @@ def _site_routes(
     columns: dict[str, npt.NDArray[np.generic] | str] = {
         "zone_id": zones["zone_id"].to_numpy(),
         "site_id": sites["site_id"].iloc[rows[0]],
-        "access_id": np.where(reached, sites["access_id"].to_numpy(dtype=object)[door], None),
+        "access_id": pd.Series(sites["access_id"].to_numpy()[door]).where(reached).to_numpy(),
         "distance_km": _where(reached, unpack_distance_km(there + gaps)),
         "drive_time_min": _where(reached, unpack_time_min(there + gaps)),
         "shortest_distance_km": _where(reached, shortest / 1e6),
@@ -240,9 +240,7 @@ def _lines(
 # --- what cannot be --------------------------------------------------------------------------
 
 
-def _refuse_sites_off_the_roads(
-    sites: pd.DataFrame, doors: Tied, settings: RoutesSettings
-) -> None:
+def _refuse_sites_off_the_roads(sites: pd.DataFrame, doors: Tied, settings: RoutesSettings) -> None:
     """Every site needs an access point near a road (be it an island's)."""
     far = pd.Series(doors.status == TOO_FAR).groupby(sites["site_id"].to_numpy()).all()
     lost = [site_id for site_id in pd.unique(sites["site_id"]) if far[site_id]]

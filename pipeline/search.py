@@ -19,6 +19,7 @@ UNREACHED = np.int64(2**62)
 BITS = DISTANCE_BITS
 MASK = DISTANCE_MASK
 MOST_BUCKETS = 1 << 16
+OUT = -2  # mark of a node that waits in no bucket
 
 
 @dataclass(frozen=True)
@@ -60,7 +61,8 @@ def search(
     by_time : least time, then least distance; else least distance alone.
     """
     width = _bucket_bits(cost, by_time=by_time)
-    return Tree(*_search(first, node, cost, seed_node, seed_cost, by_time, width))
+    mask = -1 if by_time else MASK
+    return Tree(*_search(first, node, cost, seed_node, seed_cost, mask, width))
 
 
 def _bucket_bits(cost: Int64, *, by_time: bool) -> int:
@@ -79,95 +81,92 @@ def _search(
     cost: Int64,
     seed_node: Int32,
     seed_cost: Int64,
-    by_time: bool,  # noqa: FBT001 (compiled code takes positions)
+    mask: int,
     width: int,
 ) -> tuple[Int64, Int32, Int32]:
-    mask = -1 if by_time else MASK
+    """Empty the buckets from the lowest; a node that gets cheaper moves to a lower bucket."""
     nodes = len(first) - 1
     label = np.full(nodes, UNREACHED)
     parent = np.full(nodes, -1, dtype=np.int32)
     via = np.full(nodes, -1, dtype=np.int32)
-    pending = np.zeros(nodes, dtype=np.bool_)
+    buckets, width = _buckets(cost, seed_cost, mask, width)
+    head = np.full(buckets, -1, dtype=np.int32)
+    after = np.full(nodes, -1, dtype=np.int32)
+    before = np.full(nodes, OUT, dtype=np.int32)
+    last = buckets - 1
+    waiting = 0
+    current = UNREACHED
+    for seed in range(len(seed_node)):
+        start, value = seed_node[seed], seed_cost[seed] & mask
+        if seed_cost[seed] >= 0 and value < label[start]:
+            old = (label[start] >> width) & last
+            if before[start] == OUT:
+                waiting += 1
+            else:
+                _take_out(start, old, head, after, before)
+            label[start], via[start] = value, -2 - seed
+            _put_in(start, (value >> width) & last, head, after, before)
+            current = min(current, value >> width)
+    while waiting > 0:
+        here = head[current & last]
+        if here < 0:
+            current += 1
+            continue
+        _take_out(here, current & last, head, after, before)
+        waiting -= 1
+        for arc in range(first[here], first[here + 1]):
+            there, value = node[arc], label[here] + (cost[arc] & mask)
+            if value >= label[there]:
+                continue
+            bucket, old = (value >> width) & last, (label[there] >> width) & last
+            label[there], parent[there], via[there] = value, here, arc
+            if before[there] == OUT:
+                waiting += 1
+            elif bucket == old:
+                continue
+            else:
+                _take_out(there, old, head, after, before)
+            _put_in(there, bucket, head, after, before)
+    return label, parent, via
 
-    largest, lowest = np.int64(0), UNREACHED
+
+@compiled
+def _buckets(cost: Int64, seed_cost: Int64, mask: int, width: int) -> tuple[int, int]:
+    """How many buckets the longest arc can reach over (a power of two), and their width."""
+    largest = np.int64(0)
     for arc in range(len(cost)):
         largest = max(largest, cost[arc] & mask)
-    for seed in range(len(seed_node)):
+    for seed in range(len(seed_cost)):
         if seed_cost[seed] >= 0:
             largest = max(largest, seed_cost[seed] & mask)
-            lowest = min(lowest, seed_cost[seed] & mask)
     while (largest >> width) + 2 > MOST_BUCKETS:
         width += 1
     buckets = 1
     while buckets < (largest >> width) + 2:
         buckets *= 2
-    head = np.full(buckets, -1, dtype=np.int32)
-    # A pool of list items; an item that was taken out is used again.
-    item_node = np.empty(1024, dtype=np.int32)
-    item_next = np.empty(1024, dtype=np.int32)
-    free, used, waiting = -1, 0, 0
+    return buckets, width
 
-    for seed in range(len(seed_node)):
-        start = seed_node[seed]
-        value = seed_cost[seed] & mask
-        if seed_cost[seed] < 0 or value >= label[start]:
-            continue
-        label[start] = value
-        via[start] = -2 - seed
-        pending[start] = True
-        bucket = (value >> width) & (buckets - 1)
-        item_node[used] = start
-        item_next[used] = head[bucket]
-        head[bucket] = used
-        used += 1
-        waiting += 1
 
-    current = lowest >> width
-    while waiting > 0:
-        bucket = current & (buckets - 1)
-        while head[bucket] >= 0:
-            item = head[bucket]
-            here = item_node[item]
-            head[bucket] = item_next[item]
-            item_next[item] = free
-            free = item
-            waiting -= 1
-            if not pending[here]:
-                continue  # reached more cheaply since, and settled
-            pending[here] = False
-            base = label[here]
-            for arc in range(first[here], first[here + 1]):
-                there = node[arc]
-                value = base + (cost[arc] & mask)
-                old = label[there]
-                if value >= old:
-                    continue
-                label[there] = value
-                parent[there] = here
-                via[there] = arc
-                goal = value >> width
-                if pending[there] and (old >> width) == goal:
-                    continue
-                pending[there] = True
-                if free >= 0:
-                    item = free
-                    free = item_next[item]
-                else:
-                    if used == len(item_node):
-                        grown = np.empty(2 * used, dtype=np.int32)
-                        grown[:used] = item_node
-                        item_node = grown
-                        grown = np.empty(2 * used, dtype=np.int32)
-                        grown[:used] = item_next
-                        item_next = grown
-                    item = used
-                    used += 1
-                item_node[item] = there
-                item_next[item] = head[goal & (buckets - 1)]
-                head[goal & (buckets - 1)] = item
-                waiting += 1
-        current += 1
-    return label, parent, via
+@compiled
+def _put_in(node: int, bucket: np.int64, head: Int32, after: Int32, before: Int32) -> None:
+    """Make a node the first of a bucket's list."""
+    top = head[bucket]
+    if top >= 0:
+        before[top] = node
+    after[node], before[node], head[bucket] = top, -1, node
+
+
+@compiled
+def _take_out(node: int, bucket: np.int64, head: Int32, after: Int32, before: Int32) -> None:
+    """Take a node out of a bucket's list."""
+    up, down = before[node], after[node]
+    if up >= 0:
+        after[up] = down
+    else:
+        head[bucket] = down
+    if down >= 0:
+        before[down] = up
+    before[node] = OUT
 
 
 def sums_along(

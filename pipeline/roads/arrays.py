@@ -23,9 +23,9 @@ F = TypeVar("F", bound=Callable[..., object])
 def compiled(function: F) -> F:
     """Compile with numba; without its disk cache where no cache folder can be written."""
     try:
-        return cast(F, numba.njit(cache=True, nogil=True)(function))
+        return cast("F", numba.njit(cache=True, nogil=True)(function))
     except RuntimeError:
-        return cast(F, numba.njit(nogil=True)(function))
+        return cast("F", numba.njit(nogil=True)(function))
 
 
 def ranges(starts: Int64, counts: Int64) -> Int64:
@@ -33,7 +33,7 @@ def ranges(starts: Int64, counts: Int64) -> Int64:
     ends = np.cumsum(counts)
     total = int(ends[-1]) if len(ends) else 0
     shift = np.repeat(starts - (ends - counts), counts)
-    return (np.arange(total, dtype=np.int64) + shift).astype(np.int64)
+    return np.asarray(np.arange(total, dtype=np.int64) + shift, dtype=np.int64)
 
 
 def offsets(counts: Int64) -> Int64:

@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import geopandas as gpd
 import numpy as np
+import numpy.typing as npt
 import pandas as pd
 
 from pipeline.errors import RoadsError
@@ -116,8 +119,14 @@ def _graph(
         edge_unpaved_m=_flagged_m(traits.is_unpaved & ~traits.is_ferry, segments, chains),
         edge_detached_km=island_km,
         **_geometry(extract, traits, segments, chains),
-        **dict(zip(("arc_first", "arc_node", "arc_cost", "arc_edge"), arcs, strict=True)),
-        **dict(zip(("in_first", "in_node", "in_cost", "in_edge"), arcs_in, strict=True)),
+        arc_first=arcs[0],
+        arc_node=arcs[1],
+        arc_cost=arcs[2],
+        arc_edge=arcs[3],
+        in_first=arcs_in[0],
+        in_node=arcs_in[1],
+        in_cost=arcs_in[2],
+        in_edge=arcs_in[3],
     )
     return graph, islands
 
@@ -161,7 +170,7 @@ def _flagged_m(flag: Bool, segments: Segments, chains: Chains) -> Float32:
 
 def _geometry(
     extract: RoadExtract, traits: WayTraits, segments: Segments, chains: Chains
-) -> dict[str, np.ndarray[tuple[int, ...], np.dtype[np.generic]]]:
+) -> dict[str, npt.NDArray[Any]]:
     """Vertices of the edges, with what holds on the stretch from each to the next."""
     edges = len(chains.start)
     edge_first = chains.first + np.arange(edges + 1)
@@ -173,10 +182,10 @@ def _geometry(
     vertex[stretch] = tail
     vertex[edge_first[1:] - 1] = chains.end
 
-    def on_stretches(values: np.ndarray[tuple[int, ...], np.dtype[np.generic]]) -> Float32:
+    def on_stretches(values: npt.NDArray[Any]) -> npt.NDArray[Any]:
         result = np.zeros(len(vertex), dtype=values.dtype)
         result[stretch] = values
-        return result  # type: ignore[return-value]
+        return result
 
     way = segments.way[chains.segment]
     kmh = _directed(*_speeds(segments), chains)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+import numpy as np
 import pandas as pd
 
 from pipeline.roads.arrays import Float64, Int32, Int64
@@ -31,6 +32,11 @@ TAG_KEYS = (
 )
 
 E7 = 1e-7  # degrees in one unit of a stored coordinate
+
+
+def degrees(coordinate_e7: Int32) -> Float64:
+    """Stored coordinates in degrees."""
+    return np.asarray(coordinate_e7 * E7, dtype=np.float64)
 
 
 @dataclass(frozen=True)
@@ -62,4 +68,4 @@ class RoadExtract:
 
     def degrees(self, nodes: Int64 | Int32) -> tuple[Float64, Float64]:
         """Longitude and latitude of the given nodes."""
-        return self.node_lon_e7[nodes] * E7, self.node_lat_e7[nodes] * E7
+        return degrees(self.node_lon_e7[nodes]), degrees(self.node_lat_e7[nodes])

@@ -4,14 +4,15 @@ from __future__ import annotations
 
 from dataclasses import dataclass, fields
 from pathlib import Path
-from typing import ClassVar, Self
+from typing import Any, ClassVar, Self
 
 import networkx as nx
 import numpy as np
+import numpy.typing as npt
 
 from pipeline.errors import RoadsError
 from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64, Uint8
-from pipeline.roads.extract import E7
+from pipeline.roads.extract import degrees
 
 # A cost packs both weights of a stretch of road into one integer: hundredths of a second in
 # the upper bits, millimetres in the lower 34. Costs add up like the weights themselves, and
@@ -130,7 +131,7 @@ class RoadGraph:
                 ) from None
         return cls(**arrays)
 
-    def to_networkx(self) -> nx.MultiDiGraph:
+    def to_networkx(self) -> nx.MultiDiGraph[int]:
         """The graph in memory, every open direction of every edge, as osmnx names things.
 
         Returns
@@ -139,8 +140,8 @@ class RoadGraph:
         (s), `is_ferry`, `toll_m` and `unpaved_m`; their key is twice the number of the edge,
         plus one for the backward direction. Loops and slower parallels are included.
         """
-        graph = nx.MultiDiGraph(crs="EPSG:4326")
-        places = zip(self.node_lon_e7 * E7, self.node_lat_e7 * E7, strict=True)
+        graph: nx.MultiDiGraph[int] = nx.MultiDiGraph(crs="EPSG:4326")
+        places = zip(degrees(self.node_lon_e7), degrees(self.node_lat_e7), strict=True)
         graph.add_nodes_from((i, {"x": x, "y": y}) for i, (x, y) in enumerate(places))
         for edge in range(self.edges):
             ends = (int(self.edge_start[edge]), int(self.edge_end[edge]))
@@ -153,8 +154,10 @@ class RoadGraph:
             for backward, cost in enumerate(map(int, costs)):
                 if cost == CLOSED:
                     continue
+                tail, head = ends[::-1] if backward else ends
                 graph.add_edge(
-                    *(ends[::-1] if backward else ends),
+                    tail,
+                    head,
                     key=2 * edge + backward,
                     length=(cost & DISTANCE_MASK) / 1000,
                     travel_time=(cost >> DISTANCE_BITS) / 100,
@@ -163,12 +166,12 @@ class RoadGraph:
         return graph
 
 
-def _open(path: Path) -> np.ndarray[tuple[int, ...], np.dtype[np.generic]]:
+def _open(path: Path) -> npt.NDArray[Any]:
     try:
         array = np.load(path, mmap_mode="r", allow_pickle=False)
     except ValueError:  # an empty file cannot be mapped
         array = np.load(path, allow_pickle=False)
-    return array.view(np.ndarray)
+    return np.asarray(array)
 
 
 def pack(time_s: Float64, distance_m: Float64) -> Int64:
@@ -221,5 +224,3 @@ def best_arcs(
 def flag_bits(is_toll: Bool, is_unpaved: Bool) -> Uint8:
     """Bits of `vertex_flags`."""
     return (is_toll * TOLL + is_unpaved * UNPAVED).astype(np.uint8)
-
-

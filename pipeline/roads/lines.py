@@ -20,13 +20,15 @@ def line_strings(lon: Float64, lat: Float64, counts: Int64) -> Geometries:
     section 3.1.9, asks for.
     """
     line = np.repeat(np.arange(len(counts)), counts)
-    lines = shapely.linestrings(np.column_stack([lon, lat]), indices=line)
+    lines: Geometries = np.asarray(
+        shapely.linestrings(np.column_stack([lon, lat]), indices=line), dtype=object
+    )
     jumps = (np.abs(np.diff(lon)) > 180) & (line[1:] == line[:-1])
     starts = offsets(counts)
     for crossing in np.unique(line[:-1][jumps]):
         run = slice(starts[crossing], starts[crossing + 1])
         lines[crossing] = _cut(lon[run], lat[run])
-    return np.asarray(lines)
+    return lines
 
 
 def _cut(lon: Float64, lat: Float64) -> shapely.MultiLineString:

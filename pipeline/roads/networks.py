@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from typing import Literal
+
 import numpy as np
 from scipy.sparse import csr_array
 from scipy.sparse.csgraph import connected_components
 
-from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64
+from pipeline.roads.arrays import Float32, Float64, Int32, Int64
 
 
 def main_networks(
@@ -48,9 +50,9 @@ def detached_km(
 
 
 def _labels(tail: Int32 | Int64, head: Int32 | Int64, nodes: int, *, strong: bool) -> Int32:
-    links: Bool = np.ones(len(tail), dtype=np.bool_)
+    links: Float64 = np.ones(len(tail))  # parallel arcs add up, and stay above zero
     matrix = csr_array((links, (tail, head)), shape=(nodes, nodes))
-    connection = "strong" if strong else "weak"
+    connection: Literal["strong", "weak"] = "strong" if strong else "weak"
     return np.asarray(
         connected_components(matrix, directed=True, connection=connection)[1], dtype=np.int32
     )

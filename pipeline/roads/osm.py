@@ -115,40 +115,27 @@ def _parse_nodes(text: Uint8, count: int) -> tuple[Int64, Int32, Int32]:
     ref = np.empty(count, dtype=np.int64)
     place = np.empty((2, count), dtype=np.int32)
     item, field = -1, 0  # field 0: id, 1: x, 2: y
-    number, decimals, negative, digits = np.int64(0), -1, False, 0
-    for position in range(len(text)):
-        c = text[position]
+    number, decimals, sign, digits = np.int64(0), 0, 1, 0
+    after_point = False
+    for c in text:
         if 48 <= c <= 57:  # 0-9
             number = number * 10 + (c - 48)
             digits += 1
-            if decimals >= 0:
-                decimals += 1
-            continue
-        if c == 45:  # -
-            negative = True
-            continue
-        if c == 46:  # .
-            decimals = 0
-            continue
-        # n, x, y, comma or line end: the number before it is complete
-        if digits:
-            value = -number if negative else number
-            if field == 0:
-                ref[item] = value
-            else:
-                place[field - 1, item] = value * 10 ** (7 - max(decimals, 0))
-        elif item >= 0 and field:
-            place[field - 1, item] = NO_PLACE
-        number, decimals, negative, digits = np.int64(0), -1, False, 0
-        if c == 110:  # n
-            item += 1
-            field = 0
-        elif c == 120:  # x
-            field = 1
-        elif c == 121:  # y
-            field = 2
-        else:
-            field = 0
+            decimals += after_point
+        elif c == 45:  # -
+            sign = -1
+        elif c == 46:  # .
+            after_point = True
+        else:  # n, x, y, comma or line end: the number before it is complete
+            if digits and field == 0:
+                ref[item] = sign * number
+            elif field:
+                value = sign * number * 10 ** (7 - decimals)
+                place[field - 1, item] = value if digits else NO_PLACE
+            number, decimals, sign, digits = np.int64(0), 0, 1, 0
+            after_point = False
+            item += c == 110  # n
+            field = (c == 120) * 1 + (c == 121) * 2  # x, y
     return ref, place[0], place[1]
 
 
@@ -157,7 +144,7 @@ def _with_negative_ids(ways: _Ways, path: Path) -> _Ways:
     wanted = set(ways.ref[ways.ref < 0].tolist())
     places = {}
     for node in osmium.FileProcessor(str(path), osmium.osm.NODE):
-        if node.id in wanted and node.location.valid():
+        if isinstance(node, osmium.osm.Node) and node.id in wanted and node.location.valid():
             places[node.id] = (node.location.x, node.location.y)
     lon, lat = ways.lon_e7.copy(), ways.lat_e7.copy()
     for position in np.flatnonzero(ways.ref < 0):
@@ -217,5 +204,7 @@ def _tag_columns(files: list[_Ways]) -> pd.DataFrame:
         known, categories = pd.factorize(np.array(values, dtype=object), sort=True)
         codes = np.full(total, -1, dtype=np.int32)
         codes[np.concatenate(rows)] = known
-        columns[key] = pd.Categorical.from_codes(codes, categories=list(categories))
+        columns[key] = pd.Categorical.from_codes(
+            codes, categories=pd.Index(categories, dtype=object)
+        )
     return pd.DataFrame(columns)

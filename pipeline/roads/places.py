@@ -5,11 +5,12 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 import shapely
 from scipy.spatial import cKDTree
 
-from pipeline.roads.arrays import Bool, Float64, Int64, offsets, ranges
-from pipeline.roads.extract import E7
+from pipeline.roads.arrays import Bool, Float32, Float64, Int64, offsets, ranges
+from pipeline.roads.extract import degrees
 from pipeline.roads.graph import CLOSED, TOLL, UNPAVED, RoadGraph, pack
 from pipeline.roads.segments import WGS84
 
@@ -86,7 +87,7 @@ def nearest_places(
         return result
     counts = np.diff(graph.edge_first)[edges].astype(np.int64)
     vertices = ranges(graph.edge_first[:-1][edges].astype(np.int64), counts)
-    x, y = graph.vertex_lon_e7[vertices] * E7, graph.vertex_lat_e7[vertices] * E7
+    x, y = degrees(graph.vertex_lon_e7[vertices]), degrees(graph.vertex_lat_e7[vertices])
     _, at = cKDTree(_on_sphere(x, y), balanced_tree=False).query(_on_sphere(lon, lat))
     result.gap_m[:] = WGS84.inv(lon, lat, x[at], y[at])[2]
     boxes = shapely.STRtree(_boxes(x, y, counts))
@@ -113,9 +114,7 @@ def _nowhere(count: int) -> Nearest:
 def _on_sphere(lon: Float64, lat: Float64) -> Float64:
     """Unit vectors; only for finding a near vertex, never for a distance."""
     theta, phi = np.radians(lon), np.radians(lat)
-    return np.column_stack(
-        [np.cos(phi) * np.cos(theta), np.cos(phi) * np.sin(theta), np.sin(phi)]
-    )
+    return np.column_stack([np.cos(phi) * np.cos(theta), np.cos(phi) * np.sin(theta), np.sin(phi)])
 
 
 def _turn(degrees: Float64) -> Float64:
@@ -123,7 +122,7 @@ def _turn(degrees: Float64) -> Float64:
     return np.asarray((degrees + 180) % 360 - 180)
 
 
-def _boxes(x: Float64, y: Float64, counts: Int64) -> np.ndarray[tuple[int, ...], np.dtype[np.object_]]:
+def _boxes(x: Float64, y: Float64, counts: Int64) -> npt.NDArray[np.object_]:
     """Box of each run of vertices; one that crosses the antimeridian runs on beyond 180."""
     starts = offsets(counts)[:-1]
     origin = np.repeat(x[starts], counts)
@@ -172,8 +171,8 @@ def _refine(
     east, north = _scales(lat[owner])
 
     def plane(v: Int64) -> tuple[Float64, Float64]:
-        x = _turn(graph.vertex_lon_e7[v] * E7 - lon[owner]) * east
-        return x, (graph.vertex_lat_e7[v] * E7 - lat[owner]) * north
+        x = _turn(degrees(graph.vertex_lon_e7[v]) - lon[owner]) * east
+        return x, (degrees(graph.vertex_lat_e7[v]) - lat[owner]) * north
 
     (ax, ay), (bx, by) = plane(vertex), plane(vertex + 1)
     dx, dy = bx - ax, by - ay
@@ -186,9 +185,9 @@ def _refine(
     best = np.flatnonzero(gap2 == np.repeat(least, np.diff(np.append(starts, len(owner)))))
     best = best[np.flatnonzero(np.diff(owner[best], prepend=-1))]
     who, v, s = owner[best], vertex[best], share[best]
-    x0, y0 = graph.vertex_lon_e7[v] * E7, graph.vertex_lat_e7[v] * E7
-    place_lon = _turn(x0 + s * _turn(graph.vertex_lon_e7[v + 1] * E7 - x0))
-    place_lat = y0 + s * (graph.vertex_lat_e7[v + 1] * E7 - y0)
+    x0, y0 = degrees(graph.vertex_lon_e7[v]), degrees(graph.vertex_lat_e7[v])
+    place_lon = _turn(x0 + s * _turn(degrees(graph.vertex_lon_e7[v + 1]) - x0))
+    place_lat = y0 + s * (degrees(graph.vertex_lat_e7[v + 1]) - y0)
     result.edge[who], result.vertex[who], result.share[who] = edge[best], v, s
     result.lon[who], result.lat[who] = place_lon, place_lat
     result.gap_m[who] = WGS84.inv(lon[who], lat[who], place_lon, place_lat)[2]
@@ -263,10 +262,9 @@ def _sides(
         return [np.zeros(0)] * 5, [np.zeros(0)] * 5
     counts = (np.diff(graph.edge_first)[edge] - 1).astype(np.int64)
     v = ranges(graph.edge_first[:-1][edge].astype(np.int64), counts)
-    lon, lat = graph.vertex_lon_e7, graph.vertex_lat_e7
-    length = np.asarray(
-        WGS84.inv(lon[v] * E7, lat[v] * E7, lon[v + 1] * E7, lat[v + 1] * E7)[2]
-    )
+    x, y = graph.vertex_lon_e7, graph.vertex_lat_e7
+    here, there = (degrees(x[v]), degrees(y[v])), (degrees(x[v + 1]), degrees(y[v + 1]))
+    length = np.asarray(WGS84.inv(*here, *there)[2])
     before = np.clip(np.repeat(vertex, counts) - v, 0, 1).astype(np.float64)
     before = np.where(v == np.repeat(vertex, counts), np.repeat(share, counts), before)
     values = [
@@ -283,6 +281,6 @@ def _sides(
     )
 
 
-def _seconds(length_m: Float64, kmh: np.ndarray[tuple[int, ...], np.dtype[np.float32]]) -> Float64:
+def _seconds(length_m: Float64, kmh: Float32) -> Float64:
     speed = kmh.astype(np.float64)
     return np.where(speed > 0, length_m / np.where(speed > 0, speed, 1) * 3.6, 0)

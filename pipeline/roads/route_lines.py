@@ -10,7 +10,7 @@ import numpy as np
 import shapely
 
 from pipeline.roads.arrays import Float64, Int64, ranges
-from pipeline.roads.extract import E7
+from pipeline.roads.extract import degrees
 from pipeline.roads.graph import RoadGraph
 from pipeline.roads.lines import line_strings
 from pipeline.roads.places import Places
@@ -81,7 +81,7 @@ def draw_legs(
     for leg in legs:
         lon, lat = _vertices(graph, homes, doors, leg)
         line = line_strings(lon, lat, np.array([len(lon)]))[0]
-        lines.append(shapely.simplify(line, tolerance) if tolerance else line)
+        lines.append(_thinned(line, tolerance))
     return gpd.GeoDataFrame(
         {
             "zone_id": np.array([leg.zone_id for leg in legs], dtype=object),
@@ -92,9 +92,12 @@ def draw_legs(
     ).astype({"zone_id": "str", "site_id": "str"})
 
 
-def _vertices(
-    graph: RoadGraph, homes: Places, doors: Places, leg: Leg
-) -> tuple[Float64, Float64]:
+def _thinned(line: shapely.Geometry, tolerance: float) -> shapely.Geometry:
+    """Douglas and Peucker's thinning; it may let a line touch itself, which a map can bear."""
+    return shapely.simplify(line, tolerance, preserve_topology=False) if tolerance else line
+
+
+def _vertices(graph: RoadGraph, homes: Places, doors: Places, leg: Leg) -> tuple[Float64, Float64]:
     """Coordinates along a leg: the zone's place, vertices, the access point's place."""
     first = _vertex_after(homes, leg.zone)
     last = _vertex_after(doors, leg.door)
@@ -112,8 +115,8 @@ def _vertices(
         else:
             into = np.arange(graph.edge_first[door_edge + 1] - 1, last - 1, -1)
         vertices = np.concatenate([out, _along_edges(graph, leg.edges), into])
-    lon = graph.vertex_lon_e7[vertices] * E7
-    lat = graph.vertex_lat_e7[vertices] * E7
+    lon = degrees(graph.vertex_lon_e7[vertices])
+    lat = degrees(graph.vertex_lat_e7[vertices])
     start, end = homes.nearest, doors.nearest
     return (
         np.concatenate([[start.lon[leg.zone]], lon, [end.lon[leg.door]]]),

@@ -16,7 +16,7 @@ import numpy as np
 import pandas as pd
 
 from pipeline.errors import StudyError
-from pipeline.roads.arrays import Bool, Float64, Int8, Int32, Int64
+from pipeline.roads.arrays import Bool, Float64, Int8, Int32
 from pipeline.roads.extract import RoadExtract
 from pipeline.roads.speeds import read_duration_min, read_limit_kmh
 from pipeline.settings import RoadsSettings
@@ -158,7 +158,7 @@ def _access(tags: pd.DataFrame, rules: RoadRules) -> Float64:
 
 def _untagged_ferry(is_ferry: Bool, access: Float64, settings: RoadsSettings) -> Bool:
     """Ferries that do not say that they take cars, where the study wants them to."""
-    return is_ferry & (access != 1) & (settings.ferries == "car_tagged")
+    return np.asarray(is_ferry & (access != 1) & (settings.ferries == "car_tagged"))
 
 
 def _direction(tags: pd.DataFrame, class_code: Int32, rules: RoadRules) -> Int8:
@@ -204,7 +204,7 @@ def _by_value(
     """`meaning` of each value, worked out once per distinct value; `missing` where untagged."""
     values = [float(meaning(value)) for value in column.cat.categories]
     table = np.array([*values, missing], dtype=np.float64)
-    codes: Int64 = column.cat.codes.to_numpy(dtype=np.int64)
+    codes = column.cat.codes.to_numpy()
     return table[codes]  # code -1, untagged, takes the last entry
 
 

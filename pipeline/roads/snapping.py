@@ -60,9 +60,7 @@ def tie_to_roads(
     """
     lon, lat = points["lon"].to_numpy(np.float64), points["lat"].to_numpy(np.float64)
     limit_m = settings.max_snap_km * 1000
-    main = nearest_places(
-        graph, np.flatnonzero(graph.main_edges()), lon, lat, reach_m=limit_m
-    )
+    main = nearest_places(graph, np.flatnonzero(graph.main_edges()), lon, lat, reach_m=limit_m)
     island = _nearest_island(graph, lon, lat, settings)
     is_beside_island = (island.gap_m <= limit_m) & (
         island.gap_m + settings.detached_jump_km * 1000 < main.gap_m
