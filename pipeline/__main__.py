@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import json
 import sys
 from pathlib import Path
 
@@ -97,8 +98,10 @@ def _run(options: argparse.Namespace) -> int:
 def _show_result(study: Study) -> None:
     """The headline value and where the report is."""
     output = study.study.folder / "output"
-    headline = (output / "headline.txt").read_text(encoding="utf-8").rstrip()
-    print(f"\n{headline}\nreport: {output / 'report.html'}")
+    manifest = json.loads((output / "run.json").read_text(encoding="utf-8"))
+    print(f"\nreport: {output / 'report.html'}")
+    for headline in manifest["headline"]:
+        print(headline["words"])
 
 
 def _new(name: str) -> int:

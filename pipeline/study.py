@@ -170,7 +170,8 @@ def _paths(value: Any) -> Iterator[Path]:
 
 def _explain(error: ValidationError, source: str) -> str:
     """The first thing that is wrong, and how many more there are."""
-    first = error.errors()[0]
+    # A misspelt key is also a missing one: name the misspelling.
+    first = min(error.errors(), key=lambda item: item["type"] != "extra_forbidden")
     where = [str(part) for part in first["loc"]]
     rest = error.error_count() - 1
     more = f" ({rest} more problem(s) in the file.)" if rest else ""

@@ -148,7 +148,7 @@ def test_a_study_may_bring_its_trips(tmp_path: Path) -> None:
         '[demand]\nmodels = ["poisson", "negative_binomial"]\n'
     )
     assert run("all", entered) == 0
-    surplus = pd.read_csv(tmp_path / "trips" / "output" / "surplus.csv")
+    surplus = pd.read_csv(tmp_path / "trips" / "output" / "tables" / "surplus.csv")
     assert (surplus.loc[surplus["measure"] == "surplus_per_trip", "value"] > 0).any()
 
 
@@ -172,8 +172,8 @@ def bring(study: Path, target: Path, table: str) -> None:
 
 def headline(folder: Path) -> tuple[float, float, float]:
     """Annual surplus of the chosen model and its interval, to six digits."""
-    surplus = pd.read_csv(folder / "output" / "surplus.csv")
-    fit = pd.read_csv(folder / "output" / "fit.csv")
+    surplus = pd.read_csv(folder / "output" / "tables" / "surplus.csv")
+    fit = pd.read_csv(folder / "output" / "tables" / "fit.csv")
     chosen = fit.loc[fit["chosen"], "model"].iloc[0]
     row = surplus[(surplus["model"] == chosen) & (surplus["measure"] == "annual_surplus")].iloc[0]
     return tuple(float(f"{row[column]:.6g}") for column in ("value", "ci_low", "ci_high"))

@@ -8,6 +8,7 @@ import math
 from typing import Any
 
 from pipeline.publish.results import Headline, Results
+from pipeline.publish.words import figure, interval, is_known, level
 
 FORMAT_VERSION = 1
 
@@ -29,7 +30,10 @@ def run_manifest(results: Results) -> dict[str, Any]:
             "price_year": about.price_year,
         },
         "confidence": results.study.surplus.confidence,
-        "headline": [_headline(headline) for headline in results.headlines],
+        "headline": [
+            dataclasses.asdict(headline) | {"words": in_words(results, headline)}
+            for headline in results.headlines
+        ],
         "inputs": [dataclasses.asdict(file) for file in provenance.inputs],
         "settings": provenance.settings,
         "settings_set": list(provenance.settings_set),
@@ -45,8 +49,15 @@ def manifest_text(manifest: dict[str, Any]) -> str:
     return json.dumps(_finite(manifest), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
 
 
-def _headline(headline: Headline) -> dict[str, Any]:
-    return dataclasses.asdict(headline)
+def in_words(results: Results, headline: Headline) -> str:
+    """The annual value of a site in one line, rounded to what its interval supports."""
+    annual, currency = headline.annual_surplus, results.currency
+    if annual is None or not is_known(annual.value):
+        return f"{headline.site_name}: no annual value (see the report)"
+    sure = level(results.study.surplus.confidence)
+    value = figure(annual.value, annual.ci_low, annual.ci_high)
+    ends = interval(annual.ci_low, annual.ci_high, annual.value)
+    return f"{headline.site_name}: {currency} {value} a year ({sure} interval {ends})"
 
 
 def _finite(value: Any) -> Any:
