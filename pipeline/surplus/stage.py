@@ -11,7 +11,7 @@ from pipeline.errors import SurplusError
 from pipeline.study import Study
 from pipeline.surplus.draws import parameter_draws
 from pipeline.surplus.fees import fee_rows
-from pipeline.surplus.intervals import DELTA, delta_rows, missing_rows, simulated_rows
+from pipeline.surplus.intervals import DELTA, SIMULATED, delta_rows, missing_rows, simulated_rows
 from pipeline.surplus.measures import ANNUAL, PER_TRIP, measure_units
 from pipeline.surplus.zones import every_zone, zone_rows
 from pipeline.tables import FeeSchedule, Surplus, ZoneSurplus
@@ -97,20 +97,21 @@ def _value_rows(
 
 
 def summarise_surplus(outputs: tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]) -> str:
-    """The part after the colon of the stage's summary line."""
+    """The part after the colon of the stage's summary line; the interval is the simulated one."""
     values = outputs[0]
-    rows = values[values["chosen"] & (values["method"] == DELTA)]
+    chosen = values[values["chosen"]]
     words: list[str] = []
-    for site_id, site in rows.groupby("site_id", sort=True):
-        by_measure = site.set_index("measure")
-        trip, year = by_measure.loc[PER_TRIP], by_measure.loc[ANNUAL]
+    for site_id, site in chosen.groupby("site_id", sort=True):
+        figures = site.set_index(["measure", "method"])
+        trip, year = figures.loc[(PER_TRIP, DELTA)], figures.loc[(ANNUAL, DELTA)]
         if pd.isna(trip["value"]):
             words.append(f"{site_id}: no finite surplus (see surplus.csv)")
             continue
+        ends = figures.loc[(PER_TRIP, SIMULATED)]
+        high = f"{ends['ci_high']:,.2f}" if pd.notna(ends["ci_high"]) else "no upper end"
         words.append(
             f"{site_id}: {trip['value']:,.2f} {trip['unit']} "
-            f"({trip['ci_low']:,.2f} to {trip['ci_high']:,.2f}), "
-            f"{year['value']:,.0f} {year['unit']}"
+            f"({ends['ci_low']:,.2f} to {high}), {year['value']:,.0f} {year['unit']}"
         )
     more = f"; {len(words) - 3} more sites" if len(words) > 3 else ""
     return "; ".join(words[:3]) + more
