@@ -4,7 +4,9 @@ from __future__ import annotations
 
 import inspect
 import re
+from collections.abc import Mapping
 from pathlib import Path
+from typing import Any
 
 import pytest
 
@@ -12,14 +14,14 @@ import pipeline
 from pipeline.__main__ import STAGE_NAMES, main
 from pipeline.flow import BROUGHT, FLOW, INPUTS, STAGES, plan
 from pipeline.schema import Table
-from pipeline.study import study_from
+from pipeline.study import Study, study_from
 from pipeline.tables import TABLES, Routes, ZoneTable
 
 ROOT = Path(__file__).parent.parent
 
 
-def study(folder: Path, **sections: dict[str, object]) -> pipeline.study.Study:
-    raw: dict[str, object] = {
+def study(folder: Path, **sections: Mapping[str, object]) -> Study:
+    raw: dict[str, Any] = {
         "study": {
             "name": "fen",
             "title": "A fen",

@@ -170,13 +170,13 @@ def bring(study: Path, target: Path, table: str) -> None:
         frame.to_parquet(target, index=False)
 
 
-def headline(folder: Path) -> tuple[float, float, float]:
+def headline(folder: Path) -> list[float]:
     """Annual surplus of the chosen model and its interval, to six digits."""
     surplus = pd.read_csv(folder / "output" / "tables" / "surplus.csv")
     fit = pd.read_csv(folder / "output" / "tables" / "fit.csv")
     chosen = fit.loc[fit["chosen"], "model"].iloc[0]
     row = surplus[(surplus["model"] == chosen) & (surplus["measure"] == "annual_surplus")].iloc[0]
-    return tuple(float(f"{row[column]:.6g}") for column in ("value", "ci_low", "ci_high"))
+    return [float(f"{row[column]:.6g}") for column in ("value", "ci_low", "ci_high")]
 
 
 def test_the_manifest_says_what_the_run_was_made_from(study: Path) -> None:
