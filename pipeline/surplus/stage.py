@@ -102,12 +102,12 @@ def summarise_surplus(outputs: tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]) 
     chosen = values[values["chosen"]]
     words: list[str] = []
     for site_id, site in chosen.groupby("site_id", sort=True):
-        figures = site.set_index(["measure", "method"])
-        trip, year = figures.loc[(PER_TRIP, DELTA)], figures.loc[(ANNUAL, DELTA)]
+        point = site[site["method"] == DELTA].set_index("measure")
+        trip, year = point.loc[PER_TRIP], point.loc[ANNUAL]
         if pd.isna(trip["value"]):
             words.append(f"{site_id}: no finite surplus (see surplus.csv)")
             continue
-        ends = figures.loc[(PER_TRIP, SIMULATED)]
+        ends = site[site["method"] == SIMULATED].set_index("measure").loc[PER_TRIP]
         high = f"{ends['ci_high']:,.2f}" if pd.notna(ends["ci_high"]) else "no upper end"
         words.append(
             f"{site_id}: {trip['value']:,.2f} {trip['unit']} "
