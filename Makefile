@@ -8,6 +8,13 @@ VENV := .venv
 RUN := $(VENV)/bin/python
 STAGES := geocode roads route cost join demand surplus publish
 
+# What pyproject.toml says is needed, in the versions of config/constraints.txt.
+needs = $(RUN) -c 'import functools, sys, tomllib; \
+  project = tomllib.load(open("pyproject.toml", "rb"))["project"]; \
+  print(*functools.reduce(dict.get, sys.argv[1:], project), sep="\n")' $(1) $(2) > $(VENV)/needs.txt && \
+  $(RUN) -m pip install --quiet --disable-pip-version-check --no-warn-script-location \
+  -c config/constraints.txt -r $(VENV)/needs.txt
+
 .DEFAULT_GOAL := help
 .PHONY: all new test check bench validate iceland docs clean help $(STAGES)
 
@@ -54,9 +61,9 @@ $(VENV)/ready: pyproject.toml config/constraints.txt
 	@$(PYTHON) -c 'import sys; sys.exit(sys.version_info < (3, 11))' || \
 	  { echo "error: Python 3.11 or later is needed; say which with PYTHON=python3.12"; exit 1; }
 	@test -x $(RUN) || $(PYTHON) -m venv $(VENV)
-	@$(RUN) -m pip install --quiet --disable-pip-version-check -c config/constraints.txt -e .
+	@$(call needs,dependencies)
 	@touch $@
 
 $(VENV)/ready-test: $(VENV)/ready
-	@$(RUN) -m pip install --quiet --disable-pip-version-check -c config/constraints.txt -e '.[test]'
+	@$(call needs,optional-dependencies,test)
 	@touch $@
