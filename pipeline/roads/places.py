@@ -16,6 +16,7 @@ from pipeline.roads.segments import WGS84
 
 AXIS_M, FLATTENING = WGS84.a, WGS84.f
 ECCENTRICITY2 = FLATTENING * (2 - FLATTENING)
+HERE_M = 0.0005  # half the unit of a packed distance
 CHUNK = 2000  # points whose candidates are looked at together
 
 
@@ -229,7 +230,10 @@ def split_edges(graph: RoadGraph, nearest: Nearest, usable: Bool) -> Places:
 
     def cost(time_s: Float64, length_m: Float64, is_open: Bool) -> Int64:
         result = np.full(len(edge), CLOSED, dtype=np.int64)
-        result[at] = pack(np.where(is_open, time_s, np.nan), length_m)
+        # Who stands at a junction can take any road there, not just the one tied to.
+        is_there = length_m < HERE_M
+        time_s = np.where(is_there, 0, np.where(is_open, time_s, np.nan))
+        result[at] = pack(time_s, np.where(is_there, 0, length_m))
         return result
 
     def spread(values: Float64) -> Float64:

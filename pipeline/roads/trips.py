@@ -104,8 +104,8 @@ def _direct(homes: Places, doors: Places, door: int, *, homewards: bool) -> Int6
     ahead, behind = door_at >= home_at, door_at <= home_at
     if homewards:
         along, back, ahead, behind = -along, -back, behind, ahead
-    forward_open: Bool = same & ahead & (homes.from_start >= 0)
-    backward_open: Bool = same & behind & (homes.to_start >= 0)
+    forward_open: Bool = same & ahead & (homes.from_start >= 0) & (doors.from_start[door] >= 0)
+    backward_open: Bool = same & behind & (homes.to_start >= 0) & (doors.to_start[door] >= 0)
     result = np.full(len(homes.edge), -1, dtype=np.int64)
     result[backward_open] = back[backward_open]
     better = forward_open & ((result < 0) | (along < result))
