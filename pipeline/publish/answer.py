@@ -33,8 +33,9 @@ def _answer(results: Results) -> Html:
 
 def _one_site(results: Results, headline: Headline) -> Html:
     annual, year = headline.annual_surplus, results.study.study.price_year
-    if annual is None:
-        words: Html = tag("p", "The flow worked out no annual value for this site.", class_="claim")
+    if annual is None or not is_known(annual.value):
+        why = annual.note if annual else ""
+        words = tag("p", f"No value can be given for {headline.site_name}. ", why, class_="claim")
         return join([words, _facts(results, headline)])
     currency, sure = results.currency, level(results.study.surplus.confidence)
     known = is_known(annual.ci_low, annual.ci_high)
@@ -55,8 +56,7 @@ def _one_site(results: Results, headline: Headline) -> Html:
         "above what their trips cost them. Nobody receives it as cash.",
     )
     gauge = _gauge(annual, currency, sure) if known and annual.ci_high > 0 else None
-    note = tag("p", annual.note, class_="small") if annual.note else None
-    left = tag("div", claim, span, gauge, note, class_="say")
+    left = tag("div", claim, span, gauge, class_="say")
     return tag("div", left, _facts(results, headline), class_="answer")
 
 

@@ -18,8 +18,7 @@ def assumption_rows(results: Results) -> list[tuple[object, ...]]:
     """One row per assumption: meaning and key, value, unit, usual value, who set it."""
     given = frozenset(results.provenance.settings_set)
     rows: list[tuple[object, ...]] = []
-    for section in type(results.study).model_fields:
-        settings = getattr(results.study, section)
+    for section, settings in results.study:
         if section in NOT_ASSUMPTIONS or not isinstance(settings, BaseModel):
             continue
         for key, field, value in _assumptions(settings, f"{section}."):

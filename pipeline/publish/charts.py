@@ -21,14 +21,8 @@ from pipeline.publish.markup import Html, tag
 from pipeline.publish.rows import rows_of
 from pipeline.publish.words import figure, number
 
-CURVE_POINTS = 61
 SKEWED = 25.0
 """A greatest rate so many times the middle one makes the axis go by square roots."""
-
-
-def curve_costs(costs: Numbers) -> Numbers:
-    """Costs to draw the curve at: from the least to the greatest observed."""
-    return np.linspace(float(np.nanmin(costs)), float(np.nanmax(costs)), CURVE_POINTS)
 
 
 def is_skewed(rates: Numbers) -> bool:

@@ -5,8 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
-from pipeline.publish.charts import curve_costs, demand_chart, is_skewed
-from pipeline.publish.curve import Curve, fitted_curve
+from pipeline.publish.charts import demand_chart, is_skewed
+from pipeline.publish.curve import Curve
 from pipeline.publish.mapview import BaseMap, rate_map
 from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Headline, Results
@@ -97,7 +97,7 @@ def demand_figure(results: Results, headline: Headline) -> Html:
     points = _points(results, headline)
     if points.empty:
         return tag("p", "There is no point to draw.")
-    curve = fitted_curve(results, headline, curve_costs(points["cost"].to_numpy()))
+    curve = results.curves.get(headline.site_id)
     per_zone = results.zone_table is not None
     rate_words = "Visits per 1,000 people and year" if per_zone else "Trips per person and year"
     chart = demand_chart(
@@ -128,9 +128,11 @@ def _point_words(results: Results, points: pd.DataFrame) -> str:
 def _curve_words(results: Results, headline: Headline, curve: Curve | None) -> str:
     sure = level(results.study.surplus.confidence)
     if curve is None:
-        return "The estimates of this model do not give its curve by themselves; none is drawn."
-    words = f"Line: {model_words(headline.model)} model, other terms at the market's means"
-    return f"{words}." if np.isnan(curve.low).any() else f"{words}; band: {sure} interval of it."
+        return ""
+    return (
+        f"Line: {model_words(headline.model)} model, other terms at the market's means; "
+        f"band: {sure} interval of it."
+    )
 
 
 def _points(results: Results, headline: Headline) -> pd.DataFrame:

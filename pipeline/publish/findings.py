@@ -20,7 +20,7 @@ from pipeline.publish.words import (
     words_of,
 )
 
-TERM_WORDS = {"const": "constant", "alpha": "alpha (dispersion)"}
+TERM_WORDS = {"const": "constant", "alpha": "alpha (dispersion)", "smearing": "smearing factor"}
 
 
 def fee_figure(results: Results, headline: Headline) -> Html:

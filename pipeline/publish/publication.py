@@ -11,6 +11,7 @@ import pandas as pd
 
 from pipeline.errors import PublishError
 from pipeline.provenance import Provenance
+from pipeline.publish.curve import fitted_curves
 from pipeline.publish.geofiles import write_geojson, write_geopackage
 from pipeline.publish.layers import build_layers
 from pipeline.publish.manifest import manifest_text, run_manifest
@@ -18,7 +19,7 @@ from pipeline.publish.privacy import hide_small_cells, hide_zone_surplus, trip_m
 from pipeline.publish.report import build_report
 from pipeline.publish.results import Headline, Results, headlines
 from pipeline.publish.tabular import PUBLISHED, describe_tables, write_csv, write_table_files
-from pipeline.publish.words import count, figure, interval, level
+from pipeline.publish.words import count
 from pipeline.study import Study
 
 
@@ -96,6 +97,12 @@ def publish(
     PublishError
         There is no finished table, or no model was chosen for any site.
     """
+    finished = _finished(zone_table, trip_table)
+    if not fit["chosen"].any():
+        raise PublishError(
+            "no model is chosen for any site (column 'chosen' of the fit table is false in all "
+            f"{len(fit)} rows), so there is no value to publish; see the notes in the fit table."
+        )
     below = study.publish.suppress_below
     shown = None if zone_table is None else hide_small_cells(zone_table, below=below)
     results = Results(
@@ -116,13 +123,9 @@ def publish(
         surplus=surplus,
         fee_schedule=fee_schedule,
         zone_surplus=zone_surplus if shown is None else hide_zone_surplus(zone_surplus, shown),
-        headlines=headlines(fit, surplus, _finished(zone_table, trip_table), sites),
+        curves=fitted_curves(zone_table, trip_table, estimates, fit, study=study),
+        headlines=headlines(fit, surplus, finished, sites),
     )
-    if not results.headlines:
-        raise PublishError(
-            "no model is chosen for any site (column 'chosen' of the fit table is false in all "
-            f"{len(fit)} rows), so there is no value to publish; see the notes in fit.csv."
-        )
     return (_publication(results),)
 
 
@@ -134,15 +137,7 @@ def summarise_publish(outputs: tuple[Publication]) -> str:
         count(len(publication.layers), "layer"),
         count(len(publication.tables), "table"),
     ]
-    confidence = float(publication.manifest["confidence"])
-    currency = publication.manifest["study"]["currency"]
-    values = [
-        f"{headline.site_name}: {currency} "
-        f"{figure(value.value, value.ci_low, value.ci_high)} a year ({level(confidence)} "
-        f"interval {interval(value.ci_low, value.ci_high, value.value)})"
-        for headline in publication.headlines
-        if (value := headline.annual_surplus) is not None
-    ]
+    values = [headline["words"] for headline in publication.manifest["headline"]]
     return "; ".join([", ".join(parts), *values])
 
 

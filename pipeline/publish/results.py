@@ -8,6 +8,7 @@ import geopandas as gpd
 import pandas as pd
 
 from pipeline.provenance import Provenance
+from pipeline.publish.curve import Curve
 from pipeline.publish.rows import rows_of
 from pipeline.study import Study
 
@@ -69,6 +70,7 @@ class Results:
     surplus: pd.DataFrame
     fee_schedule: pd.DataFrame
     zone_surplus: pd.DataFrame
+    curves: dict[str, Curve]
     headlines: tuple[Headline, ...]
 
     @property

@@ -86,15 +86,14 @@ def _merged(
     visits: npt.NDArray[np.float64],
 ) -> gpd.GeoDataFrame:
     """Stretches with the same traffic joined to lines."""
-    kind = np.unique(np.column_stack([zones, visits]), axis=0, return_inverse=True)[1]
+    order = np.lexsort((visits, zones))
+    change = np.diff(zones[order]) != 0
+    change |= ~np.isclose(np.diff(visits[order]), 0, equal_nan=True) & ~np.isnan(visits[order][1:])
     rows = []
-    for value in np.unique(kind):
-        same = kind == value
-        pieces = shapely.linestrings(ends[same].reshape(-1, 2, 2))
-        line = shapely.line_merge(shapely.multilinestrings(pieces))
-        rows += [
-            (site_id, int(zones[same][0]), float(visits[same][0]), part)
-            for part in shapely.get_parts(line)
-        ]
+    for same in np.split(order, np.flatnonzero(change) + 1):
+        pieces = shapely.MultiLineString(list(ends[np.sort(same)].reshape(-1, 2, 2)))
+        line = shapely.line_merge(pieces)
+        traffic = (site_id, int(zones[same[0]]), float(visits[same[0]]))
+        rows += [(*traffic, part) for part in shapely.get_parts(line)]
     frame = pd.DataFrame(rows, columns=[*COLUMNS, "geometry"])
     return gpd.GeoDataFrame(frame, geometry="geometry", crs=WGS84)

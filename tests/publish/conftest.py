@@ -44,6 +44,7 @@ COST = {
     "009": 13.0,
 }
 CONST, SLOPE = 5.0, -0.2
+COVARIANCE = np.array([[0.04, -0.004, 0.0], [-0.004, 0.0005, 0.0], [0.0, 0.0, 0.01]])
 TRUE_TRIP_VALUE = 5.0
 
 
@@ -221,21 +222,30 @@ def make_zone_table(zones: pd.DataFrame, site_id: str = SITE) -> pd.DataFrame:
 
 
 def make_estimates(site_id: str = SITE) -> pd.DataFrame:
-    covariance = [[0.04, -0.004, 0.0], [-0.004, 0.0005, 0.0], [0.0, 0.0, 0.01]]
-    terms = ["const", "travel_cost", "alpha"]
-    values = [CONST - np.log(1000), SLOPE, 0.1]
+    """Estimates of both models; the negative binomial's are the function's own."""
+    return pd.concat(
+        [make_model("poisson", site_id), make_model("negative_binomial", site_id)],
+        ignore_index=True,
+    )
+
+
+def make_model(model: str, site_id: str) -> pd.DataFrame:
+    size = 2 if model == "poisson" else 3
+    covariance = COVARIANCE[:size, :size]
+    terms = ["const", "travel_cost", "alpha"][:size]
+    values = np.array([CONST - np.log(1000), SLOPE, 0.1])[:size]
     errors = np.sqrt(np.diag(covariance))
     return pd.DataFrame(
         {
-            "model": "negative_binomial",
+            "model": model,
             "site_id": site_id,
             "term": terms,
             "estimate": values,
             "std_error": errors,
             "ci_low": values - 1.96 * errors,
             "ci_high": values + 1.96 * errors,
-            "p_value": [0.0, 1e-19, 0.3],
-            "covariance": [json.dumps(row) for row in covariance],
+            "p_value": [0.0, 1e-19, 0.3][:size],
+            "covariance": [json.dumps(row.tolist()) for row in covariance],
         }
     )
 
