@@ -42,7 +42,8 @@ def routes_of(
     """Checked tables; keywords are keys of [routes]."""
     study = a_study(routes=keys)
     routes, lines = route(zones_at(zones), sites_at(sites, site_ids), graph, study=study)
-    return Routes.checked(routes).set_index("zone_id"), RouteLines.checked(lines)
+    RouteLines.checked(lines)
+    return Routes.checked(routes).set_index("zone_id"), lines
 
 
 def test_both_ends_split_an_edge(tmp_path: Path) -> None:
@@ -146,12 +147,12 @@ ISLAND: Places = LINE | {"p": (0.02, 0.02), "q": (0.03, 0.02)}
     ],
 )
 def test_a_point_on_an_island_is_not_moved_across_the_water(
-    tmp_path: Path, point: tuple[float, float], keys: dict[str, float], status: str
+    tmp_path: Path, point: tuple[float, float], keys: dict[str, object], status: str
 ) -> None:
     """Shore road a ── e; island road p ── q of 1.1 km, 2.2 km to the north, without a ferry."""
     graph, _, _ = graph_of(tmp_path, ISLAND, [("a b c d e", ROAD), ("p q", ROAD)])
     zones = {"z": point, "ashore": LINE["b"]}
-    routes, _ = routes_of(graph, zones, {"s": LINE["e"]}, **keys)
+    routes, _ = routes_of(graph, zones, {"s": LINE["e"]}, None, **keys)
     assert routes.loc["z", "route_status"] == status
 
 

@@ -7,6 +7,7 @@ import numpy as np
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from pipeline.roads.arrays import Int32, Int64
 from pipeline.roads.graph import DISTANCE_BITS, DISTANCE_MASK, best_arcs
 from pipeline.search import UNREACHED, Tree, path_edges, search, sums_along
 
@@ -24,7 +25,7 @@ ARCS = st.lists(
 )
 
 
-def packed(arcs: list[Arc], nodes: int = NODES) -> tuple[np.ndarray, ...]:  # type: ignore[type-arg]
+def packed(arcs: list[Arc], nodes: int = NODES) -> tuple[Int64, Int32, Int64, Int32]:
     """Arrays to search on, as the graph holds them."""
     table = np.array(arcs, dtype=np.int64).reshape(-1, 4)
     cost = (table[:, 2] << DISTANCE_BITS) + table[:, 3]
@@ -41,13 +42,14 @@ def from_node(arcs: list[Arc], start: int, *, by_time: bool, nodes: int = NODES)
 
 def networkx_costs(arcs: list[Arc], start: int, *, by_time: bool) -> dict[int, int]:
     """Least cost of every reached node; tuples of (time, distance) as one big integer."""
-    graph = nx.MultiDiGraph()
+    graph: nx.MultiDiGraph[int] = nx.MultiDiGraph()
     graph.add_nodes_from(range(NODES))
     for tail, head, time, distance in arcs:
         graph.add_edge(
             tail, head, weight=(time << DISTANCE_BITS) + distance if by_time else distance
         )
-    return dict(nx.single_source_dijkstra_path_length(graph, start))
+    found = nx.single_source_dijkstra_path_length(graph, start)
+    return {node: int(cost) for node, cost in found.items()}
 
 
 @settings(max_examples=150, derandomize=True, deadline=None)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from pathlib import Path
 
 import networkx as nx
@@ -181,7 +182,7 @@ def test_contraction_keeps_all_distances(
     plain: nx.MultiDiGraph[tuple[float, float]] = nx.MultiDiGraph()
     geod = Geod(ellps="WGS84")
     for names, tags in ways:
-        for one, two in zip(names, names[1:], strict=False):
+        for one, two in pairwise(names):
             if one == two:
                 continue
             metres = geod.inv(*places[one], *places[two])[2]

@@ -48,8 +48,8 @@ def test_formats_give_the_same_extract(tmp_path: Path, suffix: str) -> None:
             writer.add_way(Way(id=1, nodes=[1, 2], tags=WAYS[0][1]))
             writer.add_way(Way(id=2, nodes=[2, 3], tags=WAYS[1][1]))
     else:
-        pack = {".osm.gz": gzip.compress, ".osm.bz2": bz2.compress}.get(suffix, bytes)
-        file.write_bytes(pack(text))
+        packed = {".osm.gz": gzip.compress(text), ".osm.bz2": bz2.compress(text)}
+        file.write_bytes(packed.get(suffix, text))
     same(read_extract((file,)), plain)
 
 

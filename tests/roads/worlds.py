@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 from xml.sax.saxutils import quoteattr
 
+import geopandas as gpd
 import pandas as pd
 
 from pipeline.roads import RoadExtract, RoadGraph, build_roads, read_extract
@@ -63,7 +64,7 @@ def extract_of(folder: Path, places: Places, ways: Ways) -> RoadExtract:
 
 def graph_of(
     folder: Path, places: Places, ways: Ways, **roads: object
-) -> tuple[RoadGraph, pd.DataFrame, pd.DataFrame]:
+) -> tuple[RoadGraph, pd.DataFrame, gpd.GeoDataFrame]:
     """Graph, quality and lines of a drawn world; keywords are keys of [roads]."""
     return build_roads(extract_of(folder, places, ways), study=a_study(roads=roads))
 
