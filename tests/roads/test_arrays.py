@@ -22,10 +22,10 @@ def test_compiles_without_a_cache_folder(monkeypatch: pytest.MonkeyPatch) -> Non
     """numba refuses to cache where it can write nowhere; the function works all the same."""
     njit = numba.njit
 
-    def refusing(*, cache: bool = False, **options: Any) -> Any:
+    def refusing(*functions: Any, cache: bool = False, **options: Any) -> Any:
         if cache:
             raise RuntimeError("cannot cache function: no locator available")
-        return njit(**options)
+        return njit(*functions, **options)
 
     monkeypatch.setattr(numba, "njit", refusing)
 
