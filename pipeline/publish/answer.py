@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pipeline.publish.axes import scaled_unit
 from pipeline.publish.charts import interval_bar
 from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Figure, Headline, Results
@@ -62,7 +63,8 @@ def _one_site(results: Results, headline: Headline) -> Html:
 
 def _gauge(annual: Figure, currency: str, sure: str) -> Html:
     bar = interval_bar(annual.value, annual.ci_low, annual.ci_high, words="Annual value")
-    words = f"{currency} a year. Pale: the {sure} interval. Upright mark: the estimate."
+    unit = " ".join(word for word in (currency, scaled_unit(annual.ci_high)[1]) if word)
+    words = f"{unit} a year. Pale: the {sure} interval. Upright mark: the estimate."
     return tag("figure", bar, tag("figcaption", words))
 
 

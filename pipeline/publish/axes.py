@@ -60,8 +60,8 @@ def tick_words(value: float) -> str:
 
 def scaled_unit(highest: float) -> tuple[float, str]:
     """Divisor and word that keep an axis' figures short: (1e6, 'million')."""
-    for size, word in ((1e9, "billion"), (1e6, "million"), (1e3, "thousand")):
-        if highest >= 2 * size:
+    for least, size, word in ((1e9, 1e9, "billion"), (1e6, 1e6, "million"), (1e4, 1e3, "thousand")):
+        if highest >= least:
             return size, word
     return 1.0, ""
 

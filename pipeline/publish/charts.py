@@ -152,7 +152,7 @@ def _fee_chart(schedule: pd.DataFrame, column: str, words: str, unit: str, curre
 
 def interval_bar(value: float, low: float, high: float, *, words: str) -> Html:
     """The headline as a bar from zero: what is certain, what is not, and where the value lies."""
-    divisor, size = scaled_unit(high)
+    divisor, _ = scaled_unit(high)
     least = min(0.0, low / divisor)
     x = Axis(least, _headroom(high / divisor), 8.0, 452.0)
     marks = []
@@ -160,8 +160,7 @@ def interval_bar(value: float, low: float, high: float, *, words: str) -> Html:
         mark = f"{float(x.at(tick)):.1f}"
         marks.append(tag("line", x1=mark, x2=mark, y1=34, y2=40, class_="tick"))
         anchor = "start" if tick == x.low else "end" if tick == x.high else "middle"
-        label = f"{tick_words(tick)} {size if tick == x.ticks(4)[-1] else ''}".rstrip()
-        marks.append(tag("text", label, x=mark, y=58, text_anchor=anchor))
+        marks.append(tag("text", tick_words(tick), x=mark, y=58, text_anchor=anchor))
     start, left, right, at = (
         float(x.at(v)) for v in (0.0, low / divisor, high / divisor, value / divisor)
     )

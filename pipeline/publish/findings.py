@@ -150,7 +150,7 @@ def values_table(results: Results, headline: Headline) -> Html:
             row.method,
             "" if pd.isna(row.note) else row.note,
         )
-        for row in rows_of(rows.sort_values(["measure", "method"], kind="stable"))
+        for row in rows_of(rows)
     ]
     sure = level(results.study.surplus.confidence)
     head = ("Measure", "Value", f"{sure} interval", "Unit", "Kind of interval", "To know")

@@ -4,9 +4,11 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
+import pandas as pd
 
 from pipeline.publish.classes import Classes
 from pipeline.publish.markup import Html, join, tag, text
+from pipeline.publish.privacy import REASON
 from pipeline.publish.results import Results
 
 
@@ -26,11 +28,21 @@ def marker(x: float, y: float, kind: str) -> Html:
     return join([ring, dot])
 
 
+def missing_words(rows: pd.DataFrame) -> str:
+    """Why zones are without a figure: hidden for privacy, or never known."""
+    if REASON not in rows or rows[REASON].isna().all():
+        return "no figure"
+    hidden = rows[REASON].notna()
+    known = rows["visits_per_1000"].notna() | hidden
+    return "hidden: few records" if known.all() else "hidden, or no figure"
+
+
 def legend(
     classes: Classes,
     rates: npt.NDArray[np.float64],
     outside: npt.NDArray[np.bool_],
     results: Results,
+    missing: str,
 ) -> Html:
     """Colours with their bounds and number of zones, then the marks."""
     places = classes.of(rates)
@@ -41,7 +53,7 @@ def legend(
     if (places == -1).any():
         entries.insert(0, ("zero", "no visit recorded", int((places == -1).sum())))
     if (places == -2).any():
-        entries.append(("none", "no figure", int((places == -2).sum())))
+        entries.append(("none", missing, int((places == -2).sum())))
     if outside.any():
         entries.append(("over", "outside the market", int(outside.sum())))
     items = [

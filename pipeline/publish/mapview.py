@@ -13,11 +13,12 @@ import shapely
 from pipeline.publish import mapframe
 from pipeline.publish.classes import Classes, quantile_classes
 from pipeline.publish.labels import place_labels
-from pipeline.publish.legend import class_name, legend, marker
+from pipeline.publish.legend import class_name, legend, marker, missing_words
 from pipeline.publish.mapframe import MapFrame
 from pipeline.publish.markup import Html, join, tag
 from pipeline.publish.results import Results
 from pipeline.publish.rows import rows_of
+from pipeline.publish.stretches import take_apart
 from pipeline.publish.words import number
 
 LABEL_SIZE = 25.0
@@ -159,7 +160,7 @@ def rate_map(results: Results, base: BaseMap, site_id: str, figures: pd.DataFram
         role="img",
         class_="map",
     )
-    return join([picture, legend(classes, rates, outside, results)])
+    return join([picture, legend(classes, rates, outside, results, missing_words(rows))])
 
 
 def _outside(rows: pd.DataFrame) -> npt.NDArray[np.bool_]:
@@ -200,16 +201,11 @@ def _routes(results: Results, base: BaseMap, site_id: str) -> Html | None:
 
 def _once(lines: npt.NDArray[np.object_], frame: MapFrame) -> npt.NDArray[np.object_]:
     """Lines with every stretch kept once, however many routes run over it."""
-    points, owner = shapely.get_coordinates(lines, return_index=True)
-    same = owner[1:] == owner[:-1]
-    ends = np.column_stack([points[:-1], points[1:]])[same]
-    back = (ends[:, 0] > ends[:, 2]) | ((ends[:, 0] == ends[:, 2]) & (ends[:, 1] > ends[:, 3]))
-    ends[back] = ends[back][:, [2, 3, 0, 1]]
-    stretches = np.unique(ends.round(1), axis=0).reshape(-1, 2, 2)
-    stretches = stretches[(stretches[:, 0] != stretches[:, 1]).any(axis=1)]
-    if not len(stretches):
+    ends = take_apart(lines, decimals=1).ends
+    if not len(ends):
         return np.array([], dtype=object)
-    return mapframe.simplified_lines(shapely.linestrings(stretches), frame.metres_per_px)
+    lines = np.asarray(shapely.linestrings(ends), dtype=object)
+    return mapframe.simplified_lines(lines, frame.metres_per_px)
 
 
 def _sites(results: Results, base: BaseMap, site_id: str) -> Html | None:

@@ -8,6 +8,8 @@ import numpy.typing as npt
 import pandas as pd
 import shapely
 
+from pipeline.publish.stretches import take_apart
+
 WGS84 = "EPSG:4326"
 COLUMNS = ["site_id", "zones", "visits"]
 DECIMALS = 7
@@ -40,33 +42,14 @@ def roads_used(route_lines: gpd.GeoDataFrame, zone_table: pd.DataFrame | None) -
 def _of_site(
     site_id: str, lines: gpd.GeoDataFrame, zone_table: pd.DataFrame | None
 ) -> gpd.GeoDataFrame:
-    ends, owner = _stretches(lines.geometry.to_numpy())
-    unique, place = np.unique(ends, axis=0, return_inverse=True)
-    zones = np.bincount(place, minlength=len(unique))
+    parts = take_apart(lines.geometry.to_numpy(), decimals=DECIMALS)
+    zones = np.bincount(parts.stretch, minlength=len(parts.ends)).astype(np.float64)
     visits = _visits(site_id, lines, zone_table)
-    carried = np.zeros(len(unique))
-    np.add.at(carried, place, np.nan_to_num(visits)[owner])
+    carried = np.zeros(len(parts.ends))
+    np.add.at(carried, parts.stretch, np.nan_to_num(visits)[parts.line])
     if np.isnan(visits).all():
         carried[:] = np.nan
-    return _merged(site_id, unique, zones.astype(np.float64), carried)
-
-
-def _stretches(
-    geometry: npt.NDArray[np.object_],
-) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.int64]]:
-    """Every stretch between two vertices as `x1, y1, x2, y2`, and the line that it is from.
-
-    The lesser end comes first, so that both directions of a road are one stretch.
-    """
-    points, line = shapely.get_coordinates(geometry, return_index=True)
-    points = points.round(DECIMALS)
-    inside = (line[1:] == line[:-1]) & (points[1:] != points[:-1]).any(axis=1)
-    start, end, owner = points[:-1][inside], points[1:][inside], line[:-1][inside]
-    swap = (start[:, 0] > end[:, 0]) | ((start[:, 0] == end[:, 0]) & (start[:, 1] > end[:, 1]))
-    start[swap], end[swap] = end[swap], start[swap].copy()
-    both = np.column_stack([start, end, owner])
-    once = np.unique(both, axis=0)  # a route that runs over a stretch twice counts once
-    return once[:, :4], once[:, 4].astype(np.int64)
+    return _merged(site_id, parts.ends, zones, carried)
 
 
 def _visits(
@@ -91,8 +74,8 @@ def _merged(
     change |= ~np.isclose(np.diff(visits[order]), 0, equal_nan=True) & ~np.isnan(visits[order][1:])
     rows = []
     for same in np.split(order, np.flatnonzero(change) + 1):
-        pieces = shapely.MultiLineString(list(ends[np.sort(same)].reshape(-1, 2, 2)))
-        line = shapely.line_merge(pieces)
+        pieces = np.asarray(shapely.linestrings(ends[np.sort(same)]), dtype=object)
+        line = shapely.line_merge(shapely.multilinestrings(pieces))
         traffic = (site_id, int(zones[same[0]]), float(visits[same[0]]))
         rows += [(*traffic, part) for part in shapely.get_parts(line)]
     frame = pd.DataFrame(rows, columns=[*COLUMNS, "geometry"])

@@ -57,7 +57,7 @@ def _grouped(value: float, step: float) -> str:
 def interval(low: float, high: float, value: float) -> str:
     """An interval's ends rounded alike: '1.08 million to 1.38 million'."""
     if not is_known(low, high):
-        return "no interval"
+        return "–"
     step = rounding_step(low, high, value)
     ends = stepped(low, step).split(" "), stepped(high, step).split(" ")
     if len(ends[0]) == 2 and ends[0][1:] == ends[1][1:]:
