@@ -90,20 +90,15 @@ def _search(
     parent = np.full(nodes, -1, dtype=np.int32)
     via = np.full(nodes, -1, dtype=np.int32)
     buckets, width = _buckets(cost, seed_cost, mask, width)
-    head = np.full(buckets, -1, dtype=np.int32)
-    after = np.full(nodes, -1, dtype=np.int32)
-    before = np.full(nodes, OUT, dtype=np.int32)
-    last = buckets - 1
-    waiting = 0
-    current = UNREACHED
+    after, before = np.full(nodes, -1, dtype=np.int32), np.full(nodes, OUT, dtype=np.int32)
+    head, last = np.full(buckets, -1, dtype=np.int32), buckets - 1
+    current, waiting = UNREACHED, 0
     for seed in range(len(seed_node)):
         start, value = seed_node[seed], seed_cost[seed] & mask
         if seed_cost[seed] >= 0 and value < label[start]:
-            old = (label[start] >> width) & last
-            if before[start] == OUT:
-                waiting += 1
-            else:
-                _take_out(start, old, head, after, before)
+            waiting += before[start] == OUT
+            if before[start] != OUT:
+                _take_out(start, (label[start] >> width) & last, head, after, before)
             label[start], via[start] = value, -2 - seed
             _put_in(start, (value >> width) & last, head, after, before)
             current = min(current, value >> width)
@@ -118,15 +113,15 @@ def _search(
             there, value = node[arc], label[here] + (cost[arc] & mask)
             if value >= label[there]:
                 continue
-            bucket, old = (value >> width) & last, (label[there] >> width) & last
+            old, new = (label[there] >> width) & last, (value >> width) & last
             label[there], parent[there], via[there] = value, here, arc
             if before[there] == OUT:
                 waiting += 1
-            elif bucket == old:
+            elif old == new:
                 continue
             else:
                 _take_out(there, old, head, after, before)
-            _put_in(there, bucket, head, after, before)
+            _put_in(there, new, head, after, before)
     return label, parent, via
 
 

@@ -119,16 +119,21 @@ def _graph(
         edge_unpaved_m=_flagged_m(traits.is_unpaved & ~traits.is_ferry, segments, chains),
         edge_detached_km=island_km,
         **_geometry(extract, traits, segments, chains),
-        arc_first=arcs[0],
-        arc_node=arcs[1],
-        arc_cost=arcs[2],
-        arc_edge=arcs[3],
-        in_first=arcs_in[0],
-        in_node=arcs_in[1],
-        in_cost=arcs_in[2],
-        in_edge=arcs_in[3],
+        **_named("arc", arcs),
+        **_named("in", arcs_in),
     )
     return graph, islands
+
+
+def _named(prefix: str, arcs: tuple[Int64, Int32, Int64, Int32]) -> dict[str, npt.NDArray[Any]]:
+    """The four arrays of arcs by the names that they have in the graph."""
+    first, node, cost, edge = arcs
+    return {
+        f"{prefix}_first": first,
+        f"{prefix}_node": node,
+        f"{prefix}_cost": cost,
+        f"{prefix}_edge": edge,
+    }
 
 
 def _costs(

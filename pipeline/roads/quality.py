@@ -71,15 +71,11 @@ def _whole(
     islands: int,
 ) -> list[tuple[Any, ...]]:
     """Counts over the whole extract and graph."""
-    way = segments.way
-    km = segments.length_m / 1000
-    road = ~traits.is_ferry
+    way, km, road = segments.way, segments.length_m / 1000, ~traits.is_ferry
     on_road = (traits.class_code >= 0) & road
     networks = int(graph.node_network.max()) + 1
-    outside = (graph.node_network[graph.edge_start] < 0) | (
-        graph.node_network[graph.edge_start] != graph.node_network[graph.edge_end]
-    )
-    dropped_km = float(km_of_edges(graph)[outside & ~graph.edge_is_ferry].sum())
+    dropped = ~graph.main_edges() & ~graph.edge_is_ferry
+    dropped_km = float(km_of_edges(graph)[dropped].sum())
     rows = [
         ("ways in the extract", extract.ways, "ways", "highway or ferry tag"),
         ("ways for cars", int((traits.class_code >= 0).sum()), "ways", "of a class in use"),
@@ -92,12 +88,7 @@ def _whole(
         ),
         ("ways cut", losses.cut_ways, "ways", "nodes outside the extract; the rest is used"),
         ("pieces cut out", losses.cut_places, "pieces", "between nodes that were not given"),
-        (
-            "ferries without duration",
-            losses.fallback_ferries,
-            "ways",
-            "run at roads.ferry_speed_kmh",
-        ),
+        ("ferries without duration", losses.fallback_ferries, "ways", "at roads.ferry_speed_kmh"),
         ("one-way length", _one_way_km(segments, road), "km", "without ferries"),
         ("toll length", float(km[traits.is_toll[way]].sum()), "km", "ferries included"),
         (
