@@ -87,8 +87,7 @@ def _search(
     """Empty the buckets from the lowest; a node that gets cheaper moves to a lower bucket."""
     nodes = len(first) - 1
     label = np.full(nodes, UNREACHED)
-    parent = np.full(nodes, -1, dtype=np.int32)
-    via = np.full(nodes, -1, dtype=np.int32)
+    parent, via = np.full(nodes, -1, dtype=np.int32), np.full(nodes, -1, dtype=np.int32)
     buckets, width = _buckets(cost, seed_cost, mask, width)
     after, before = np.full(nodes, -1, dtype=np.int32), np.full(nodes, OUT, dtype=np.int32)
     head, last = np.full(buckets, -1, dtype=np.int32), buckets - 1
