@@ -85,13 +85,11 @@ def _search(
     width: int,
 ) -> tuple[Int64, Int32, Int32]:
     """Empty the buckets from the lowest; a node that gets cheaper moves to a lower bucket."""
-    label = np.full(len(first) - 1, UNREACHED)
-    parent, via = np.full(len(label), -1, dtype=np.int32), np.full(len(label), -1, dtype=np.int32)
+    nodes = len(first) - 1
+    label = np.full(nodes, UNREACHED)
+    parent, via = np.full(nodes, -1, dtype=np.int32), np.full(nodes, -1, dtype=np.int32)
+    after, before = np.full(nodes, -1, dtype=np.int32), np.full(nodes, OUT, dtype=np.int32)
     buckets, width = _buckets(cost, seed_cost, mask, width)
-    after, before = (
-        np.full(len(label), -1, dtype=np.int32),
-        np.full(len(label), OUT, dtype=np.int32),
-    )
     head, last = np.full(buckets, -1, dtype=np.int32), buckets - 1
     current, waiting = UNREACHED, 0
     for seed in range(len(seed_node)):
@@ -106,9 +104,8 @@ def _search(
     while waiting > 0:
         while head[current & last] < 0:
             current += 1
-        here = head[current & last]
+        here, waiting = head[current & last], waiting - 1
         _take_out(here, current & last, head, after, before)
-        waiting -= 1
         for arc in range(first[here], first[here + 1]):
             there, value = node[arc], label[here] + (cost[arc] & mask)
             if value >= label[there]:
