@@ -81,7 +81,7 @@ def study(**demand_keys: object) -> Study:
             "covariates": ["household_income", "substitute_cost"],
             **demand_keys,
         },
-        "surplus": {"draws": 1000},
+        "surplus": {"draws": 1000, "fees": [5.0]},
     }
     return study_from(raw, base=Path(), source="world")
 
@@ -178,6 +178,7 @@ def prices(count: int = 1) -> pd.DataFrame:
     return costs
 
 
+@cache
 def expected_visits(truth: Truth = TRUTH) -> FloatArray:
     """Person-visits a year to `fen` by zone."""
     price = prices().pivot_table(index="zone_id", columns="site_id", values="travel_cost")
@@ -192,25 +193,30 @@ def expected_visits(truth: Truth = TRUTH) -> FloatArray:
 
 
 def draw_origins(seed: int, truth: Truth = TRUTH, *, site_id: str = "fen000") -> pd.DataFrame:
-    """Draw the records of one year: the `origins` table, every record with its zone."""
+    """Draw the visits of one year: the `origins` table.
+
+    One record holds the trips of all parties of one size from one zone.
+    """
     rng = np.random.default_rng(seed)
     parties = expected_visits(truth) / MEAN_PARTY
     scatter = rng.gamma(1 / truth.alpha, truth.alpha, len(parties)) if truth.alpha else 1.0
-    zone_ids = np.repeat(zones()["zone_id"].to_numpy(), rng.poisson(parties * scatter))
-    codes = pd.Series(zone_ids, dtype="str").str.replace("z", "00")
-    return pd.DataFrame(
+    trips = rng.multinomial(rng.poisson(parties * scatter), PARTY_SHARES)
+    sizes = len(PARTY_SIZES)
+    records = pd.DataFrame(
         {
-            "record_id": [f"{site_id}-{number}" for number in range(len(zone_ids))],
-            "postal_code_raw": codes,
-            "postal_code": codes,
-            "zone_id": pd.Series(zone_ids, dtype="str"),
-            "site_id": site_id,
-            "trips": 1.0,
-            "party_size": rng.choice(PARTY_SIZES, len(zone_ids), p=PARTY_SHARES).astype(float),
-            "weight": 1.0,
-            "origin_status": "matched",
-            "origin_note": pd.Series(np.nan, index=codes.index).astype("str"),
+            "zone_id": zones()["zone_id"].repeat(sizes).to_numpy(),
+            "postal_code": zones()["postal_code"].repeat(sizes).to_numpy(),
+            "trips": trips.ravel().astype(float),
+            "party_size": np.tile(PARTY_SIZES, len(trips)).astype(float),
         }
+    )
+    return records.assign(
+        record_id=[f"{site_id}-{number}" for number in range(len(records))],
+        postal_code_raw=records["postal_code"],
+        site_id=site_id,
+        weight=1.0,
+        origin_status="matched",
+        origin_note=pd.Series(np.nan, index=records.index).astype("str"),
     )
 
 

@@ -142,6 +142,8 @@ def _places(extract: Path) -> pd.DataFrame:
     rows = []
     nodes = osmium.FileProcessor(str(extract), osmium.osm.NODE)
     for node in nodes.with_filter(osmium.filter.KeyFilter("population")):
+        if not isinstance(node, osmium.osm.Node):
+            continue
         people = node.tags["population"].replace(",", "")
         is_inhabited = node.tags.get("place") not in (None, "country", "region", "island")
         if is_inhabited and people.isdigit():

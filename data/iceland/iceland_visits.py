@@ -35,7 +35,7 @@ def draw_visits(costs: pd.DataFrame, zones: pd.DataFrame) -> pd.DataFrame:
     `record_id, site_id, postal_code, party_size`.
     """
     rng = np.random.default_rng(SEED)
-    prices = costs.pivot(index="zone_id", columns="site_id", values="travel_cost").round(0)
+    prices = costs.pivot_table(index="zone_id", columns="site_id", values="travel_cost").round(0)
     people = zones.set_index("zone_id")
     substitute = prices.drop(columns=list(ANNUAL_VISITS)).min(axis="columns")
     tables = []
