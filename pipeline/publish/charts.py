@@ -85,8 +85,8 @@ def _top(rate: Numbers, curve: Curve | None) -> float:
     return max(shown, min(float(np.nan_to_num(curve.high).max()), 1.5 * shown))
 
 
-def _headroom(top: float) -> float:
-    step = round_up(max(top, 1e-9) / 5)
+def _headroom(top: float, steps: int = 5) -> float:
+    step = round_up(max(top, 1e-9) / steps)
     return float(np.ceil(top / step - 1e-9) * step)
 
 
@@ -127,7 +127,7 @@ def _fee_chart(schedule: pd.DataFrame, column: str, words: str, unit: str, curre
     top = float(max(rows[column].max(), high.max() if has_band else 0.0, 1e-9))
     divisor, size = scaled_unit(top)
     x = Axis(0.0, max(float(rows["fee"].max()), 1e-9), 52.0, 306.0)
-    y = Axis(0.0, _headroom(top / divisor), 186.0, 40.0)
+    y = Axis(0.0, _headroom(top / divisor, 4), 186.0, 40.0)
     across = x.at(rows["fee"].to_numpy())
     unit_words = " ".join(part for part in (unit, size) if part)
     head = f"{words}, {unit_words}" if unit_words else words

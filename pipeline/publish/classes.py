@@ -43,6 +43,8 @@ def quantile_classes(values: npt.NDArray[np.float64]) -> Classes:
         return Classes(())
     inner = np.quantile(above, np.linspace(0, 1, MOST_CLASSES + 1)[1:-1])
     low, high = _down(above[0]), _up(above[-1])
+    if low == high:
+        high = _clean(high / _unit(high) + 1, _unit(high))
     bounds = {low, high} | {_near(cut) for cut in inner}
     return Classes(tuple(sorted(bound for bound in bounds if low <= bound <= high)))
 

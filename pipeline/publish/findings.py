@@ -35,7 +35,7 @@ def fee_figure(results: Results, headline: Headline) -> Html:
             _cell(row.visits, row.visits_ci_low, row.visits_ci_high),
             _cell(row.revenue, row.revenue_ci_low, row.revenue_ci_high),
             _cell(row.consumer_surplus, row.consumer_surplus_ci_low, row.consumer_surplus_ci_high),
-            number(row.surplus_lost),
+            "0" if row.surplus_lost == 0 else figure(row.surplus_lost),
         )
         for row in rows_of(schedule.sort_values("fee"))
     ]
@@ -60,9 +60,9 @@ def _cell(value: float, low: float, high: float) -> object:
     """A figure with its interval below it."""
     if pd.isna(value):
         return "–"
-    if pd.isna(low) or pd.isna(high) or high <= low:
-        return figure(value)
-    return join([figure(value, low, high), tag("small", f"({interval(low, high, value)})")])
+    ends = interval(low, high, value)
+    shown = figure(value, low, high)
+    return shown if ends == "–" else join([shown, tag("small", f"({ends})")])
 
 
 def models_tried(results: Results, headline: Headline) -> Html:
@@ -91,7 +91,6 @@ def _fit_table(fit: pd.DataFrame) -> Html:
             number(row.r_squared),
             "yes" if row.converged else "no",
             row.errors,
-            "" if pd.isna(row.note) or row.chosen else row.note,
         )
         for row in rows_of(fit)
     ]
@@ -107,9 +106,14 @@ def _fit_table(fit: pd.DataFrame) -> Html:
         "R²",
         "Converged",
         "Errors",
-        "Remark",
     )
-    return table(head, rows, caption="How the models fit", numbers=range(2, 9))
+    remarks = [
+        tag("li", tag("b", model_words(str(row.model)), ": "), row.note)
+        for row in rows_of(fit)
+        if not (row.chosen or pd.isna(row.note))
+    ]
+    grid = table(head, rows, caption="How the models fit", numbers=range(2, 9))
+    return join([grid, tag("ul", *remarks, class_="care") if remarks else None])
 
 
 def _estimates(results: Results, fit: pd.DataFrame) -> Html:

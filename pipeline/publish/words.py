@@ -13,6 +13,8 @@ MODEL_WORDS = {
     "linear": "linear least squares",
 }
 UNKNOWN = "not known"
+NO_WIDTH = 1e-6
+"""An interval narrower than this share of its value is a figure taken as known."""
 BIG = ((1e12, "trillion"), (1e9, "billion"), (1e6, "million"))
 
 
@@ -31,7 +33,7 @@ def rounding_step(low: float, high: float, value: float) -> float:
 
     Without an interval, three significant digits of the value itself.
     """
-    if is_known(low, high) and high > low:
+    if is_known(low, high) and high - low > NO_WIDTH * abs(value):
         return 10.0 ** (math.floor(math.log10(high - low)) - 1)
     if is_known(value) and value != 0:
         return 10.0 ** (math.floor(math.log10(abs(value))) - 2)
@@ -56,7 +58,7 @@ def _grouped(value: float, step: float) -> str:
 
 def interval(low: float, high: float, value: float) -> str:
     """An interval's ends rounded alike: '1.08 million to 1.38 million'."""
-    if not is_known(low, high):
+    if not is_known(low, high) or high - low <= NO_WIDTH * abs(value):
         return "–"
     step = rounding_step(low, high, value)
     ends = stepped(low, step).split(" "), stepped(high, step).split(" ")

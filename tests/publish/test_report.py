@@ -12,10 +12,14 @@ import geopandas as gpd
 import numpy as np
 import pandas as pd
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 from pipeline.errors import PublishError
 from pipeline.publish import Publication, summarise_publish
+from pipeline.publish.classes import quantile_classes
 from pipeline.publish.curve import fitted_curves
+from pipeline.publish.words import figure, interval
 from tests.publish.conftest import (
     MERE,
     SITE,
@@ -238,3 +242,36 @@ def test_summary_names_the_value(publication: Publication) -> None:
         "(95 % interval 1,180 to 1,840)"
     )
     assert publication.headlines[0].site_id == SITE
+
+
+@pytest.mark.parametrize(
+    ("value", "low", "high", "shown", "ends"),
+    [
+        (1_413_441.0, 1_249_246.0, 1_625_247.0, "1.41 million", "1.25 to 1.63 million"),
+        (11.53, 10.19, 13.26, "11.5", "10.2 to 13.3"),
+        (980_000.0, 930_400.0, 1_300_000.0, "980,000", "930,000 to 1.30 million"),
+        (-1.6135, -1.8256, -1.4032, "−1.61", "−1.83 to −1.40"),
+        (122_535.9999, 122_535.9998, 122_536.0001, "123,000", "–"),
+        (5.0, np.nan, np.nan, "5.00", "–"),
+        (np.nan, np.nan, np.nan, "not known", "–"),
+    ],
+)
+def test_figures_are_rounded_to_two_digits_of_their_interval(
+    value: float, low: float, high: float, shown: str, ends: str
+) -> None:
+    assert figure(value, low, high) == shown
+    assert interval(low, high, value) == ends
+
+
+@given(st.lists(st.floats(1e-6, 1e9), min_size=1, max_size=40))
+@settings(derandomize=True, max_examples=200)
+def test_map_classes_cover_the_data(values: list[float]) -> None:
+    """Every figure above zero lies between the bounds of its class, ends included."""
+    rates = np.array(values)
+    classes = quantile_classes(rates)
+    place = classes.of(rates)
+    bounds = np.array(classes.bounds)
+    assert 1 <= len(classes) <= 5
+    assert (bounds[place] <= rates).all()
+    assert (rates <= bounds[place + 1]).all()
+    assert list(classes.of(np.array([0.0, np.nan]))) == [-1, -2]
