@@ -6,6 +6,7 @@ STUDY_FILE ?= config/$(STUDY).toml
 PYTHON ?= python3
 VENV := .venv
 RUN := $(VENV)/bin/python
+export PYTHONPATH := $(CURDIR)
 STAGES := geocode roads route cost join demand surplus publish
 
 # What pyproject.toml says is needed, in the versions of config/constraints.txt.
