@@ -14,6 +14,7 @@ from pathlib import Path
 from typing import Any
 
 from pipeline import inputs
+from pipeline.cost_settings import CostsSettings
 from pipeline.costs import cost, summarise_cost
 from pipeline.demand import demand, summarise_demand
 from pipeline.finished import join, summarise_join
@@ -28,16 +29,15 @@ from pipeline.roads import (
     summarise_roads,
 )
 from pipeline.routes import route, summarise_route
+from pipeline.sections import Section
 from pipeline.settings import (
     SECTIONS,
     ComputeSettings,
-    CostsSettings,
     DemandSettings,
     MarketSettings,
     RoadsSettings,
     RoutesSettings,
     ScenarioSettings,
-    Section,
     SitesSettings,
     SurplusSettings,
     VisitsSettings,

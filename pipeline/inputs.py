@@ -16,7 +16,8 @@ import pandas as pd
 from pipeline.centroids import locate
 from pipeline.errors import InputError, StudyError, TableError
 from pipeline.schema import Table
-from pipeline.settings import FileSection, Section
+from pipeline.sections import Section
+from pipeline.settings import FileSection
 from pipeline.study import Study
 from pipeline.tables import Crosswalk, Sites, VisitRecords, Zones
 from pipeline.userfiles import PARQUET, TEXT, UserTable, first_true, read_user_table

@@ -7,61 +7,12 @@ declarations. Sections are frozen and reject keys that they do not know.
 
 from __future__ import annotations
 
-import re
-from pathlib import Path
-from typing import Annotated, Any, ClassVar, Literal, Self
+from typing import Annotated, ClassVar, Literal, Self
 
-from pydantic import (
-    AfterValidator,
-    BaseModel,
-    BeforeValidator,
-    ConfigDict,
-    Field,
-    ValidationInfo,
-    model_validator,
-)
+from pydantic import Field, model_validator
 
-
-def setting(
-    meaning: str, default: Any = ..., *, unit: str = "", usual: str = "", **bounds: Any
-) -> Any:
-    """Declare a key: what it means, its unit, a usual value, its bounds.
-
-    A key with a `usual` value is an assumption: it moves the answer, and the report lists it.
-    """
-    extra: dict[str, Any] = {"unit": unit, "usual": usual}
-    return Field(default, description=meaning, json_schema_extra=extra, **bounds)
-
-
-def _resolve(value: object, info: ValidationInfo) -> object:
-    """Paths in a study file are relative to the study file."""
-    if isinstance(value, str | Path):
-        return (Path((info.context or {}).get("base", ".")) / value).resolve()
-    return value
-
-
-InputPath = Annotated[Path, BeforeValidator(_resolve), "input"]
-OutputPath = Annotated[Path, BeforeValidator(_resolve), "output"]
-Share = Annotated[float, Field(ge=0, le=1)]
-Positive = Annotated[float, Field(gt=0)]
-
-
-def _regex(value: str) -> str:
-    try:
-        re.compile(value)
-    except re.error as error:
-        raise ValueError(f"not a regular expression ({error})") from None
-    return value
-
-
-Regex = Annotated[str, AfterValidator(_regex)]
-
-
-class Section(BaseModel):
-    """Base of all sections: strict and frozen."""
-
-    model_config = ConfigDict(frozen=True, extra="forbid", strict=True, validate_default=True)
-    section_name: ClassVar[str] = ""
+from pipeline.cost_settings import CostsSettings
+from pipeline.sections import InputPath, OutputPath, Positive, Regex, Section, Share, setting
 
 
 class StudySettings(Section):
@@ -312,74 +263,6 @@ class RoutesSettings(Section):
         20.0,
         unit="m",
         ge=0,
-    )
-
-
-class CostsSettings(Section):
-    """What a trip costs."""
-
-    section_name: ClassVar[str] = "costs"
-    vehicle_cost_per_km: float = setting(
-        "Cost of driving that grows with distance: fuel, wear, tyres. No fixed yearly cost.",
-        unit="currency/km",
-        usual="0.10 to 0.45 in EUR or USD; common practice, no source",
-        ge=0,
-    )
-    toll_per_km: float = setting(
-        "Toll per vehicle and km of toll road.",
-        0.0,
-        unit="currency/km",
-        usual="0.05 to 0.15 in EUR; common practice, no source",
-        ge=0,
-    )
-    ferry_fare_per_vehicle: float = setting(
-        "Ferry fare of the vehicle (with its driver where the operator counts so), one way.",
-        0.0,
-        unit="currency",
-        usual="the operator's tariff",
-        ge=0,
-    )
-    ferry_fare_per_person: float = setting(
-        "Ferry fare of each person, one way.",
-        0.0,
-        unit="currency",
-        usual="the operator's tariff",
-        ge=0,
-    )
-    other_cost_per_person: float = setting(
-        "Other spending that the trip itself makes necessary, per person and trip.",
-        0.0,
-        unit="currency",
-        usual="0; food and gear are no part of the price of the trip",
-        ge=0,
-    )
-    party_size: Literal["records"] | Positive = setting(
-        "People who share the vehicle: a number, or 'records': the mean per trip of the site's "
-        "visit records (of all records for substitutes).",
-        "records",
-        unit="people",
-        usual="2 to 3.5",
-    )
-    wage_fraction: float = setting(
-        "Share of the hourly wage that an hour of travel costs.",
-        unit="share",
-        usual="0.25 to 0.5; a third is common practice",
-        ge=0,
-        le=2,
-    )
-    hours_per_year: float = setting(
-        "Working hours a year that turn household income into an hourly wage.",
-        2080.0,
-        unit="h/year",
-        usual="1,700 to 2,080",
-        gt=0,
-    )
-    fallback_household_income: float | None = setting(
-        "Taken for zones whose income is missing; without it such a zone is an error.",
-        None,
-        unit="currency/year",
-        usual="the region's median",
-        gt=0,
     )
 
 

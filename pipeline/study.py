@@ -17,17 +17,18 @@ from typing import Any, cast
 
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
+from pipeline.cost_settings import CostsSettings
 from pipeline.errors import StudyError
+from pipeline.presets import load_preset
+from pipeline.sections import Section, inner_section
 from pipeline.settings import (
     ComputeSettings,
-    CostsSettings,
     DemandSettings,
     MarketSettings,
     PublishSettings,
     RoadsSettings,
     RoutesSettings,
     ScenarioSettings,
-    Section,
     SitesSettings,
     StudySettings,
     SurplusSettings,
@@ -114,6 +115,8 @@ def study_from(raw: dict[str, Any], *, base: Path, source: str) -> Study:
         raise StudyError(_explain(error, source)) from None
     if study.costs is None and not (study.market.zone_table or study.market.trip_table):
         raise StudyError(f"{source}: section [costs] is needed and missing; add it.")
+    if study.costs is not None:
+        _check_prices(study, source)
     for file in study.input_files():
         if not file.is_file():
             raise StudyError(
@@ -121,6 +124,24 @@ def study_from(raw: dict[str, Any], *, base: Path, source: str) -> Study:
                 "Correct the path (it is relative to the study file) or put the file there."
             )
     return study
+
+
+def _check_prices(study: Study, source: str) -> None:
+    """A preset is of the study's currency, and every amount can be brought to the price year."""
+    costs, about = study.costs, study.study
+    if costs.preset is not None:
+        preset = load_preset(costs.preset)
+        if preset.currency != about.currency:
+            raise StudyError(
+                f"{source}: [costs] preset = {costs.preset!r} is in {preset.currency} "
+                f"({preset.country}), the study in {about.currency}. Take a preset of your own "
+                "country and currency, or set the figures in the study."
+            )
+    for key in costs.price_years:
+        try:
+            costs.price_factor(key, about.price_year)
+        except ValueError as error:
+            raise StudyError(f"{source}: [costs.price_years] {error}.") from None
 
 
 def _no_study(path: Path) -> str:
@@ -179,8 +200,11 @@ def _explain(error: ValidationError, source: str) -> str:
         return f"{source}: {_unknown_key(where)}{more}"
     if first["type"] == "missing":
         return f"{source}: {_key(where)} is needed and missing; add it.{more}"
+    said = first["msg"].removeprefix("Value error, ")
+    if first["type"] == "value_error":
+        return f"{source}: {_key(where)}: {said}. Correct it.{more}"
     return (
-        f"{source}: {_key(where)} = {first['input']!r} is not valid: {first['msg']}. "
+        f"{source}: {_key(where)} = {first['input']!r} is not valid: {said}. "
         f"Correct it; 'make new' writes a study file that explains every key.{more}"
     )
 
@@ -201,8 +225,13 @@ def _unknown_key(where: list[str]) -> str:
 
 def _valid_keys(where: list[str]) -> list[str]:
     model: Any = Study
-    for part in where:
+    parts = iter(where)
+    for part in parts:
         if model is Study and part == "scenarios":
             return sorted(ScenarioSettings.model_fields) or ["(none yet)"]
-        model = model.model_fields[part].annotation
+        field = model.model_fields[part]
+        inner = inner_section(field)
+        if inner is not None:
+            next(parts, None)  # the name, or the place in the list
+        model = inner or field.annotation
     return list(model.model_fields)

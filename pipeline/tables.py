@@ -223,26 +223,40 @@ class Costs(Table):
 
     zone_id: Series[str] = column("zone of origin")
     site_id: Series[str] = column("site or substitute")
-    round_trip_km: Series[float] = column("there and back", unit="km", ge=0, nullable=True)
-    round_trip_hours: Series[float] = column("there and back", unit="h", ge=0, nullable=True)
+    round_trip_km: Series[float] = column("there and back by road", unit="km", ge=0, nullable=True)
+    round_trip_hours: Series[float] = column(
+        "there and back by road", unit="h", ge=0, nullable=True
+    )
     driven_km: Series[float] = column(
         "of round_trip_km, on the vehicle's own wheels (not by ferry)",
         unit="km",
         ge=0,
         nullable=True,
     )
-    party_size: Series[float] = column("people who share the vehicle's cost", unit="people", gt=0)
-    time_value_per_hour: Series[float] = column(
-        "what an hour of travel costs a person", unit="currency/h", ge=0, nullable=True
+    party_size: Series[float] = column("people who travel together", unit="people", gt=0)
+    adults: Series[float] = column("adults among them", unit="people", gt=0)
+    bearers: Series[float] = column("people who share what the vehicle costs", unit="people", gt=0)
+    vehicle_cost_per_km: Series[float] = column(
+        "what a km of driving costs", unit="currency/km", ge=0
     )
+    hourly_wage: Series[float] = column("wage of an adult", unit="currency/h", ge=0, nullable=True)
     vehicle_cost: Series[float] = column(
         "vehicle, per person and trip", unit="currency", ge=0, nullable=True
+    )
+    parking_cost: Series[float] = column(
+        "parking, per person and trip", unit="currency", ge=0, nullable=True
     )
     toll_cost: Series[float] = column(
         "tolls, per person and trip", unit="currency", ge=0, nullable=True
     )
     ferry_cost: Series[float] = column(
         "ferry fares, per person and trip", unit="currency", ge=0, nullable=True
+    )
+    fare_cost: Series[float] = column(
+        "fares of other modes (train, coach, aeroplane), expected, per person and trip",
+        unit="currency",
+        ge=0,
+        nullable=True,
     )
     time_cost: Series[float] = column(
         "travel time, per person and trip", unit="currency", ge=0, nullable=True
@@ -262,11 +276,26 @@ class Costs(Table):
     vehicle_cost_per_party: Series[float] = column(
         "vehicle, per party and trip", unit="currency", ge=0, nullable=True
     )
+    parking_cost_per_party: Series[float] = column(
+        "parking, per party and trip", unit="currency", ge=0, nullable=True
+    )
     toll_cost_per_party: Series[float] = column(
         "tolls, per party and trip", unit="currency", ge=0, nullable=True
     )
     ferry_cost_per_party: Series[float] = column(
         "ferry fares, per party and trip", unit="currency", ge=0, nullable=True
+    )
+    travel_hours: Series[float] = column(
+        "there and back by the mix of modes, with the time on foot and on the site that is charged",
+        unit="h",
+        ge=0,
+        nullable=True,
+    )
+    road_share: Series[float] = column(
+        "share of the visitors who come by road", unit="share", ge=0, le=1, nullable=True
+    )
+    time_value_per_hour: Series[float] = column(
+        "what an hour on the road costs an adult", unit="currency/h", ge=0, nullable=True
     )
     cost_status: Series[str] = column("'priced', or the route_status that left no price")
 
@@ -419,7 +448,9 @@ class Surplus(Table):
     std_error: Series[float] = column("its standard error", ge=0, nullable=True)
     ci_low: Series[float] = column("lower end of the confidence interval", nullable=True)
     ci_high: Series[float] = column("upper end of the confidence interval", nullable=True)
-    method: Series[str] = column("how the interval was made: delta, simulated; observed: a count without one")
+    method: Series[str] = column(
+        "how the interval was made: delta, simulated; observed: a count without one"
+    )
     unit: Series[str] = column("unit of the figure")
     chosen: Series[bool] = column("whether it comes from the model that was chosen")
     note: Series[str] = column("what to know before using it", nullable=True)

@@ -6,14 +6,15 @@ import json
 import textwrap
 from collections.abc import Iterator
 from pathlib import Path
-from typing import Any
+from typing import Any, get_origin
 
 from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 from pydantic_core import PydanticUndefined
 
 from pipeline.errors import StudyError
-from pipeline.settings import SECTIONS, Section
+from pipeline.sections import Section, inner_section
+from pipeline.settings import SECTIONS
 from pipeline.stamps import CONFIG
 from pipeline.tables import TABLES
 
@@ -117,6 +118,26 @@ def _section_lines(section: type[BaseModel], title: str, filled: dict[str, Any])
     for key, info in nested:
         assert isinstance(info.annotation, type)
         yield from _section_lines(info.annotation, f"{title}.{key}", filled)
+    for key, info in section.model_fields.items():
+        inner = inner_section(info)
+        if inner is not None:
+            yield from _sample_lines(inner, _sample_title(title, key, info), key)
+
+
+def _sample_title(title: str, key: str, info: FieldInfo) -> str:
+    is_list = get_origin(info.annotation) is tuple
+    return f"[[{title}.{key}]]" if is_list else f"[{title}.{key}.<name>]"
+
+
+def _sample_lines(section: type[BaseModel], title: str, key: str) -> Iterator[str]:
+    """A section of which a study may have many, as comments: none is there by default."""
+    yield f"# Any number of these ({key}). {_summary(section)}"
+    yield f"# {title}"
+    for name, info in section.model_fields.items():
+        yield from (f"#   {line.removeprefix('# ')}" for line in _comment(info))
+        given = " (needed)" if info.is_required() else f"; default {_toml(_default(info))}"
+        yield f"#   {name} = ...{given if _default(info) is not None or given[1] == '(' else ''}"
+    yield ""
 
 
 def _reference_rows(section: type[BaseModel], prefix: str) -> Iterator[str]:
@@ -125,9 +146,12 @@ def _reference_rows(section: type[BaseModel], prefix: str) -> Iterator[str]:
             assert isinstance(info.annotation, type)
             yield from _reference_rows(info.annotation, f"{prefix}{key}.")
             continue
+        inner = inner_section(info)
         default = _reference_default(info)
         unit, usual = _extra(info, "unit"), _extra(info, "usual")
         yield f"| `{prefix}{key}` | {default} | {unit} | {usual} | {info.description} |"
+        if inner is not None:
+            yield from _reference_rows(inner, f"{prefix}{key}.<name>.")
 
 
 def _reference_default(info: FieldInfo) -> str:

@@ -8,8 +8,9 @@ from typing import Any
 
 import pytest
 
+from pipeline.cost_settings import CostsSettings
 from pipeline.errors import StudyError
-from pipeline.settings import SECTIONS, CostsSettings, ZonesSettings
+from pipeline.settings import SECTIONS, ZonesSettings
 from pipeline.study import Study, load_study, study_from
 from pipeline.template import (
     _is_section,

@@ -8,6 +8,7 @@ from pathlib import Path
 from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 
+from pipeline.presets import load_preset
 from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Results
 
@@ -26,9 +27,37 @@ def assumption_rows(results: Results) -> list[tuple[object, ...]]:
             about = extra if isinstance(extra, dict) else {}
             unit = str(about.get("unit", "")).replace("currency", results.currency)
             what = join([_with_code(field.description or ""), " ", tag("code", key, class_="key")])
-            who = tag("b", "study") if _is_set(key, given) else "default"
+            who = tag("b", "study") if _is_set(key, given) else _preset_words(results, key)
             rows.append((what, _shown(value), unit, about.get("usual", ""), who))
     return rows
+
+
+def _preset_words(results: Results, key: str) -> object:
+    """The preset and the source of its figure; 'default' where no preset gave it."""
+    costs = results.study.costs
+    section, _, name = key.partition(".")
+    if section != "costs" or costs is None or costs.preset is None:
+        return "default"
+    preset = load_preset(costs.preset)
+    source = preset.source(name)
+    if not source:
+        return "default"
+    label = f"preset {preset.name} ({preset.country}, prices of {preset.year}): "
+    return join([tag("b", label), source])
+
+
+def _preset_caution(results: Results) -> Html | None:
+    """A preset's figures age: say which year they are of."""
+    costs = results.study.costs
+    if costs is None or costs.preset is None:
+        return None
+    preset = load_preset(costs.preset)
+    return tag(
+        "p",
+        f"Figures of the preset {preset.name} are of {preset.country} in {preset.year}; the study "
+        f"is in prices of {results.study.study.price_year}. Check every one of them against its "
+        "source and the year before you rely on it.",
+    )
 
 
 def _assumptions(section: BaseModel, prefix: str) -> Iterator[tuple[str, FieldInfo, object]]:
@@ -56,6 +85,8 @@ def _shown(value: object) -> object:
     """A setting's value as people write it."""
     if value is None or value in ((), {}, ""):
         return "none"
+    if isinstance(value, BaseModel):
+        return _shown({name: item for name, item in value if item not in (None, {}, 0.0)})
     if isinstance(value, bool):
         return "yes" if value else "no"
     if isinstance(value, dict):
@@ -70,9 +101,10 @@ def _shown(value: object) -> object:
 def assumptions_table(results: Results) -> Html:
     """The table of assumptions."""
     head = ("What it is", "Value", "Unit", "Usual value", "Set by")
-    return table(
+    rows = table(
         head,
         assumption_rows(results),
         caption="Settings that move the answer",
         class_="prose",
     )
+    return join([_preset_caution(results), rows])

@@ -1,0 +1,48 @@
+"""Shares of the modes by distance: the cost of a trip that is to be expected.
+
+Near visitors come by road; far ones may fly or take the train. The study gives the shares by
+band of distance, and the cost of a row is the sum over the modes of share × cost.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+import pandas as pd
+
+from pipeline.cost_settings import ROAD, CostsSettings
+from pipeline.costs.figures import Figures
+
+
+def mode_shares(one_way_km: pd.Series[float], settings: CostsSettings) -> pd.DataFrame:
+    """Share of every mode in every row, by the band that its distance lies in.
+
+    A band holds distances up to and with its `up_to_km`. Without bands all go by road.
+    """
+    names = (ROAD, *settings.modes)
+    if not settings.mode_bands:
+        return pd.DataFrame({name: float(name == ROAD) for name in names}, index=one_way_km.index)
+    ends = [np.inf if band.up_to_km is None else band.up_to_km for band in settings.mode_bands]
+    place = np.searchsorted(ends, one_way_km.fillna(0.0).to_numpy(), side="left")
+    table = np.array([[band.shares.get(n, 0.0) for n in names] for band in settings.mode_bands])
+    return pd.DataFrame(table[place], columns=list(names), index=one_way_km.index)
+
+
+def expected_fares(
+    one_way_km: pd.Series[float], shares: pd.DataFrame, figures: Figures
+) -> pd.Series[float]:
+    """Expected fares of a person, there and back: share × fare, over the modes that have one."""
+    total = pd.Series(0.0, index=one_way_km.index)
+    for name, mode in figures.settings.modes.items():
+        fare = 2 * (mode.fare_per_person + mode.fare_per_km * one_way_km)
+        total = total + shares[name] * fare * figures.factor("modes")
+    return total
+
+
+def expected_hours(
+    one_way_km: pd.Series[float], shares: pd.DataFrame, settings: CostsSettings
+) -> pd.Series[float]:
+    """Expected hours of a person in the modes other than the road, there and back."""
+    total = pd.Series(0.0, index=one_way_km.index)
+    for name, mode in settings.modes.items():
+        total = total + shares[name] * 2 * (one_way_km / mode.speed_kmh + mode.extra_min / 60)
+    return total

@@ -1,0 +1,77 @@
+"""Round trips from routes: kilometres and hours, by what they are spent on.
+
+A round trip is the way there and the way back. Tolls and ferries are known of the way there and
+taken to be the same on the way back. Kilometres on a ferry cost the fare, not the driving;
+hours on it count as travel time.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+import pandas as pd
+
+from pipeline.cost_settings import CostsSettings
+from pipeline.errors import CostError
+from pipeline.tables import REACHED_STATUSES
+
+
+def round_trips(routes: pd.DataFrame, settings: CostsSettings) -> pd.DataFrame:
+    """Round trip of every row that is reached; the others are missing.
+
+    Where a route home is not known, it is taken to be as long as the way there; the shortest
+    route is known of the way there only.
+
+    Returns
+    -------
+    `one_way_km, round_trip_km, round_trip_hours, driven_km, toll_km, ferries, wheel_hours,
+    ferry_hours`, all but the first there and back (`ferries`: 2 where the way there uses a
+    ferry, however often, otherwise 0).
+
+    Raises
+    ------
+    CostError
+        A route that was found has no distance or no time.
+    """
+    table = routes.reset_index(drop=True)
+    reached = table["route_status"].isin(REACHED_STATUSES)
+    there_km, home_km = _distances(table, settings)
+    there_min = table["drive_time_min"]
+    _refuse_gaps(table, reached & (there_km.isna() | there_min.isna()))
+    home_min = table["return_drive_time_min"].fillna(there_min)
+    ferry_km = 2 * table["ferry_km"].fillna(0.0)
+    ferry_hours = 2 * table["ferry_min"].fillna(0.0) / 60
+    driven_km = (there_km + home_km - ferry_km).clip(lower=0) * settings.distance_factor
+    wheel_hours = ((there_min + home_min) / 60 - ferry_hours).clip(lower=0) * settings.time_factor
+    trips = pd.DataFrame(
+        {
+            "one_way_km": (driven_km + ferry_km) / 2,
+            "round_trip_km": driven_km + ferry_km,
+            "round_trip_hours": wheel_hours + ferry_hours,
+            "driven_km": driven_km,
+            "toll_km": 2 * table["toll_km"].fillna(0.0) * settings.distance_factor,
+            "ferries": np.where(ferry_km > 0, 2.0, 0.0),
+            "wheel_hours": wheel_hours,
+            "ferry_hours": ferry_hours,
+        }
+    )
+    return trips.where(reached)
+
+
+def _distances(
+    table: pd.DataFrame, settings: CostsSettings
+) -> tuple[pd.Series[float], pd.Series[float]]:
+    """Kilometres there and home, along the route that the study pays for."""
+    if settings.distance_along == "shortest":
+        return table["shortest_distance_km"], table["shortest_distance_km"]
+    there = table["distance_km"]
+    return there, table["return_distance_km"].fillna(there)
+
+
+def _refuse_gaps(table: pd.DataFrame, lacking: pd.Series[bool]) -> None:
+    if lacking.any():
+        first = table[lacking].iloc[0]
+        raise CostError(
+            f"{int(lacking.sum())} routes are marked {first['route_status']!r} but have no "
+            f"distance or time; first: zone {first['zone_id']!r} to site {first['site_id']!r}. "
+            "Complete the routes table, or mark them 'no_path'."
+        )
