@@ -2,7 +2,8 @@
 
 The way of the data, one module per step:
 
-``osm``       reads OSM files into the internal form (``extract``): ways over located nodes
+``formats``   reads files of any format into the internal form (``extract``): ways over
+              located nodes; ``osm`` reads OSM files, ``merge`` makes one extract of several
 ``rules``     what each way allows, by config/roads.toml; ``speeds`` reads tagged values
 ``segments``  stretches between neighbouring nodes, with geodesic lengths and times
 ``contract``  chains of stretches between junctions become edges
@@ -13,7 +14,7 @@ The way of the data, one module per step:
 
 from pipeline.roads.build import build_roads, summarise_roads
 from pipeline.roads.extract import RoadExtract
+from pipeline.roads.formats import read_extract
 from pipeline.roads.graph import RoadGraph
-from pipeline.roads.osm import read_extract
 
 __all__ = ["RoadExtract", "RoadGraph", "build_roads", "read_extract", "summarise_roads"]
