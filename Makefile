@@ -20,13 +20,13 @@ needs = $(RUN) -c 'import functools, sys, tomllib; \
 .PHONY: all new test check bench validate iceland docs clean help $(STAGES)
 
 all: $(VENV)/ready  ## the whole flow for STUDY, ending with the report
-	@$(RUN) -m pipeline all $(STUDY_FILE)
+	@$(RUN) -m pipeline all "$(STUDY_FILE)"
 
 $(STAGES): $(VENV)/ready
-	@$(RUN) -m pipeline $@ $(STUDY_FILE)
+	@$(RUN) -m pipeline $@ "$(STUDY_FILE)"
 
 new: $(VENV)/ready  ## a commented study file and input folder: make new STUDY=name
-	@$(RUN) -m pipeline new $(STUDY)
+	@$(RUN) -m pipeline new "$(STUDY)"
 
 iceland: $(VENV)/ready  ## fetch a real country's roads and postal codes, then run the flow on them
 	@$(RUN) data/iceland/fetch.py
