@@ -6,7 +6,6 @@ import inspect
 import re
 from collections.abc import Mapping
 from pathlib import Path
-from typing import Any
 
 import pytest
 
@@ -16,22 +15,13 @@ from pipeline.flow import BROUGHT, FLOW, INPUTS, STAGES, plan
 from pipeline.schema import Table
 from pipeline.study import Study, study_from
 from pipeline.tables import TABLES, Routes, ZoneTable
+from tests.test_study import plain_study
 
 ROOT = Path(__file__).parent.parent
 
 
 def study(folder: Path, **sections: Mapping[str, object]) -> Study:
-    raw: dict[str, Any] = {
-        "study": {
-            "name": "fen",
-            "title": "A fen",
-            "currency": "EUR",
-            "price_year": 2025,
-            "folder": "fen",
-        },
-        "costs": {"vehicle_cost_per_km": 0.2, "wage_fraction": 0.3},
-    }
-    return study_from(raw | sections, base=folder, source="fen.toml")
+    return study_from(plain_study(**sections), base=folder, source="fen.toml")
 
 
 def test_makefile_and_command_line_name_the_stages_of_the_flow() -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import tomllib
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
@@ -23,7 +24,7 @@ from pipeline.template import (
 DOCS = Path(__file__).parent.parent / "docs"
 
 
-def plain_study(**sections: dict[str, Any]) -> dict[str, Any]:
+def plain_study(**sections: Mapping[str, Any]) -> dict[str, Any]:
     """The least that a study file can say, with sections added or replaced."""
     return {
         "study": {
