@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 import pandas as pd
 
 from pipeline.roads.arrays import Float64, Int32, Int64
+from pipeline.roads.signs import TaggedNodes, TurnRelations
 
 # Keys that the rules of the road read; readers keep these tags and no other.
 TAG_KEYS = (
@@ -18,14 +19,37 @@ TAG_KEYS = (
     "vehicle",
     "motor_vehicle",
     "motorcar",
+    "motorcycle",
+    "bicycle",
+    "foot",
+    "access:conditional",
+    "vehicle:conditional",
+    "motor_vehicle:conditional",
+    "motorcar:conditional",
+    "motorcycle:conditional",
+    "bicycle:conditional",
+    "foot:conditional",
+    "seasonal",
     "oneway",
     "oneway:vehicle",
     "oneway:motor_vehicle",
     "oneway:motorcar",
+    "oneway:motorcycle",
+    "oneway:bicycle",
+    "oneway:foot",
+    "oneway:conditional",
     "maxspeed",
     "maxspeed:forward",
     "maxspeed:backward",
+    "maxspeed:conditional",
+    "maxspeed:type",
+    "source:maxspeed",
+    "zone:maxspeed",
     "surface",
+    "smoothness",
+    "tracktype",
+    "ford",
+    "4wd_only",
     "toll",
     "toll:motorcar",
     "duration",
@@ -51,6 +75,8 @@ class RoadExtract:
     way_start : (w + 1,) way `i` runs over `way_node[way_start[i]:way_start[i + 1]]`.
     way_node : (r,) index into the nodes; -1 where the extract lacks the node.
     way_tags : one row per way, one categorical column for each of `TAG_KEYS`.
+    tagged_nodes : nodes with barriers, signals, signs and the like.
+    turn_relations : turn restrictions.
     """
 
     node_id: Int64
@@ -60,6 +86,8 @@ class RoadExtract:
     way_start: Int64
     way_node: Int32
     way_tags: pd.DataFrame
+    tagged_nodes: TaggedNodes = field(default_factory=TaggedNodes)
+    turn_relations: TurnRelations = field(default_factory=TurnRelations)
 
     @property
     def ways(self) -> int:

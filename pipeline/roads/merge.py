@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -10,6 +10,7 @@ import pandas as pd
 
 from pipeline.roads.arrays import Bool, Int32, Int64, offsets, ranges
 from pipeline.roads.extract import TAG_KEYS, RoadExtract
+from pipeline.roads.signs import Signs, merge_signs
 
 NO_PLACE = np.int32(2_147_483_647)  # a coordinate that the file does not give
 
@@ -42,6 +43,7 @@ class FileRoads:
     node_lon_e7, node_lat_e7 : (n,) WGS 84 in units of 1e-7 degree; `NO_PLACE` where the file
         does not hold the node.
     tags : values of the ways by key.
+    signs : tagged nodes and turn restrictions, where the format has them.
     """
 
     way_id: Int64
@@ -51,6 +53,7 @@ class FileRoads:
     node_lon_e7: Int32
     node_lat_e7: Int32
     tags: dict[str, TagColumn]
+    signs: Signs = field(default_factory=Signs)
 
     @property
     def located(self) -> Bool:
@@ -65,6 +68,7 @@ def merge(files: list[FileRoads]) -> RoadExtract:
     counts = np.concatenate([np.diff(f.way_start) for f in files])
     places = ranges(offsets(counts)[:-1][first], counts[first])
     way_node = np.concatenate([n[f.way_node] for n, f in zip(number, files, strict=True)])
+    tagged_nodes, turn_relations = merge_signs([f.signs for f in files], node_id)
     return RoadExtract(
         node_id=node_id,
         node_lon_e7=lon,
@@ -73,6 +77,8 @@ def merge(files: list[FileRoads]) -> RoadExtract:
         way_start=offsets(counts[first]),
         way_node=way_node[places],
         way_tags=_tag_columns(files).take(first).reset_index(drop=True),
+        tagged_nodes=tagged_nodes,
+        turn_relations=turn_relations,
     )
 
 

@@ -1,9 +1,10 @@
 """Reads OSM PBF and OSM XML into the internal form.
 
 libosmium filters the ways, gives their nodes the locations and writes them as OPL, its own
-one-line-per-object text; no object becomes a Python object on the way. The lists of nodes are
-then parsed by compiled code, the tags line by line. Nodes are read first and ways second, so
-that an unsorted file gives the same roads as a sorted one.
+one-line-per-object text, with the tagged nodes and the turn restrictions; no object becomes a
+Python object on the way. The lists of nodes are then parsed by compiled code, the tags line by
+line. Nodes are read first, ways and relations second, so that an unsorted file gives the same
+roads as a sorted one.
 """
 
 from __future__ import annotations
@@ -19,6 +20,7 @@ from pipeline.errors import RoadsError
 from pipeline.roads.arrays import Int32, Int64, Uint8, compiled, offsets
 from pipeline.roads.extract import TAG_KEYS
 from pipeline.roads.merge import NO_PLACE, FileRoads, TagColumn
+from pipeline.roads.signs import Pairs, Signs
 
 READ_ERRORS = (RuntimeError, ValueError, OSError, MemoryError)
 OPL = "opl,add_metadata=false,locations_on_ways=true"
@@ -43,7 +45,8 @@ def read_osm(path: Path) -> FileRoads:
             f"{path.name}: not a whole OSM file that can be read ({error}). "
             "Nothing was taken from it; download or cut the extract again."
         ) from None
-    way_id, counts, ref, place, tags = _parse(content)
+    signs = Signs()
+    way_id, counts, ref, place, tags = _parse(content, signs)
     if (ref < 0).any():
         place = _with_negative_ids(ref, place, path)
     node_id, first, way_node = np.unique(ref, return_index=True, return_inverse=True)
@@ -55,42 +58,66 @@ def read_osm(path: Path) -> FileRoads:
         node_lon_e7=place[0, first],
         node_lat_e7=place[1, first],
         tags=tags,
+        signs=signs,
     )
 
 
 def _filter_ways(path: Path, opl: Path) -> None:
-    """Write the ways with a `highway` or `route` tag, and the places of their nodes, as OPL."""
+    """Write tagged nodes, ways that are roads or ferries, and turn restrictions as OPL."""
     places = osmium.NodeLocationsForWays(osmium.index.create_map("sparse_mem_array"))
     places.ignore_errors()
-    with osmium.io.Reader(str(path), osmium.osm.NODE) as nodes:
-        osmium.apply(nodes, places)
+    signs = osmium.filter.KeyFilter("barrier", "highway", "ford")
+    roads = osmium.filter.KeyFilter("highway", "route")
+    roads.enable_for(osmium.osm.WAY)
+    turns = osmium.filter.TagFilter(("type", "restriction"))
+    turns.enable_for(osmium.osm.RELATION)
+    entities = osmium.osm.WAY | osmium.osm.RELATION
     with (
-        osmium.io.Reader(str(path), osmium.osm.WAY) as ways,
         osmium.SimpleWriter(osmium.io.File(str(opl), OPL)) as writer,
+        osmium.io.Reader(str(path), osmium.osm.NODE) as nodes,
     ):
-        osmium.apply(ways, places, osmium.filter.KeyFilter("highway", "route"), writer)
+        osmium.apply(nodes, places, signs, writer)
+        with osmium.io.Reader(str(path), entities) as others:
+            osmium.apply(others, places, roads, turns, writer)
 
 
-def _parse(content: bytes) -> tuple[Int64, Int64, Int64, Int32, dict[str, TagColumn]]:
-    """Ids, node counts, nodes, places and tags of ``w7 Thighway=primary Nn1x-21.5y64.1,...``."""
+def _parse(content: bytes, signs: Signs) -> tuple[Int64, Int64, Int64, Int32, dict[str, TagColumn]]:
+    """Ids, node counts, nodes, places and tags of ``w7 Thighway=primary Nn1x-21.5y64.1,...``.
+
+    What stands on lines of nodes and relations goes into `signs`.
+    """
     way_ids: list[int] = []
     node_lists: list[bytes] = []
     tags: dict[str, tuple[list[int], list[str]]] = {key: ([], []) for key in TAG_KEYS}
     for line in content.splitlines():
-        way, tag_list, node_list = line.split(b" ")
-        for pair in tag_list[1:].decode("utf-8").split(","):
-            key, _, value = pair.partition("=")
+        what, tag_list, rest = line.split(b" ", 2)
+        if line.startswith(b"n"):
+            signs.add_node(int(what[1:]), _pairs(tag_list))
+            continue
+        if line.startswith(b"r"):
+            signs.add_relation(int(what[1:]), _pairs(tag_list), rest[1:].decode("utf-8"))
+            continue
+        for key, value in _pairs(tag_list):
             if key in tags:
-                rows, values = tags[key]
-                rows.append(len(way_ids))
-                values.append(_ESCAPED.sub(_unescape, value) if "%" in value else value)
-        way_ids.append(int(way[1:]))
-        node_lists.append(node_list[1:])
+                tags[key][0].append(len(way_ids))
+                tags[key][1].append(value)
+        way_ids.append(int(what[1:]))
+        node_lists.append(rest[1:])
     counts = np.array([nodes.count(b"n") for nodes in node_lists], dtype=np.int64)
     text = np.frombuffer(b",".join(node_lists) + b"\n", dtype=np.uint8)
     ref, place = _parse_nodes(text, int(counts.sum()))
     columns = {key: TagColumn.of(*found) for key, found in tags.items()}
     return np.array(way_ids, dtype=np.int64), counts, ref, place, columns
+
+
+def _pairs(tag_list: bytes) -> Pairs:
+    """Keys and values from ``Thighway=primary,surface=sand%2c%``."""
+    text = tag_list[1:].decode("utf-8")
+    pairs = []
+    for pair in text.split(","):
+        key, _, value = pair.partition("=")
+        pairs.append((key, _ESCAPED.sub(_unescape, value) if "%" in value else value))
+    return pairs
 
 
 def _unescape(match: re.Match[str]) -> str:

@@ -116,3 +116,26 @@ def test_what_is_no_road_file_is_refused(tmp_path: Path) -> None:
         read_extract(())
     with pytest.raises(RoadsError, match=r"no way with a highway or ferry tag"):
         extract_of(tmp_path, PLACES, [("a b", {"waterway": "river"})])
+
+
+def test_signs_and_turn_restrictions_are_read(tmp_path: Path) -> None:
+    """a ── b ── c with a gate at b, a street lamp at c, and a restriction from a b to b c."""
+    signs = {"b": {"barrier": "gate", "access": "no, never"}, "c": {"highway": "street_lamp"}}
+    turns = [("1 b 2", {"restriction": "no_u_turn", "except": "psv"}), ("1 2 1", {"x": "y"})]
+    extract = extract_of(tmp_path, PLACES, WAYS, signs, turns)
+    tagged = extract.tagged_nodes
+    assert tagged.node.tolist() == [1]
+    assert tagged.tags[["barrier", "access"]].to_numpy().tolist() == [["gate", "no, never"]]
+    found = extract.turn_relations
+    assert found.relation_id.tolist() == [1, 2]
+    assert found.tags["restriction"].tolist()[0] == "no_u_turn"
+    assert found.member_first.tolist() == [0, 3, 6]
+    assert found.member_ref.tolist() == [1, 2, 2, 1, 2, 1]
+    assert found.member_is_way.tolist() == [True, False, True, True, True, True]
+    assert found.member_role.tolist() == [0, 1, 2, 0, 1, 2]
+
+
+def test_a_tagged_node_without_a_road_is_left_out(tmp_path: Path) -> None:
+    places = PLACES | {"far": (1.0, 1.0)}
+    extract = extract_of(tmp_path, places, WAYS, {"far": {"barrier": "gate"}})
+    assert len(extract.tagged_nodes.node) == 0

@@ -13,6 +13,8 @@ from pipeline.study import Study, study_from
 
 Places = dict[str, tuple[float, float]]
 Ways = list[tuple[str, dict[str, str]]]
+Signs = dict[str, dict[str, str]]  # tags of places
+Turns = list[tuple[str, dict[str, str]]]  # 'way node way' or 'way way way', tags
 
 # Near the equator a hundredth of a degree of longitude is 1.11319 km (WGS 84: the equator's
 # radius of 6,378.137 km times pi over 18,000), so lengths can be checked by hand.
@@ -35,30 +37,64 @@ def a_study(**sections: dict[str, object]) -> Study:
     return study_from({**raw, **sections}, base=Path(), source="test")
 
 
-def osm_xml(places: Places, ways: Ways, *, ways_first: bool = False) -> str:
+def osm_xml(
+    places: Places,
+    ways: Ways,
+    *,
+    ways_first: bool = False,
+    signs: Signs | None = None,
+    turns: Turns | None = None,
+) -> str:
     """OSM XML of named places (longitude, latitude) and ways (``'a b c'``, tags).
 
     Names get ids in the order of `places`, from 1; a name in a way that is no place is a node
-    that the extract lacks.
+    that the extract lacks. Ways get ids in their order, from 1. A turn restriction is written
+    ``'1 b 2'``: from way 1 by node b (or way, if a number) to way 2.
     """
     ids = {name: number for number, name in enumerate(places, start=1)}
+    signs = signs or {}
     nodes = [
-        f'<node id="{ids[name]}" lon="{lon:.7f}" lat="{lat:.7f}"/>'
+        f'<node id="{ids[name]}" lon="{lon:.7f}" lat="{lat:.7f}">'
+        f"{_tags(signs.get(name, {}))}</node>"
         for name, (lon, lat) in places.items()
     ]
     lines = []
     for number, (names, tags) in enumerate(ways, start=1):
         refs = "".join(f'<nd ref="{ids.get(name, 999)}"/>' for name in names.split())
-        pairs = "".join(f"<tag k={quoteattr(k)} v={quoteattr(v)}/>" for k, v in tags.items())
-        lines.append(f'<way id="{number}">{refs}{pairs}</way>')
-    parts = lines + nodes if ways_first else nodes + lines
+        lines.append(f'<way id="{number}">{refs}{_tags(tags)}</way>')
+    rules = [
+        f'<relation id="{number}">{_members(text, ids)}{_tags({"type": "restriction"} | tags)}'
+        "</relation>"
+        for number, (text, tags) in enumerate(turns or [], start=1)
+    ]
+    parts = lines + nodes + rules if ways_first else nodes + lines + rules
     return '<osm version="0.6">' + "".join(parts) + "</osm>"
 
 
-def extract_of(folder: Path, places: Places, ways: Ways) -> RoadExtract:
+def _tags(tags: dict[str, str]) -> str:
+    return "".join(f"<tag k={quoteattr(k)} v={quoteattr(v)}/>" for k, v in tags.items())
+
+
+def _members(text: str, ids: dict[str, int]) -> str:
+    names = text.split()
+    roles = ["from", *["via"] * (len(names) - 2), "to"]
+    return "".join(
+        f'<member type="{"way" if name.isdigit() else "node"}" ref="{ids.get(name, name)}" '
+        f'role="{role}"/>'
+        for name, role in zip(names, roles, strict=True)
+    )
+
+
+def extract_of(
+    folder: Path,
+    places: Places,
+    ways: Ways,
+    signs: Signs | None = None,
+    turns: Turns | None = None,
+) -> RoadExtract:
     """The extract that a drawn world makes."""
     file = folder / "world.osm"
-    file.write_text(osm_xml(places, ways), encoding="utf-8")
+    file.write_text(osm_xml(places, ways, signs=signs, turns=turns), encoding="utf-8")
     return read_extract((file,))
 
 
@@ -67,6 +103,20 @@ def graph_of(
 ) -> tuple[RoadGraph, pd.DataFrame, gpd.GeoDataFrame]:
     """Graph, quality and lines of a drawn world; keywords are keys of [roads]."""
     return build_roads(extract_of(folder, places, ways), study=a_study(roads=roads))
+
+
+def signed_graph_of(
+    folder: Path,
+    places: Places,
+    ways: Ways,
+    *,
+    signs: Signs | None = None,
+    turns: Turns | None = None,
+    roads: dict[str, object] | None = None,
+) -> tuple[RoadGraph, pd.DataFrame, gpd.GeoDataFrame]:
+    """The same of a world with signs at places and turn restrictions."""
+    extract = extract_of(folder, places, ways, signs, turns)
+    return build_roads(extract, study=a_study(roads=roads or {}))
 
 
 def arcs_between(graph: RoadGraph) -> set[tuple[tuple[float, float], tuple[float, float]]]:
