@@ -31,6 +31,19 @@ def _resolve(value: object, info: ValidationInfo) -> object:
     return value
 
 
+def _known_crs(value: str) -> str:
+    # Imported here: a study with nothing to do should not wait for the library.
+    from pyproj import CRS
+    from pyproj.exceptions import CRSError
+
+    try:
+        CRS.from_user_input(value)
+    except CRSError:
+        raise ValueError(f"{value!r} is no coordinate reference system that PROJ knows") from None
+    return value
+
+
+CrsName = Annotated[str, AfterValidator(_known_crs)]
 InputPath = Annotated[Path, BeforeValidator(_resolve), "input"]
 OutputPath = Annotated[Path, BeforeValidator(_resolve), "output"]
 Share = Annotated[float, Field(ge=0, le=1)]

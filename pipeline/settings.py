@@ -12,7 +12,16 @@ from typing import Annotated, ClassVar, Literal, Self
 from pydantic import Field, model_validator
 
 from pipeline.cost_settings import CostsSettings
-from pipeline.sections import InputPath, OutputPath, Positive, Regex, Section, Share, setting
+from pipeline.sections import (
+    CrsName,
+    InputPath,
+    OutputPath,
+    Positive,
+    Regex,
+    Section,
+    Share,
+    setting,
+)
 
 
 class StudySettings(Section):
@@ -373,7 +382,10 @@ class PublishSettings(Section):
     """What people take away."""
 
     section_name: ClassVar[str] = "publish"
-    crs: str = setting("Coordinate reference system of the GIS layers.", "EPSG:4326")
+    crs: CrsName = setting(
+        "Coordinate reference system of the GIS layers (EPSG:code, or any that PROJ knows).",
+        "EPSG:4326",
+    )
     suppress_below: int = setting(
         "Counts of visit records per zone below this are hidden in published tables; 0: none.",
         0,

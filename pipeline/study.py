@@ -16,6 +16,7 @@ from pathlib import Path
 from typing import Any, cast
 
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
+from pydantic_core import ErrorDetails
 
 from pipeline.cost_settings import CostsSettings
 from pipeline.errors import StudyError
@@ -112,7 +113,7 @@ def study_from(raw: dict[str, Any], *, base: Path, source: str) -> Study:
     try:
         study = Study.model_validate(_tuples(raw), context={"base": base})
     except ValidationError as error:
-        raise StudyError(_explain(error, source)) from None
+        raise StudyError(_explain(error, raw, source)) from None
     if study.costs is None and not (study.market.zone_table or study.market.trip_table):
         raise StudyError(f"{source}: section [costs] is needed and missing; add it.")
     if study.costs is not None:
@@ -189,24 +190,41 @@ def _paths(value: Any) -> Iterator[Path]:
         yield value
 
 
-def _explain(error: ValidationError, source: str) -> str:
-    """The first thing that is wrong, and how many more there are."""
+def _explain(error: ValidationError, raw: dict[str, Any], source: str) -> str:
+    """The first thing that is wrong, and in how many more places something is."""
     # A misspelt key is also a missing one: name the misspelling.
     first = min(error.errors(), key=lambda item: item["type"] != "extra_forbidden")
-    where = [str(part) for part in first["loc"]]
-    rest = error.error_count() - 1
+    where = _place(first, raw)
+    here = [item for item in error.errors() if _place(item, raw) == where]
+    rest = len({tuple(_place(item, raw)) for item in error.errors()}) - 1
     more = f" ({rest} more problem(s) in the file.)" if rest else ""
     if first["type"] == "extra_forbidden":
         return f"{source}: {_unknown_key(where)}{more}"
     if first["type"] == "missing":
         return f"{source}: {_key(where)} is needed and missing; add it.{more}"
-    said = first["msg"].removeprefix("Value error, ")
+    # A key of several types gives an error for each.
+    said = " or ".join(dict.fromkeys(item["msg"].removeprefix("Value error, ") for item in here))
     if first["type"] == "value_error":
         return f"{source}: {_key(where)}: {said}. Correct it.{more}"
     return (
         f"{source}: {_key(where)} = {first['input']!r} is not valid: {said}. "
         f"Correct it; 'make new' writes a study file that explains every key.{more}"
     )
+
+
+def _place(item: ErrorDetails, raw: dict[str, Any]) -> list[str]:
+    """Where an error is, as keys of the file; what the checker adds about types is left out."""
+    parts: list[str] = []
+    value: Any = raw
+    for part in item["loc"]:
+        try:
+            value = value[part]
+        except (KeyError, IndexError, TypeError):
+            if item["type"] == "missing":
+                parts.append(str(part))
+            break
+        parts.append(str(part))
+    return parts or [str(item["loc"][0])]
 
 
 def _key(where: list[str]) -> str:

@@ -73,6 +73,9 @@ def test_settings_cannot_be_changed() -> None:
         ("zone", "file", "zones.csv", r"unknown section \[zone\].*'zones'"),
         ("zones", "file", "nowhere.csv", r"nowhere.csv does not exist.*relative to the study"),
         ("costs", "wage_fraction", 5.0, r"\[costs\] wage_fraction = 5.0 is not valid"),
+        ("publish", "crs", "EPSG:99999", r"\[publish\] crs: 'EPSG:99999' is no coordinate"),
+        ("demand", "choose", "magic", r"\[demand\] choose = 'magic'.*'test'.*'poisson'"),
+        ("surplus", "fees", [5.0, -1.0], r"\[surplus.fees\] 1 = -1.0 is not valid"),
         ("costs", "vehicle_cost_per_km", "cheap", r"vehicle_cost_per_km = 'cheap' is not valid"),
     ],
 )
