@@ -12,7 +12,9 @@ import pandas as pd
 from pipeline.errors import PublishError
 from pipeline.provenance import Provenance
 from pipeline.publish.curve import fitted_curves
-from pipeline.publish.geofiles import write_geojson, write_geopackage
+from pipeline.publish.descriptor import data_package
+from pipeline.publish.geofiles import write_geojson, write_geoparquet
+from pipeline.publish.geopackage import About, write_geopackage
 from pipeline.publish.layers import build_layers
 from pipeline.publish.manifest import manifest_text, run_manifest
 from pipeline.publish.privacy import hide_small_cells, hide_zone_surplus, trip_means
@@ -36,6 +38,7 @@ class Publication:
     dictionary : what every column of the tables means, one row per column.
     report : the report, one HTML page without any outside reference.
     manifest : content of run.json.
+    attribution : whose road data it is, and under which licence.
     headlines : what every site is worth.
     """
 
@@ -46,22 +49,63 @@ class Publication:
     dictionary: pd.DataFrame
     report: str
     manifest: dict[str, Any]
+    attribution: str
     headlines: tuple[Headline, ...]
 
     def write(self, folder: Path) -> None:
-        """Write report.html, run.json, `<name>.gpkg`, geojson/ and tables/ into `folder`."""
-        (folder / "report.html").write_text(self.report, encoding="utf-8", newline="\n")
-        run = manifest_text(self.manifest)
-        (folder / "run.json").write_text(run, encoding="utf-8", newline="\n")
+        """Write report.html, run.json, layers, tables and datapackage.json into `folder`."""
+        _write_text(self.report, folder / "report.html")
+        _write_text(manifest_text(self.manifest), folder / "run.json")
         if self.layers:
-            write_geopackage(self.layers, folder / f"{self.name}.gpkg", crs=self.crs)
-            (folder / "geojson").mkdir()
-        for name, layer in self.layers.items():
-            write_geojson(layer, folder / "geojson" / f"{name}.geojson")
+            self._write_layers(folder)
         (folder / "tables").mkdir()
         for name, table in self.tables.items():
             write_table_files(table, folder / "tables", name)
         write_csv(self.dictionary, folder / "tables" / "data_dictionary.csv")
+        package = data_package(
+            folder,
+            manifest=self.manifest,
+            tables=self.tables,
+            dictionary=self.dictionary,
+            layers=self.layers,
+            attribution=self.attribution,
+        )
+        _write_text(manifest_text(package), folder / "datapackage.json")
+
+    def _write_layers(self, folder: Path) -> None:
+        """`<name>.gpkg`, geojson/ and geoparquet/."""
+        about = about_layers(self.manifest, attribution=self.attribution)
+        currency = self.manifest["study"]["currency"]
+        path = folder / f"{self.name}.gpkg"
+        write_geopackage(self.layers, path, crs=self.crs, currency=currency, about=about)
+        (folder / "geojson").mkdir()
+        (folder / "geoparquet").mkdir()
+        for name, layer in self.layers.items():
+            write_geojson(layer, folder / "geojson" / f"{name}.geojson")
+            write_geoparquet(layer, folder / "geoparquet" / f"{name}.parquet", crs=self.crs)
+
+
+def about_layers(manifest: dict[str, Any], *, attribution: str) -> About:
+    """The GeoPackage's own words about itself."""
+    study = manifest["study"]
+    values = " ".join(f"{headline['words']}." for headline in manifest["headline"])
+    files = ", ".join(file["name"] for file in manifest["inputs"])
+    versions = manifest["versions"]
+    return About(
+        title=study["title"],
+        abstract=" ".join(words for words in (study["notice"], values) if words),
+        licence=attribution,
+        lineage=(
+            f"Worked out by roadworth {versions.get('roadworth', '')} from {files or 'no file'}; "
+            f"digests, settings and versions stand in the run's manifest (settings "
+            f"{manifest['study_sha256'][:12]}, code {manifest['code_sha256'][:12]})."
+        ),
+        manifest=manifest_text(manifest),
+    )
+
+
+def _write_text(text: str, path: Path) -> None:
+    path.write_text(text, encoding="utf-8", newline="\n")
 
 
 def publish(
@@ -166,5 +210,6 @@ def _publication(results: Results) -> Publication:
         dictionary=describe_tables(tables, currency=results.currency),
         report=build_report(results),
         manifest=run_manifest(results),
+        attribution=results.study.publish.attribution,
         headlines=results.headlines,
     )

@@ -38,7 +38,7 @@ def read_json(path: Path) -> Any:
 def test_the_same_run_gives_the_same_bytes_in_another_folder(folder: Path, tmp_path: Path) -> None:
     make_publication().write(tmp_path)
     assert digests(tmp_path) == digests(folder)
-    assert len(digests(folder)) == 1 + 2 + len(LAYERS) + 2 * 12 + 1
+    assert len(digests(folder)) == 1 + 3 + 2 * len(LAYERS) + 2 * 12 + 1
 
 
 def test_geopackage_header_says_1_2(folder: Path) -> None:
@@ -50,7 +50,7 @@ def test_geopackage_header_says_1_2(folder: Path) -> None:
 
 def test_geopackage_layers_open_and_hold_every_zone(folder: Path) -> None:
     path = folder / "fenland.gpkg"
-    assert [str(name) for name in pyogrio.list_layers(path)[:, 0]] == LAYERS
+    assert [str(name) for name in pyogrio.list_layers(path)[:, 0]] == [*LAYERS, "layer_styles"]
     zones = gpd.read_file(path, layer="zones", engine="pyogrio")
     assert list(zones["zone_id"]) == list(COST)
     assert list(zones["in_market"].astype(bool)) == [zone != "009" for zone in COST]
