@@ -10,7 +10,7 @@ roads      ``roads``                         road graph, ``road_quality``, ``roa
 route      ``routes`` (``search``)           ``routes``, ``route_lines``
 cost       ``costs``                         ``costs``
 join       ``finished``                      ``zone_table``
-demand     ``demand``                        ``estimates``, ``fit``
+demand     ``demand``                        ``estimates``, ``fit``, ``diagnostics``
 surplus    ``surplus``                       ``surplus``, ``fee_schedule``, ``zone_surplus``
 publish    ``publish``                       GeoPackage, GeoJSON, Parquet, CSV, report, run.json
 =========  ================================  =================================================

@@ -16,7 +16,7 @@ from typing import Any
 from pipeline import inputs
 from pipeline.cost_settings import CostsSettings
 from pipeline.costs import cost, summarise_cost
-from pipeline.demand import demand, summarise_demand
+from pipeline.demand import demand_with_diagnostics, summarise_demand
 from pipeline.finished import join, summarise_join
 from pipeline.origins import geocode, summarise_geocode
 from pipeline.provenance import Provenance, trace
@@ -48,6 +48,7 @@ from pipeline.surplus import summarise_surplus, surplus
 from pipeline.tables import (
     Costs,
     Crosswalk,
+    Diagnostics,
     Estimates,
     FeeSchedule,
     Fit,
@@ -199,9 +200,9 @@ FLOW: tuple[Stage, ...] = (
     ),
     Stage(
         "demand",
-        demand,
-        reads=(FINISHED,),
-        writes=(Estimates, Fit),
+        demand_with_diagnostics,
+        reads=(FINISHED, Maybe(Zones)),
+        writes=(Estimates, Fit, Diagnostics),
         sections=(DemandSettings, SurplusSettings),
         summarise=summarise_demand,
     ),

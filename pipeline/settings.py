@@ -306,7 +306,29 @@ class MarketSettings(Section):
     )
 
 
-ModelName = Literal["poisson", "negative_binomial", "log_linear", "linear"]
+ModelName = Literal[
+    "poisson",
+    "negative_binomial",
+    "negative_binomial_1",
+    "quasi_poisson",
+    "zero_inflated_poisson",
+    "zero_inflated_negative_binomial",
+    "truncated_poisson",
+    "truncated_negative_binomial",
+    "on_site_poisson",
+    "on_site_negative_binomial",
+    "hurdle",
+    "log_linear",
+    "linear",
+    "weighted_log_linear",
+    "weighted_linear",
+]
+#: Poisson and negative binomial by who could be in the records.
+TEST_PAIRS: dict[str, tuple[ModelName, ModelName]] = {
+    "everybody": ("poisson", "negative_binomial"),
+    "visitors": ("truncated_poisson", "truncated_negative_binomial"),
+    "on_site": ("on_site_poisson", "on_site_negative_binomial"),
+}
 
 
 class DemandSettings(Section):
@@ -314,13 +336,24 @@ class DemandSettings(Section):
 
     section_name: ClassVar[str] = "demand"
     models: tuple[ModelName, ...] = setting(
-        "Models to fit: poisson and negative_binomial of the counts, with the population as "
-        "exposure; log_linear and linear: least squares of the log rate and of the rate.",
+        "Models to fit. Counts, with the population as exposure: poisson, negative_binomial "
+        "(variance mu + alpha mu^2), negative_binomial_1 (mu (1 + delta)), quasi_poisson, "
+        "zero_inflated_*. Counts of visitors only: truncated_*; of visitors met on the site: "
+        "on_site_*. Records of persons: hurdle. Least squares of the log rate and of the rate: "
+        "log_linear, linear, and weighted by exposure, weighted_*.",
         ("poisson", "negative_binomial", "log_linear"),
         min_length=1,
     )
-    choose: Literal["test"] | ModelName = setting(
-        "'test': Poisson or negative binomial by the overdispersion test; or a model's name.",
+    sampling: Literal["everybody", "visitors", "on_site"] = setting(
+        "Who could be in the records: 'everybody' (zones of a market, a survey of the "
+        "population), 'visitors' only (a permit list without those who did not come), or people "
+        "met 'on_site', where who comes often is met often. Says which pair 'test' chooses from.",
+        "everybody",
+        usual="everybody for zones; on_site for interviews at the site",
+    )
+    choose: Literal["test", "aic", "bic"] | ModelName = setting(
+        "'test': Poisson or negative binomial by the overdispersion test; 'aic' or 'bic': the "
+        "count model with the least; or a model's name.",
         "test",
         usual="test",
     )
@@ -331,10 +364,12 @@ class DemandSettings(Section):
         gt=0,
         lt=1,
     )
-    errors: Literal["model", "HC0", "HC1", "HC2", "HC3"] = setting(
+    errors: Literal["model", "HC0", "HC1", "HC2", "HC3", "cluster", "bootstrap"] = setting(
         "Standard errors: 'model' takes the model's variance at its word; HC0 to HC3 are robust "
         "to it, HC3 with the most care for zones that pull hard on the fit (with 60 overdispersed "
-        "zones a Poisson's 95 % interval held the truth 94 times in 100 with HC3, 88 with HC1).",
+        "zones a Poisson's 95 % interval held the truth 94 times in 100 with HC3, 88 with HC1); "
+        "'cluster' lets rows of a cluster move together; 'bootstrap' draws rows, or clusters, "
+        "again and again (surplus.bootstrap times, 500 if that is 0).",
         "HC3",
         usual="HC3; HC1 is much used and the same with several hundred zones",
     )
@@ -344,15 +379,39 @@ class DemandSettings(Section):
         (),
         usual="household_income, substitute_cost",
     )
+    zero_part: tuple[str, ...] | None = setting(
+        "Columns beside a constant in the part about zeros; default: all regressors in a hurdle, "
+        "none in zero-inflated models.",
+        None,
+        usual="few; travel_cost belongs into a hurdle",
+    )
+    cluster: str | None = setting(
+        "Column of the finished table whose equal values belong together, for errors = 'cluster' "
+        "and for the bootstrap.",
+        None,
+        usual="zone_id for records of persons or stacked sites",
+    )
+    site_effects: bool = setting(
+        "Fit all sites together with a constant for each, instead of one by one.",
+        default=False,
+        usual="false; true where each site has few visits and sites are alike",
+    )
+    folds: int = setting(
+        "Parts of the cross-validation; 0: none.", 10, usual="5 to 10", ge=0, le=100
+    )
 
     @model_validator(mode="after")
     def _choice_is_fitted(self) -> Self:
-        needed = ("poisson", "negative_binomial") if self.choose == "test" else (self.choose,)
+        needed: tuple[str, ...] = (self.choose,)
+        if self.choose in ("test", "aic", "bic"):
+            needed = TEST_PAIRS[self.sampling] if self.choose == "test" else ()
         missing = [name for name in needed if name not in self.models]
         if missing:
             raise ValueError(
                 f"choose = {self.choose!r} needs {missing[0]!r} among models; add it to models"
             )
+        if self.errors == "cluster" and self.cluster is None:
+            raise ValueError("errors = 'cluster' needs the key cluster; name a column (zone_id)")
         return self
 
 
@@ -369,6 +428,22 @@ class SurplusSettings(Section):
         "keeps nine visits in ten away.",
         (),
         unit="currency",
+    )
+    bootstrap: int = setting(
+        "Bootstrap replicates of the chosen model; 0: no bootstrap intervals.",
+        0,
+        usual="0 while working, 1,000 to report",
+        ge=0,
+    )
+    income: str = setting(
+        "Covariate that is income, for exact welfare; used where it is in demand.covariates.",
+        "household_income",
+    )
+    income_unit: Positive = setting(
+        "Money that one unit of that covariate stands for, in the study's currency.",
+        1.0,
+        unit="currency",
+        usual="1; 1,000 where income is in thousands",
     )
 
 

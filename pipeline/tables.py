@@ -382,8 +382,9 @@ class Estimates(Table):
     model: Series[str] = column("model's name")
     site_id: Series[str] = column("site that is valued")
     term: Series[str] = column(
-        "'const', 'travel_cost', a covariate, 'alpha' (dispersion), or 'smearing' (log_linear: "
-        "factor from the median to the mean)"
+        "'const', 'travel_cost', a covariate, 'site:' and a site (its effect), 'never:' or 'any:' "
+        "and a term (part about zeros), 'alpha' or 'delta' (dispersion), or 'smearing' "
+        "(log_linear: factor from the median to the mean)"
     )
     estimate: Series[float] = column(
         "coefficient in the units of the finished table", nullable=True
@@ -411,7 +412,9 @@ class Fit(Table):
     aic: Series[float] = column("Akaike's information criterion", nullable=True)
     bic: Series[float] = column("Bayesian information criterion", nullable=True)
     dispersion: Series[float] = column(
-        "NB2: alpha; other models: Pearson chi-square over degrees of freedom", nullable=True
+        "alpha or delta of negative binomials; least squares: variance of the residuals; other "
+        "models: Pearson chi-square over degrees of freedom",
+        nullable=True,
     )
     overdispersion_p: Series[float] = column(
         "p-value of the overdispersion test", ge=0, le=1, nullable=True
@@ -425,10 +428,37 @@ class Fit(Table):
     converged: Series[bool] = column("whether the maximum was reached and verified")
     chosen: Series[bool] = column("whether the surplus comes from this model")
     errors: Series[str] = column("kind of standard errors")
+    degrees_of_freedom: Series[float] = column(
+        "of Student's t for the intervals; missing: normal", gt=0, nullable=True
+    )
     note: Series[str] = column("why it was chosen, or what is wrong with it", nullable=True)
 
     class Config:
         unique = ["model", "site_id"]
+
+
+class Diagnostics(Table):
+    """What speaks for and against each model: one row per figure."""
+
+    site_id: Series[str] = column("site that is valued")
+    model: Series[str] = column("model that the figure is about")
+    diagnostic: Series[str] = column(
+        "overdispersion, likelihood_ratio, vuong, vuong_aic, vuong_bic, cross_validated_deviance, "
+        "cross_validated_log_score, residual_mean, residual_variance, residual_normality, "
+        "observed_count, influence, moran_i, condition_number, price_variance_inflation, "
+        "rows_per_coefficient, cost_reaches"
+    )
+    subject: Series[str] = column(
+        "what it is held against or about: another model, a class of counts, a zone",
+        nullable=True,
+    )
+    value: Series[float] = column("the figure", nullable=True)
+    expected: Series[float] = column("what the model, or no effect, leads to", nullable=True)
+    p_value: Series[float] = column("p-value, where it is a test", ge=0, le=1, nullable=True)
+    note: Series[str] = column("what it says, in a sentence", nullable=True)
+
+    class Config:
+        unique = ["site_id", "model", "diagnostic", "subject"]
 
 
 # --- surplus ---------------------------------------------------------------------------------
@@ -440,16 +470,20 @@ class Surplus(Table):
     model: Series[str] = column("model's name")
     site_id: Series[str] = column("site that is valued")
     measure: Series[str] = column(
-        "surplus_per_trip, annual_surplus (observed visits), annual_surplus_predicted, "
-        "surplus_per_person_per_year, price_elasticity, annual_visits_observed, "
-        "annual_visits_predicted, choke_cost (linear)"
+        "surplus_per_trip, surplus_per_trip_observed (linear: observed trips), "
+        "surplus_per_trip_count_part (-1/b of the count part), annual_surplus (observed visits), "
+        "annual_surplus_predicted, annual_surplus_trapezoid, access_value (closure), "
+        "surplus_per_person_per_year, compensating_variation_per_trip, "
+        "equivalent_variation_per_trip, annual_compensating_variation, "
+        "annual_equivalent_variation, income_elasticity, price_elasticity, "
+        "annual_visits_observed, annual_visits_predicted, choke_cost (linear)"
     )
     value: Series[float] = column("the figure", nullable=True)
     std_error: Series[float] = column("its standard error", ge=0, nullable=True)
     ci_low: Series[float] = column("lower end of the confidence interval", nullable=True)
     ci_high: Series[float] = column("upper end of the confidence interval", nullable=True)
     method: Series[str] = column(
-        "how the interval was made: delta, simulated; observed: a count without one"
+        "how the interval was made: delta, fieller, simulated, bootstrap; observed: a count"
     )
     unit: Series[str] = column("unit of the figure")
     chosen: Series[bool] = column("whether it comes from the model that was chosen")
@@ -526,6 +560,7 @@ TABLES: tuple[type[Table], ...] = (
     TripTable,
     Estimates,
     Fit,
+    Diagnostics,
     Surplus,
     FeeSchedule,
     ZoneSurplus,

@@ -9,18 +9,34 @@ module              what it holds
 ``curves``          semi-log and linear demand curves: visits and areas at an added fee
 ``likelihood``      fit of any family with a log-likelihood
 ``maximum``         Newton's method, and the verification of its end
-``covariance``      model-based and robust covariance
+``covariance``      model-based, robust and clustered covariance
+``bootstrap``       refits to drawn rows or clusters
+``spread``          distribution of a count: mean, variance, cumulative probability
 ``counts``          ``poisson``, ``negative_binomial``
-``least_squares``   ``linear``, ``log_linear``
+``local``           log-likelihoods of rows with derivatives, to put families together from
+``indexed``         families put together so; ``dispersed`` (NB1, quasi-Poisson), ``truncated``,
+                    ``on_site``, ``zeros`` (zero-inflated), ``hurdle``
+``mixed_curve``     demand curve of the last two, by numerical integration
+``least_squares``   ``linear``, ``log_linear``, and weighted
 ``registry``        families by name
-``choice``          overdispersion test; which model is used, and why
+``choice``          tests; which model is used, and why
+``diagnostics``     what speaks for and against each model; ``comparisons``, ``residuals``,
+                    ``influence``
 ``rows``            fitted models as table rows and back
 ``stage``           the stage itself
 ==================  ==========================================================================
 """
 
 from pipeline.demand.rows import fitted_models
-from pipeline.demand.sample import Sample, build_samples
-from pipeline.demand.stage import demand, summarise_demand
+from pipeline.demand.sample import Sample, build_samples, study_samples
+from pipeline.demand.stage import demand, demand_with_diagnostics, summarise_demand
 
-__all__ = ["Sample", "build_samples", "demand", "fitted_models", "summarise_demand"]
+__all__ = [
+    "Sample",
+    "build_samples",
+    "demand",
+    "demand_with_diagnostics",
+    "fitted_models",
+    "study_samples",
+    "summarise_demand",
+]

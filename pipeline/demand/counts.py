@@ -14,9 +14,10 @@ from scipy.special import digamma, gammaln, polygamma
 from pipeline.demand.family import ALPHA, FittedModel
 from pipeline.demand.likelihood import LikelihoodFamily, Rows, climb
 from pipeline.demand.sample import FloatArray, Sample
+from pipeline.demand.spread import Spread, nb2_spread, poisson_spread
 
 #: Overdispersion below this share of the mean cannot be told from none.
-_NO_OVERDISPERSION = 1e-3
+NO_OVERDISPERSION = 1e-3
 
 
 class Poisson(LikelihoodFamily):
@@ -47,11 +48,9 @@ class Poisson(LikelihoodFamily):
         """The mean."""
         return rows.mean(theta)
 
-    def dispersion(self, model: FittedModel, sample: Sample) -> float:
-        """Pearson chi-square over residual degrees of freedom."""
-        mean = expected_counts(self, model, sample)
-        pearson = float(sample.weight @ ((sample.counts - mean) ** 2 / mean))
-        return pearson / (sample.nobs - len(sample.terms))
+    def spread(self, estimate: FloatArray, sample: Sample) -> Spread:
+        """Poisson."""
+        return poisson_spread(log_mean(estimate, sample))
 
 
 class NegativeBinomial(LikelihoodFamily):
@@ -59,40 +58,19 @@ class NegativeBinomial(LikelihoodFamily):
 
     name = "negative_binomial"
     label = "negative binomial"
-    extra_terms = (ALPHA,)
+    extra_terms: tuple[str, ...] = (ALPHA,)
 
-    def fit(self, sample: Sample, *, errors: str) -> FittedModel:
-        """Fit to a sample; a Poisson with α = 0 where the counts vary no more than a Poisson's."""
+    def at_bound(self, sample: Sample, errors: str) -> FittedModel | None:
+        """A Poisson with α = 0 where the counts vary no more than a Poisson's."""
         poisson = Poisson().fit(sample, errors=errors)
         if not poisson.converged:
             return FittedModel.failed(self.name, sample, poisson.problem)
-        mean = expected_counts(Poisson(), poisson, sample)
+        mean = log_mean(poisson.estimate, sample)
         excess = float(sample.weight @ ((sample.counts - mean) ** 2 - sample.counts))
         # The slope of the likelihood in α at zero: where it does not rise, zero is the maximum.
-        if excess <= _NO_OVERDISPERSION * float(sample.weight @ mean):
-            return self._without_overdispersion(poisson)
-        return super().fit(sample, errors=errors)
-
-    def _without_overdispersion(self, poisson: FittedModel) -> FittedModel:
-        size = len(poisson.terms)
-        spread = np.full((size + 1, size + 1), np.nan)
-        spread[:size, :size] = poisson.covariance
-        return replace(
-            poisson,
-            model=self.name,
-            terms=(*poisson.terms, ALPHA),
-            estimate=np.append(poisson.estimate, 0.0),
-            covariance=spread,
-            parameters=size + 1,
-            dispersion=0.0,
-            notes=(
-                *poisson.notes,
-                (
-                    "The counts vary no more than a Poisson's: alpha is at its lower bound, zero, "
-                    "and the model is the Poisson."
-                ),
-            ),
-        )
+        if excess > NO_OVERDISPERSION * float(sample.weight @ mean):
+            return None
+        return without_overdispersion(poisson, self.name, "Poisson", "alpha", ALPHA)
 
     def start(self, rows: Rows) -> FloatArray:
         """The Poisson's maximum, and the α of the overdispersion seen there.
@@ -143,6 +121,34 @@ class NegativeBinomial(LikelihoodFamily):
         corner = np.array([[float(rows.weight @ log_log)]])
         return np.block([[inner, cross[:, None]], [cross[None, :], corner]])
 
+    def evaluate(self, theta: FloatArray, rows: Rows) -> tuple[float, FloatArray, FloatArray]:
+        """Value, gradient and Hessian in one pass; terms of the count once per distinct count."""
+        size, weight = float(np.exp(-theta[-1])), rows.weight
+        eta = rows.design @ theta[:-1] + rows.offset
+        mean = np.exp(eta)
+        total, log_odds = size + mean, np.log1p(mean / size)
+        share = size / total
+        at_level = np.bincount(rows.place, weight, minlength=len(rows.levels))
+        levels = rows.levels
+        of_count = gammaln(levels + size) - gammaln(size) - levels * np.log(size)
+        psi = digamma(levels + size) - digamma(size)
+        bend = polygamma(1, levels + size) - polygamma(1, size)
+        value = float(at_level @ of_count) + float(
+            weight @ (rows.counts * eta - (rows.counts + size) * log_odds - rows.log_factorial)
+        )
+        surprise = weight * (rows.counts - mean) / total
+        in_size = float(at_level @ psi - weight @ log_odds - surprise.sum())
+        size_size = float(at_level @ bend) + float(
+            weight.sum() / size - (weight / total).sum() + (surprise / total).sum()
+        )
+        in_eta = size * surprise
+        gradient = np.append(rows.design.T @ in_eta, -size * in_size)
+        inner_weight = -share * weight * mean * (size + rows.counts) / total
+        inner = (rows.design.T * inner_weight) @ rows.design
+        cross = -(rows.design.T @ (share * surprise * mean))
+        corner = np.array([[size**2 * size_size + size * in_size]])
+        return value, gradient, np.block([[inner, cross[:, None]], [cross[None, :], corner]])
+
     def _in_size(self, size: float, mean: FloatArray, rows: Rows) -> FloatArray:
         """Derivative of each row in 1/α."""
         of_count = digamma(rows.levels + size) - digamma(size)
@@ -162,13 +168,38 @@ class NegativeBinomial(LikelihoodFamily):
         alpha = np.exp(theta[size:])
         return alpha, alpha
 
-    def dispersion(self, model: FittedModel, sample: Sample) -> float:
-        """α."""
-        del sample
-        return float(model.estimate[-1])
+    def spread(self, estimate: FloatArray, sample: Sample) -> Spread:
+        """NB2."""
+        return nb2_spread(log_mean(estimate, sample), float(estimate[-1]))
 
 
-def expected_counts(family: LikelihoodFamily, model: FittedModel, sample: Sample) -> FloatArray:
-    """Expected count of each row, before expansion."""
-    visits, _ = family.predict(model.estimate, sample)
-    return visits / sample.people * sample.exposure
+def without_overdispersion(
+    simple: FittedModel, name: str, label: str, symbol: str, term: str
+) -> FittedModel:
+    """The simpler model as one whose dispersion is at its lower bound."""
+    size = len(simple.terms)
+    spread = np.full((size + 1, size + 1), np.nan)
+    spread[:size, :size] = simple.covariance
+    return replace(
+        simple,
+        model=name,
+        terms=(*simple.terms, term),
+        estimate=np.append(simple.estimate, 0.0),
+        covariance=spread,
+        parameters=size + 1,
+        dispersion=0.0,
+        notes=(
+            *simple.notes,
+            (
+                f"The counts vary no more than a {label}'s: {symbol} is at its lower bound, zero, "
+                f"and the model is the {label}."
+            ),
+        ),
+    )
+
+
+def log_mean(estimate: FloatArray, sample: Sample) -> FloatArray:
+    """exp(x'β) × exposure of each row."""
+    with np.errstate(over="ignore"):
+        rate = np.exp(sample.design @ estimate[: len(sample.terms)])
+    return np.asarray(rate * sample.exposure, dtype=float)

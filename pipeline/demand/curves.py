@@ -12,7 +12,7 @@ from __future__ import annotations
 import numpy as np
 
 from pipeline.demand.family import Totals, mean_regressors
-from pipeline.demand.sample import PRICE, FloatArray, Sample
+from pipeline.demand.sample import PRICE, BoolArray, FloatArray, Sample
 
 _BLOCK = 2_000_000
 
@@ -33,11 +33,35 @@ def index(theta: FloatArray, sample: Sample) -> FloatArray:
     return np.asarray(theta[:, : len(sample.terms)] @ sample.design.T, dtype=float)
 
 
-class SemiLogCurve:
+def exponential_totals(base: FloatArray, price: FloatArray, fees: FloatArray) -> Totals:
+    """Areas under visits base × exp(price × fee); base and price are (vectors, 1)."""
+    with np.errstate(over="ignore"):
+        visits = base * np.exp(price * fees)
+        bounded = np.where(price < 0, price, -1.0)
+        left = np.where(price < 0, visits / -bounded, np.inf)
+        slope = np.where(price == 0, 1.0, price)
+        lost = np.where(price == 0, base * fees, base * np.expm1(price * fees) / slope)
+    return Totals(visits=visits, left=left, lost=lost)
+
+
+class FallingCurve:
+    """What every curve knows: whether it falls."""
+
+    def falls(self, theta: FloatArray, sample: Sample) -> BoolArray:
+        """Whether visits fall with cost without end, per parameter vector."""
+        return np.asarray(price_column(theta, sample) < 0, dtype=bool)
+
+
+class SemiLogCurve(FallingCurve):
     """Curve of every family whose expected visits are exp(x'β)."""
 
     surplus_words = "−1 / coefficient of travel_cost."
     elasticity_words = "Coefficient of travel_cost × mean cost of the observed visits."
+
+    def is_minus_one_over_b(self, sample: Sample) -> bool:
+        """Whether the surplus of a trip is −1/b at every parameter vector."""
+        del sample
+        return True
 
     def level(self, theta: FloatArray, sample: Sample) -> FloatArray:
         """Factor on exp(x'β) that makes it the expected rate, per parameter vector."""
@@ -64,13 +88,7 @@ class SemiLogCurve:
                     for block in row_blocks(theta, sample)
                 ]
             )[:, None]
-            price = price_column(theta, sample)[:, None]
-            visits = base * np.exp(price * fees)
-            bounded = np.where(price < 0, price, -1.0)
-            left = np.where(price < 0, visits / -bounded, np.inf)
-            slope = np.where(price == 0, 1.0, price)
-            lost = np.where(price == 0, base * fees, base * np.expm1(price * fees) / slope)
-        return Totals(visits=visits, left=left, lost=lost)
+        return exponential_totals(base, price_column(theta, sample)[:, None], fees)
 
     def elasticity(self, theta: FloatArray, sample: Sample) -> FloatArray:
         """Price coefficient times the mean cost of the observed visits."""
@@ -88,7 +106,7 @@ class SemiLogCurve:
         return np.asarray(level * np.exp(at_costs(theta, sample, costs)), dtype=float)
 
 
-class LinearCurve:
+class LinearCurve(FallingCurve):
     """Curve of a rate that is a straight line, zero beyond the choke price."""
 
     surplus_words = "Area under the predicted line up to the choke price ÷ predicted visits."

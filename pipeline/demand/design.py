@@ -10,6 +10,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 from scipy.optimize import linprog
 
 from pipeline.demand.sample import CONST, FloatArray, Sample
@@ -132,6 +133,33 @@ def separated_terms(sample: Sample) -> tuple[str, ...]:
         for term, value in zip(sample.terms, direction, strict=True)
         if abs(value) > _LOADING and term != CONST
     )
+
+
+def logit_separated_terms(
+    design: FloatArray, some: npt.NDArray[np.bool_], terms: tuple[str, ...]
+) -> tuple[str, ...]:
+    """Terms that tell rows with and without visits apart without error, so a logit has no maximum.
+
+    There is a combination of regressors that is never negative in rows with visits and never
+    positive in the others (Albert and Anderson, Biometrika 71, 1984). By a linear programme.
+    """
+    matrix = standardise(design).matrix if design.shape[1] > 1 else design
+    signed = np.where(some[:, None], matrix, -matrix)
+    solution = linprog(
+        -signed.sum(axis=0),
+        A_ub=-signed,
+        b_ub=np.zeros(len(signed)),
+        bounds=(-1, 1),
+    )
+    direction = np.zeros(len(terms)) if solution.x is None else solution.x
+    if signed.sum(axis=0) @ direction < _LOADING:
+        return ()
+    found = tuple(
+        term
+        for term, value in zip(terms, direction, strict=True)
+        if abs(value) > _LOADING and term != CONST
+    )
+    return found or terms
 
 
 def require_overlap(sample: Sample) -> None:

@@ -13,9 +13,10 @@ from typing import Protocol
 import numpy as np
 from scipy import special
 
-from pipeline.demand.sample import PRICE, FloatArray, Sample
+from pipeline.demand.sample import PRICE, BoolArray, FloatArray, Sample
 
 ALPHA = "alpha"
+DELTA = "delta"
 SMEARING = "smearing"
 
 
@@ -120,6 +121,10 @@ class Family(Protocol):
 
     def fit(self, sample: Sample, *, errors: str) -> FittedModel:
         """Fit to a sample; DemandError where it cannot be fitted at all."""
+        ...
+
+    def falls(self, theta: FloatArray, sample: Sample) -> BoolArray:
+        """Whether visits fall with cost, so that an area is bounded; per vector."""
         ...
 
     def predict(

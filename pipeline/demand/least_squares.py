@@ -12,6 +12,7 @@ import numpy as np
 from pipeline.demand.curves import LinearCurve, SemiLogCurve, index
 from pipeline.demand.design import caution_notes, require_fittable, standardise
 from pipeline.demand.family import SMEARING, FittedModel, squared_correlation
+from pipeline.demand.likelihood import cluster_notes, error_degrees
 from pipeline.demand.sample import FloatArray, Sample
 
 
@@ -21,11 +22,13 @@ class Linear(LinearCurve):
     name = "linear"
     label = "linear least squares of the rate"
     student = True
+    by_exposure = False
 
     def fit(self, sample: Sample, *, errors: str) -> FittedModel:
         """Fit to a sample; every row counts alike, whatever its population."""
         require_fittable(sample)
-        model = least_squares(self.name, sample, sample.rate * sample.per, errors)
+        weighted = weigh(sample) if self.by_exposure else sample
+        model = least_squares(self.name, weighted, sample.rate * sample.per, errors)
         predicted = self.predict(model.estimate, sample)[0] / sample.people
         return replace(model, r_squared=squared_correlation(sample.rate, predicted))
 
@@ -36,6 +39,7 @@ class LogLinear(SemiLogCurve):
     name = "log_linear"
     label = "least squares of the log rate"
     student = True
+    by_exposure = False
 
     def fit(self, sample: Sample, *, errors: str) -> FittedModel:
         """Fit to the rows with visits, and say how many had none."""
@@ -43,7 +47,8 @@ class LogLinear(SemiLogCurve):
         require_fittable(sample, rows=visited.nobs)
         require_fittable(visited)
         response = np.log(visited.rate)
-        model = _with_smearing(least_squares(self.name, visited, response, errors), visited)
+        weighted = weigh(visited) if self.by_exposure else visited
+        model = _with_smearing(least_squares(self.name, weighted, response, errors), weighted)
         predicted = self.predict(model.estimate, sample)[0] / sample.people
         empty = sample.nobs - visited.nobs
         note = (
@@ -83,17 +88,37 @@ def _with_smearing(model: FittedModel, visited: Sample) -> FittedModel:
 
 def with_visits(sample: Sample) -> Sample:
     """The rows with at least one visit."""
-    kept = sample.counts > 0
-    return replace(
-        sample,
-        zone_ids=tuple(z for z, keep in zip(sample.zone_ids, kept, strict=True) if keep),
-        design=sample.design[kept],
-        counts=sample.counts[kept],
-        exposure=sample.exposure[kept],
-        weight=sample.weight[kept],
-        people=sample.people[kept],
-        visits=sample.visits[kept],
-    )
+    return sample.rows(sample.counts > 0)
+
+
+class WeightedLinear(Linear):
+    """The line with each zone weighted by its exposure: rates of large zones are better known.
+
+    The variance of a zone's rate falls with its population (Bowes and Loomis, Land Economics 56,
+    1980).
+    """
+
+    name = "weighted_linear"
+    label = "weighted least squares of the rate"
+    by_exposure = True
+
+
+class WeightedLogLinear(LogLinear):
+    """The log rate with each zone weighted by its exposure.
+
+    The variance of a count's log is about one over the count; weights by visits would depend on
+    the response, so exposure × a common rate, which is exposure, stands for the expected count.
+    """
+
+    name = "weighted_log_linear"
+    label = "weighted least squares of the log rate"
+    by_exposure = True
+
+
+def weigh(sample: Sample) -> Sample:
+    """The sample with weights times exposure, averaging one."""
+    weight = sample.weight * sample.exposure
+    return replace(sample, weight=weight / weight.mean())
 
 
 def least_squares(name: str, sample: Sample, response: FloatArray, errors: str) -> FittedModel:
@@ -102,9 +127,15 @@ def least_squares(name: str, sample: Sample, response: FloatArray, errors: str) 
     from statsmodels.regression.linear_model import WLS
 
     standard = standardise(sample.design)
-    kind = "nonrobust" if errors == "model" else errors
-    result = WLS(response, standard.matrix, weights=sample.weight).fit(cov_type=kind, use_t=True)
+    regression = WLS(response, standard.matrix, weights=sample.weight)
+    if errors == "cluster" and sample.clusters is not None:
+        groups = {"groups": sample.clusters}
+        result = regression.fit(cov_type="cluster", cov_kwds=groups, use_t=True)
+    else:
+        kind = "nonrobust" if errors == "model" else errors
+        result = regression.fit(cov_type=kind, use_t=True)
     spread = np.asarray(result.cov_params(), dtype=float)
+    degrees = error_degrees(sample, errors)
     return FittedModel(
         model=name,
         site_id=sample.site_id,
@@ -112,10 +143,10 @@ def least_squares(name: str, sample: Sample, response: FloatArray, errors: str) 
         estimate=standard.back @ np.asarray(result.params, dtype=float),
         covariance=standard.back @ spread @ standard.back.T,
         nobs=sample.nobs,
-        degrees=float(sample.nobs - len(sample.terms)),
+        degrees=degrees if np.isfinite(degrees) else float(sample.nobs - len(sample.terms)),
         parameters=len(sample.terms) + 1,
         log_likelihood=float(result.llf),
         dispersion=float(result.scale),
         errors=errors,
-        notes=(*sample.notes, *caution_notes(sample)),
+        notes=(*sample.notes, *caution_notes(sample), *cluster_notes(sample, errors)),
     )

@@ -10,11 +10,13 @@ from abc import ABC, abstractmethod
 from dataclasses import dataclass, replace
 
 import numpy as np
+from scipy.linalg import block_diag
 from scipy.special import gammaln
 
 from pipeline.demand.covariance import covariance, leverages
 from pipeline.demand.curves import SemiLogCurve
 from pipeline.demand.design import (
+    Standardised,
     caution_notes,
     require_fittable,
     require_overlap,
@@ -22,7 +24,10 @@ from pipeline.demand.design import (
 )
 from pipeline.demand.family import FittedModel, squared_correlation
 from pipeline.demand.maximum import Maximum, maximise
-from pipeline.demand.sample import FloatArray, Sample
+from pipeline.demand.sample import FloatArray, IntArray, Sample
+from pipeline.demand.spread import Spread
+
+FEW_CLUSTERS = 40
 
 
 @dataclass(frozen=True)
@@ -33,6 +38,7 @@ class Rows:
     ----------
     counts, offset, weight : (n,) counts, log of exposure, weights that average one.
     design : (n, k).
+    zero : (n, m) regressors of the part about zeros, where the family has one.
     levels, place : distinct counts, and where each row's count stands among them: functions
         of the count alone are computed once per distinct count.
     """
@@ -42,12 +48,13 @@ class Rows:
     weight: FloatArray
     design: FloatArray
     levels: FloatArray
-    place: np.ndarray[tuple[int], np.dtype[np.intp]]
+    place: IntArray
     log_factorial: FloatArray
+    zero: FloatArray
 
     @classmethod
-    def of(cls, sample: Sample, design: FloatArray) -> Rows:
-        """Rows of a sample on a standardised design."""
+    def of(cls, sample: Sample, design: FloatArray, zero: tuple[int, ...] = ()) -> Rows:
+        """Rows of a sample on a standardised design; `zero`: columns of the part about zeros."""
         levels, place = np.unique(sample.counts, return_inverse=True)
         return cls(
             counts=sample.counts,
@@ -57,6 +64,21 @@ class Rows:
             levels=levels,
             place=place,
             log_factorial=gammaln(sample.counts + 1),
+            zero=design[:, list(zero)],
+        )
+
+    def weighted(self, weight: FloatArray) -> Rows:
+        """The same rows with other weights; rows of weight zero are gone."""
+        kept = weight > 0
+        return Rows(
+            counts=self.counts[kept],
+            offset=self.offset[kept],
+            weight=weight[kept],
+            design=self.design[kept],
+            levels=self.levels,
+            place=self.place[kept],
+            log_factorial=self.log_factorial[kept],
+            zero=self.zero[kept],
         )
 
     def mean(self, beta: FloatArray) -> FloatArray:
@@ -99,9 +121,63 @@ class LikelihoodFamily(SemiLogCurve, ABC):
     def information(self, theta: FloatArray, rows: Rows) -> FloatArray:
         """Expected information of each row about x'β, unweighted; (n,). For leverages."""
 
+    def restrict(self, sample: Sample) -> Sample:
+        """The rows that the family is about; the others are left out, with a note."""
+        return sample
+
+    def zero_columns(self, sample: Sample) -> tuple[int, ...]:
+        """Columns of the design in the part about zeros; most families have none."""
+        del sample
+        return ()
+
+    def further_terms(self, sample: Sample) -> tuple[str, ...]:
+        """Names of the parameters after the regressors' own."""
+        del sample
+        return self.extra_terms
+
+    def to_table(
+        self, theta: FloatArray, standard: Standardised, sample: Sample
+    ) -> tuple[FloatArray, FloatArray]:
+        """Parameters in the units of the table, and their Jacobian."""
+        size = len(sample.terms)
+        zero = list(self.zero_columns(sample))
+        extra, derivative = self.natural(theta, size + len(zero))
+        jacobian = block_diag(standard.back, standard.back[np.ix_(zero, zero)], np.diag(derivative))
+        regressors = jacobian[: size + len(zero), : size + len(zero)] @ theta[: size + len(zero)]
+        return np.concatenate([regressors, extra]), np.asarray(jacobian, dtype=float)
+
+    def to_standard(
+        self, estimate: FloatArray, standard: Standardised, sample: Sample
+    ) -> FloatArray:
+        """The way back from `to_table`: a start for another fit of the same rows."""
+        size = len(sample.terms)
+        zero = list(self.zero_columns(sample))
+        back = block_diag(standard.back, standard.back[np.ix_(zero, zero)])
+        regressors = np.linalg.solve(back, estimate[: len(back)])
+        extra = estimate[size + len(zero) :]
+        return np.concatenate([regressors, np.log(extra)])
+
     def natural(self, theta: FloatArray, size: int) -> tuple[FloatArray, FloatArray]:
         """Extra parameters as they are reported, and their derivatives; (extra,) each."""
         return theta[size:], np.ones(len(theta) - size)
+
+    @abstractmethod
+    def spread(self, estimate: FloatArray, sample: Sample) -> Spread:
+        """Distribution of each row's count, as the sampling lets it through."""
+
+    def at_bound(self, sample: Sample, errors: str) -> FittedModel | None:
+        """The fit where the maximum is at a bound and the family is a simpler one; else None."""
+        del sample, errors
+        return None
+
+    def no_maximum(self, problem: str, top: Maximum, sample: Sample) -> str:
+        """What to say where the climb found no maximum."""
+        del top, sample
+        return f"No verified maximum: {problem}."
+
+    def leverage(self, theta: FloatArray, rows: Rows) -> FloatArray:
+        """Each row's pull on its own prediction."""
+        return leverages(rows.design, rows.weight * self.information(theta, rows))
 
     def fit(self, sample: Sample, *, errors: str) -> FittedModel:
         """Fit to a sample.
@@ -109,38 +185,46 @@ class LikelihoodFamily(SemiLogCurve, ABC):
         Parameters
         ----------
         sample : rows of one site.
-        errors : 'model', 'HC0', 'HC1', 'HC2' or 'HC3'.
+        errors : 'model', 'HC0', 'HC1', 'HC2', 'HC3' or 'cluster'.
 
         Raises
         ------
         DemandError
             Too few rows, no visits, collinear regressors, separation.
         """
-        require_fittable(sample)
-        require_overlap(sample)
-        standard = standardise(sample.design)
-        rows = Rows.of(sample, standard.matrix)
+        used = self.restrict(sample)
+        require_fittable(sample, rows=used.nobs)
+        require_fittable(used)
+        require_overlap(used)
+        simpler = self.at_bound(used, errors)
+        if simpler is not None:
+            return simpler
+        standard = standardise(used.design)
+        rows = Rows.of(used, standard.matrix, self.zero_columns(used))
         top = climb(self, rows)
-        if top.problem:
-            return FittedModel.failed(self.name, sample, f"No verified maximum: {top.problem}.")
-        size = len(sample.terms)
-        extra, derivative = self.natural(top.theta, size)
-        back = standard.full_back(len(extra))
-        back[size:, size:] = np.diag(derivative)
-        weights = rows.weight * self.information(top.theta, rows)
+        problem = top.problem or self.runs_off(top.theta, rows)
+        if problem:
+            return FittedModel.failed(self.name, used, self.no_maximum(problem, top, used))
+        estimate, jacobian = self.to_table(top.theta, standard, used)
         spread = covariance(
             top.hessian,
             self.scores(top.theta, rows) * rows.weight[:, None],
-            leverages(rows.design, weights),
+            self.leverage(top.theta, rows),
             errors,
+            used.clusters,
         )
         return self._described(
-            sample,
-            estimate=np.concatenate([standard.back @ top.theta[:size], extra]),
-            spread=back @ spread @ back.T,
+            used,
+            estimate=estimate,
+            spread=jacobian @ spread @ jacobian.T,
             value=top.value,
             errors=errors,
         )
+
+    def runs_off(self, theta: FloatArray, rows: Rows) -> str:
+        """What is wrong with a supposed maximum that lies at no sensible place."""
+        del theta, rows
+        return ""
 
     def _described(
         self,
@@ -151,35 +235,64 @@ class LikelihoodFamily(SemiLogCurve, ABC):
         value: float,
         errors: str,
     ) -> FittedModel:
-        predicted = self.predict(estimate, sample)[0] / sample.people
+        expected = self.spread(estimate, sample).mean / sample.exposure
         model = FittedModel(
             model=self.name,
             site_id=sample.site_id,
-            terms=(*sample.terms, *self.extra_terms),
+            terms=(*sample.terms, *self.further_terms(sample)),
             estimate=estimate,
             covariance=spread,
             nobs=sample.nobs,
+            degrees=error_degrees(sample, errors),
             parameters=len(estimate),
             log_likelihood=value,
-            r_squared=squared_correlation(sample.rate, predicted),
+            r_squared=squared_correlation(sample.rate, expected),
             errors=errors,
-            notes=(*sample.notes, *caution_notes(sample)),
+            notes=(*sample.notes, *caution_notes(sample), *cluster_notes(sample, errors)),
         )
         return replace(model, dispersion=self.dispersion(model, sample))
 
-    @abstractmethod
     def dispersion(self, model: FittedModel, sample: Sample) -> float:
-        """How much the counts vary beyond the model's mean."""
+        """α or δ where the family has one; else Pearson's chi-square over degrees of freedom."""
+        if self.extra_terms:
+            return float(model.estimate[-1])
+        spread = self.spread(model.estimate, sample)
+        variance = np.maximum(spread.variance, 1e-12)
+        pearson = float(sample.weight @ ((sample.counts - spread.mean) ** 2 / variance))
+        return pearson / (sample.nobs - len(model.estimate))
+
+    def evaluate(self, theta: FloatArray, rows: Rows) -> tuple[float, FloatArray, FloatArray]:
+        """Weighted log-likelihood with gradient and Hessian."""
+        value = float(rows.weight @ self.log_likelihood(theta, rows))
+        return value, rows.weight @ self.scores(theta, rows), self.hessian(theta, rows)
 
 
-def climb(family: LikelihoodFamily, rows: Rows) -> Maximum:
-    """The verified maximum of a family's weighted log-likelihood, from its own start."""
+def error_degrees(sample: Sample, errors: str) -> float:
+    """Degrees of freedom of Student's t; infinite (normal) unless errors are by cluster."""
+    if errors != "cluster" or sample.clusters is None:
+        return np.inf
+    return float(len(np.unique(sample.clusters)) - 1)
+
+
+def cluster_notes(sample: Sample, errors: str) -> tuple[str, ...]:
+    """A caution where clusters are few.
+
+    Cameron and Miller, Journal of Human Resources 50, 2015.
+    """
+    if errors != "cluster" or sample.clusters is None:
+        return ()
+    groups = len(np.unique(sample.clusters))
+    if groups >= FEW_CLUSTERS:
+        return ()
+    return (f"Only {groups} clusters: errors by cluster are too small with so few.",)
+
+
+def climb(family: LikelihoodFamily, rows: Rows, start: FloatArray | None = None) -> Maximum:
+    """The verified maximum of a family's weighted log-likelihood, from its own start or another."""
 
     def value_gradient_hessian(theta: FloatArray) -> tuple[float, FloatArray, FloatArray]:
         # A step too far overflows; the line search sees a value that is not finite.
         with np.errstate(all="ignore"):
-            value = float(rows.weight @ family.log_likelihood(theta, rows))
-            gradient = rows.weight @ family.scores(theta, rows)
-            return value, gradient, family.hessian(theta, rows)
+            return family.evaluate(theta, rows)
 
-    return maximise(value_gradient_hessian, family.start(rows))
+    return maximise(value_gradient_hessian, family.start(rows) if start is None else start)

@@ -11,7 +11,7 @@ import pandas as pd
 from scipy import special
 
 from pipeline.demand.choice import Choice
-from pipeline.demand.family import ALPHA, FittedModel
+from pipeline.demand.family import ALPHA, DELTA, FittedModel
 from pipeline.demand.registry import FAMILIES
 from pipeline.demand.sample import FloatArray
 
@@ -22,8 +22,8 @@ def estimate_rows(model: FittedModel, confidence: float) -> pd.DataFrame:
     width = model.quantile(confidence) * errors
     low, high = model.estimate - width, model.estimate + width
     p_values = _p_values(model)
-    if model.terms[-1] == ALPHA and model.estimate[-1] > 0:
-        # α is positive: its interval is that of log α. Zero is its bound, so no test against it.
+    if model.terms[-1] in (ALPHA, DELTA) and model.estimate[-1] > 0:
+        # α (δ) is positive: its interval is that of log α. Zero is its bound, so there is no test.
         ratio = np.exp(width[-1] / model.estimate[-1])
         low[-1], high[-1] = model.estimate[-1] / ratio, model.estimate[-1] * ratio
     return pd.DataFrame(
@@ -46,7 +46,7 @@ def _p_values(model: FittedModel) -> FloatArray:
     normal = np.isinf(model.degrees)
     one_sided = special.ndtr(-statistic) if normal else special.stdtr(model.degrees, -statistic)
     p_values = np.asarray(2 * one_sided, dtype=float)
-    if model.terms[-1] == ALPHA:
+    if model.terms[-1] in (ALPHA, DELTA):
         p_values[-1] = np.nan
     return p_values
 
@@ -71,6 +71,7 @@ def fit_row(model: FittedModel, choice: Choice) -> dict[str, Any]:
         "converged": model.converged,
         "chosen": chosen,
         "errors": model.errors,
+        "degrees_of_freedom": model.degrees if np.isfinite(model.degrees) else np.nan,
         "note": " ".join(note for note in notes if note) or None,
     }
 
@@ -88,8 +89,7 @@ def fitted_models(estimates: pd.DataFrame, fit: pd.DataFrame) -> dict[tuple[str,
 def _model(rows: pd.DataFrame, one: dict[Hashable, Any]) -> FittedModel:
     covariance = np.array([_from_json(row) for row in rows["covariance"]])
     note = one["note"] if isinstance(one["note"], str) else ""
-    own = int(np.isfinite(np.diag(covariance)).sum())
-    student = FAMILIES[one["model"]].student
+    degrees = float(one["degrees_of_freedom"])
     return FittedModel(
         model=one["model"],
         site_id=one["site_id"],
@@ -97,7 +97,7 @@ def _model(rows: pd.DataFrame, one: dict[Hashable, Any]) -> FittedModel:
         estimate=rows["estimate"].to_numpy(dtype=float),
         covariance=covariance,
         nobs=int(one["nobs"]),
-        degrees=float(one["nobs"] - own) if student else np.inf,
+        degrees=degrees if np.isfinite(degrees) else np.inf,
         parameters=len(rows),
         log_likelihood=float(one["log_likelihood"]),
         dispersion=float(one["dispersion"]),

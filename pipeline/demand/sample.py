@@ -26,20 +26,28 @@ that take the Poisson variance at its word are therefore too small; robust error
 from __future__ import annotations
 
 import difflib
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
 from pipeline.errors import DemandError
+from pipeline.settings import DemandSettings
 
 FloatArray = npt.NDArray[np.float64]
+IntArray = npt.NDArray[np.intp]
+BoolArray = npt.NDArray[np.bool_]
 
 CONST = "const"
 PRICE = "travel_cost"
 RESPONSES = ("visits", "sampled_visits", "visits_per_1000", "trips")
 PER_ZONE_RATE = 1000.0
+ROW_ARRAYS = ("design", "counts", "exposure", "weight", "people", "visits")
+OPTIONAL_ARRAYS = ("clusters", "visits_se", "positions")
+SITE_EFFECT = "site:"
+CLUSTER_CODE = "cluster_code"
 
 
 @dataclass(frozen=True)
@@ -57,6 +65,16 @@ class Sample:
     visits: FloatArray
     per: float
     notes: tuple[str, ...]
+    # What not every study has; see `SampleOptions`.
+    zero_terms: tuple[str, ...] | None = None
+    clusters: IntArray | None = None
+    visits_se: FloatArray | None = None
+    positions: FloatArray | None = None
+
+    @property
+    def zonal(self) -> bool:
+        """Whether the rows are zones (else: records of persons)."""
+        return self.per == PER_ZONE_RATE
 
     @property
     def nobs(self) -> int:
@@ -78,9 +96,39 @@ class Sample:
         """Observed visits per year, expanded."""
         return float(self.visits.sum())
 
+    def rows(self, kept: npt.NDArray[Any]) -> Sample:
+        """Some of the rows: a mask, or positions (which may repeat)."""
+        index = np.arange(self.nobs)[kept]
+        taken = {
+            name: getattr(self, name)[index]
+            for name in (*ROW_ARRAYS, *OPTIONAL_ARRAYS)
+            if getattr(self, name) is not None
+        }
+        return replace(self, zone_ids=tuple(self.zone_ids[i] for i in index), **taken)
+
+
+def study_samples(
+    zone_table: pd.DataFrame | None, trip_table: pd.DataFrame | None, settings: DemandSettings
+) -> list[Sample]:
+    """The samples that the [demand] section of a study asks for."""
+    return build_samples(
+        zone_table,
+        trip_table,
+        settings.covariates,
+        zero_terms=settings.zero_part,
+        cluster=settings.cluster,
+        site_effects=settings.site_effects,
+    )
+
 
 def build_samples(
-    zone_table: pd.DataFrame | None, trip_table: pd.DataFrame | None, covariates: tuple[str, ...]
+    zone_table: pd.DataFrame | None,
+    trip_table: pd.DataFrame | None,
+    covariates: tuple[str, ...],
+    *,
+    zero_terms: tuple[str, ...] | None = None,
+    cluster: str | None = None,
+    site_effects: bool = False,
 ) -> list[Sample]:
     """One sample per site, sites in alphabetical order; the records where there are any.
 
@@ -89,6 +137,11 @@ def build_samples(
     zone_table : one row per zone and site, or None.
     trip_table : one row per record, or None; where both are given the records are used.
     covariates : columns that stand in the regression beside the travel cost.
+    zero_terms : regressors beside the constant in the part about zeros of a hurdle or
+        zero-inflated model; None leaves it to the model.
+    cluster : column whose equal values make a cluster.
+    site_effects : add a constant for every site but the first; the samples of the sites can
+        then be stacked (`stacked`).
 
     Raises
     ------
@@ -102,12 +155,88 @@ def build_samples(
             "run the join stage or bring one ([market] zone_table or trip_table)."
         )
     _check_covariates(table, covariates)
-    build = _zone_sample if trip_table is None else _trip_sample
-    by_site = table.groupby("site_id", sort=True)
-    samples = [build(str(site_id), rows, covariates) for site_id, rows in by_site]
-    if not samples:
+    if table.empty:
         raise DemandError("the finished table has no rows; nothing can be fitted to it.")
-    return samples
+    table, covariates = _with_site_effects(table, covariates, wanted=site_effects)
+    table = _with_cluster_codes(table, cluster)
+    build = _zone_sample if trip_table is None else _trip_sample
+    return [
+        replace(
+            build(str(site_id), rows, covariates),
+            zero_terms=_checked_zero_terms(zero_terms, covariates),
+        )
+        for site_id, rows in table.groupby("site_id", sort=True)
+    ]
+
+
+def stacked(samples: list[Sample]) -> Sample:
+    """The samples of several sites as one, to be fitted together."""
+    arrays: dict[str, Any] = {
+        name: None
+        if any(getattr(s, name) is None for s in samples)
+        else np.concatenate([getattr(s, name) for s in samples])
+        for name in (*ROW_ARRAYS, *OPTIONAL_ARRAYS)
+    }
+    notes = [f"Stacked with a constant of its own for each of {len(samples)} sites."]
+    notes += [f"{s.site_id}: {note}" for s in samples for note in s.notes]
+    return replace(
+        samples[0],
+        site_id="all sites",
+        zone_ids=tuple(zone for s in samples for zone in s.zone_ids),
+        notes=tuple(notes),
+        **arrays,
+    )
+
+
+def _with_site_effects(
+    table: pd.DataFrame, covariates: tuple[str, ...], *, wanted: bool
+) -> tuple[pd.DataFrame, tuple[str, ...]]:
+    if not wanted:
+        return table, covariates
+    others = sorted(table["site_id"].astype(str).unique())[1:]
+    effects = {
+        f"{SITE_EFFECT}{site}": table["site_id"].astype(str).eq(site).astype(float)
+        for site in others
+    }
+    return table.assign(**effects), (*covariates, *effects)
+
+
+def _with_cluster_codes(table: pd.DataFrame, cluster: str | None) -> pd.DataFrame:
+    if cluster is None:
+        return table
+    if cluster not in table:
+        raise DemandError(
+            f"demand.cluster names {cluster!r}, which is no column of the finished table; "
+            "name one whose equal values belong together (zone_id)."
+        )
+    codes, _ = pd.factorize(table[cluster], use_na_sentinel=False)
+    return table.assign(**{CLUSTER_CODE: codes})
+
+
+def _checked_zero_terms(
+    zero_terms: tuple[str, ...] | None, covariates: tuple[str, ...]
+) -> tuple[str, ...] | None:
+    if zero_terms is None:
+        return None
+    strange = [term for term in zero_terms if term not in (PRICE, *covariates)]
+    if strange:
+        raise DemandError(
+            f"demand.zero_part names {strange[0]!r}, which is neither {PRICE!r} nor one of "
+            "demand.covariates; add it there or remove it."
+        )
+    return (CONST, *zero_terms)
+
+
+def _optional_arrays(used: pd.DataFrame) -> dict[str, Any]:
+    """Clusters, errors of the visits and positions, as far as the table has them."""
+    found: dict[str, Any] = {}
+    if CLUSTER_CODE in used:
+        found["clusters"] = used[CLUSTER_CODE].to_numpy(dtype=np.intp)
+    if "visits_se" in used and used["visits_se"].notna().all():
+        found["visits_se"] = used["visits_se"].to_numpy(dtype=float)
+    if {"lon", "lat"} <= set(used) and used[["lon", "lat"]].notna().all(axis=None):
+        found["positions"] = used[["lon", "lat"]].to_numpy(dtype=float)
+    return found
 
 
 def _check_covariates(table: pd.DataFrame, covariates: tuple[str, ...]) -> None:
@@ -150,6 +279,7 @@ def _zone_sample(site_id: str, rows: pd.DataFrame, covariates: tuple[str, ...]) 
         visits=visits,
         per=PER_ZONE_RATE,
         notes=(*notes, *expansion_notes),
+        **_optional_arrays(used),
     )
 
 
@@ -175,6 +305,7 @@ def _trip_sample(site_id: str, rows: pd.DataFrame, covariates: tuple[str, ...]) 
         visits=used["visits"].to_numpy(dtype=float),
         per=1.0,
         notes=notes,
+        **_optional_arrays(used),
     )
 
 

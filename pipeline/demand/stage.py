@@ -6,15 +6,17 @@ from dataclasses import replace
 
 import pandas as pd
 
+from pipeline.demand.bootstrap import bootstrap_covariance
 from pipeline.demand.choice import Choice, choose, p_words
+from pipeline.demand.diagnostics import diagnose, placed
 from pipeline.demand.family import FittedModel
 from pipeline.demand.registry import FAMILIES
-from pipeline.demand.rows import estimate_rows, fit_row
-from pipeline.demand.sample import PRICE, Sample, build_samples
+from pipeline.demand.rows import estimate_rows, fit_row, fitted_models
+from pipeline.demand.sample import PRICE, Sample, stacked, study_samples
 from pipeline.errors import DemandError
-from pipeline.settings import DemandSettings
+from pipeline.settings import TEST_PAIRS, DemandSettings
 from pipeline.study import Study
-from pipeline.tables import Estimates, Fit
+from pipeline.tables import Diagnostics, Estimates, Fit
 
 
 def demand(
@@ -41,14 +43,22 @@ def demand(
     settings = study.demand
     confidence = study.surplus.confidence
     estimates, fits, reasons = [], [], []
-    for sample in build_samples(zone_table, trip_table, settings.covariates):
+    for sites, sample in _fitted_samples(zone_table, trip_table, settings):
         models: dict[str, FittedModel] = {
-            name: _fit(name, sample, settings) for name in settings.models
+            name: _fit(name, sample, study) for name in settings.models
         }
-        choice = choose(models, sample, how=settings.choose, level=settings.test_level)
-        for model in models.values():
-            estimates.append(estimate_rows(model, confidence))
-            fits.append(fit_row(model, choice))
+        choice = choose(
+            models,
+            sample,
+            how=settings.choose,
+            level=settings.test_level,
+            pair=TEST_PAIRS[settings.sampling],
+        )
+        for site_id in sites:
+            for model in models.values():
+                of_site = replace(model, site_id=site_id)
+                estimates.append(estimate_rows(of_site, confidence))
+                fits.append(fit_row(of_site, choice))
         reasons.append(choice)
     _require_choice(reasons)
     return (
@@ -57,12 +67,88 @@ def demand(
     )
 
 
-def _fit(name: str, sample: Sample, settings: DemandSettings) -> FittedModel:
+def demand_with_diagnostics(
+    zone_table: pd.DataFrame | None,
+    trip_table: pd.DataFrame | None,
+    zones: pd.DataFrame | None,
+    *,
+    study: Study,
+) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
+    """`demand`, with what speaks for and against each model.
+
+    Parameters
+    ----------
+    zones : where the zones lie, for the spatial correlation of the residuals; or None.
+
+    Returns
+    -------
+    `estimates`, `fit`, `diagnostics`.
+    """
+    estimates, fit = demand(zone_table, trip_table, study=study)
+    found = []
+    models = fitted_models(estimates, fit)
+    for sites, sample in _fitted_samples(zone_table, trip_table, study.demand):
+        for site_id in sites[:1]:
+            own = {name: model for (site, name), model in models.items() if site == site_id}
+            chosen = fit.loc[(fit["site_id"] == site_id) & fit["chosen"], "model"]
+            found.append(
+                diagnose(
+                    replace(placed(sample, zones), site_id=site_id),
+                    own,
+                    chosen.iloc[0] if len(chosen) else None,
+                    folds=study.demand.folds,
+                    seed=study.study.seed,
+                )
+            )
+    rows = pd.concat(found, ignore_index=True)
+    return estimates, fit, Diagnostics.checked(rows, source="demand: diagnostics")
+
+
+def _fitted_samples(
+    zone_table: pd.DataFrame | None, trip_table: pd.DataFrame | None, settings: DemandSettings
+) -> list[tuple[tuple[str, ...], Sample]]:
+    """What is fitted together, with the sites that it is about: each by itself, or all."""
+    samples = study_samples(zone_table, trip_table, settings)
+    sites = tuple(sample.site_id for sample in samples)
+    if settings.site_effects and len(samples) > 1:
+        return [(sites, stacked(samples))]
+    return [((sample.site_id,), sample) for sample in samples]
+
+
+def _fit(name: str, sample: Sample, study: Study) -> FittedModel:
+    errors = study.demand.errors
+    sampling = study.demand.sampling
     try:
-        model = FAMILIES[name].fit(sample, errors=settings.errors)
+        model = FAMILIES[name].fit(sample, errors="HC3" if errors == "bootstrap" else errors)
     except DemandError as error:
-        model = FittedModel.failed(name, sample, str(error))
-    return replace(model, errors=settings.errors)
+        return replace(FittedModel.failed(name, sample, str(error)), errors=errors)
+    model = replace(model, errors=model.errors or errors)
+    if model.converged and errors == "bootstrap":
+        count, seed = study.surplus.bootstrap or 500, study.study.seed
+        model = bootstrap_covariance(model, sample, count=count, seed=seed)
+    return replace(model, notes=(*model.notes, *sampling_notes(name, sample, sampling)))
+
+
+def sampling_notes(name: str, sample: Sample, sampling: str) -> tuple[str, ...]:
+    """A caution where the model is not made for how the records came about."""
+    if sampling == "on_site" and not name.startswith("on_site"):
+        return (
+            (
+                "Naive for records of people met on the site: who comes often is met often, and "
+                "this model takes them as drawn evenly; demand and surplus come out too large."
+            ),
+        )
+    if sampling == "visitors" and not name.startswith(("truncated", "log_", "weighted_log")):
+        return ("Naive for records of visitors only: it expects people without a visit, too.",)
+    nobody = not sample.zonal and bool((sample.counts > 0).all())
+    if sampling == "everybody" and nobody and not name.startswith(("truncated", "on_site")):
+        return (
+            (
+                "Every record has a trip, so the records look like a sample of visitors; say so "
+                "in demand.sampling and use truncated or on-site models."
+            ),
+        )
+    return ()
 
 
 def _require_choice(choices: list[Choice]) -> None:
@@ -71,9 +157,9 @@ def _require_choice(choices: list[Choice]) -> None:
         raise DemandError(f"no demand model can be used at any of {len(choices)} site(s): {first}")
 
 
-def summarise_demand(outputs: tuple[pd.DataFrame, pd.DataFrame]) -> str:
+def summarise_demand(outputs: tuple[pd.DataFrame, ...]) -> str:
     """The part after the colon of the stage's summary line."""
-    estimates, fit = outputs
+    estimates, fit = outputs[:2]
     chosen = fit[fit["chosen"]]
     first = chosen.iloc[0]
     rows = estimates[estimates["term"] == PRICE]

@@ -10,7 +10,7 @@ import pandas as pd
 
 from pipeline.demand.registry import FAMILIES
 from pipeline.demand.rows import fitted_models
-from pipeline.demand.sample import build_samples
+from pipeline.demand.sample import study_samples
 from pipeline.study import Study
 from pipeline.surplus.draws import parameter_draws
 
@@ -52,7 +52,7 @@ def fitted_curves(
     """
     samples = {
         sample.site_id: sample
-        for sample in build_samples(zone_table, trip_table, study.demand.covariates)
+        for sample in study_samples(zone_table, trip_table, study.demand)
     }
     unit = PER_ZONE if trip_table is None else 1.0
     tails = np.array([1 - study.surplus.confidence, 1 + study.surplus.confidence]) / 2

@@ -81,7 +81,7 @@ def _times(factor: FloatArray, area: FloatArray) -> FloatArray:
 
 def default_fees(model: FittedModel, sample: Sample) -> FloatArray:
     """Equal round steps from no fee to about the one that keeps nine visits in ten away."""
-    if model.price_coefficient >= 0:
+    if not _falls(model, sample):
         return np.zeros(1)
     low, high = 0.0, float(sample.price.max()) or 1.0
     while _share(model, sample, high) > 1 - KEPT_AWAY:
@@ -94,6 +94,17 @@ def default_fees(model: FittedModel, sample: Sample) -> FloatArray:
             high = middle
     step = nice_step(high / STEPS)
     return np.array([float(f"{step * i:.10g}") for i in range(STEPS + 1)])
+
+
+def _falls(model: FittedModel, sample: Sample) -> bool:
+    return bool(FAMILIES[model.model].falls(model.estimate[None, :], sample)[0])
+
+
+def fee_steps(model: FittedModel, sample: Sample, fees: tuple[float, ...]) -> FloatArray:
+    """The study's fees with none before them, or the default; none alone where demand rises."""
+    if not _falls(model, sample):
+        return np.zeros(1)
+    return np.array(sorted({0.0, *fees})) if fees else default_fees(model, sample)
 
 
 def _share(model: FittedModel, sample: Sample, fee: float) -> float:
@@ -113,10 +124,8 @@ def fee_rows(
 ) -> pd.DataFrame:
     """Rows of `fee_schedule` for one site; only the one without a fee where demand rises."""
     fees = settings.fees
-    steps = np.array(sorted({0.0, *fees})) if fees else default_fees(model, sample)
-    falls = model.price_coefficient < 0
-    if not falls:
-        steps = np.zeros(1)
+    steps = fee_steps(model, sample, fees)
+    falls = _falls(model, sample)
     point = fee_response(model, sample, steps)
     drawn = fee_response(model, sample, steps, draws=draws)
     columns: dict[str, object] = {"site_id": sample.site_id, "fee": steps}

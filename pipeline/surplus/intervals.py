@@ -1,91 +1,164 @@
-"""Intervals of the measures: delta method, and simulation from parameter draws."""
+"""Intervals of the measures: delta method, Fieller, parameter draws, bootstrap replicates."""
 
 from __future__ import annotations
 
 from typing import Any
 
 import numpy as np
+from scipy.linalg import block_diag
 
-from pipeline.demand.family import FittedModel
-from pipeline.demand.registry import FAMILIES
-from pipeline.demand.sample import PRICE, FloatArray, Sample
+from pipeline.demand.curves import LinearCurve, SemiLogCurve
+from pipeline.demand.family import FittedModel, mean_regressors
+from pipeline.demand.sample import PRICE, FloatArray
 from pipeline.surplus.measures import (
     ANNUAL,
     AREAS,
+    CHOKE,
     PER_PERSON,
     PER_TRIP,
     VISITS_OBSERVED,
+    Valuation,
     measure_notes,
     measure_values,
 )
+from pipeline.surplus.ratios import fieller
 
 DELTA = "delta"
 SIMULATED = "simulated"
+FIELLER = "fieller"
+BOOTSTRAP = "bootstrap"
 OBSERVED = "observed"
 _STEP = 1e-4
 
 Row = dict[str, Any]
 
 
-def delta_rows(model: FittedModel, sample: Sample, confidence: float) -> list[Row]:
+def delta_rows(model: FittedModel, valued: Valuation, confidence: float) -> list[Row]:
     """Each measure at the estimates, with the interval of the delta method.
 
-    The gradient is taken by central differences over a ten-thousandth of each standard error.
+    The gradient is taken by central differences over a ten-thousandth of each standard error. The
+    annual visits are one more parameter, where their standard error is known.
     """
-    family = FAMILIES[model.model]
     free = np.flatnonzero(np.isfinite(np.diag(model.covariance)))
-    steps = np.zeros((len(free), len(model.terms)))
-    steps[np.arange(len(free)), free] = _STEP * model.std_error[free]
-    points = np.vstack([model.estimate, model.estimate + steps, model.estimate - steps])
-    covariance = model.covariance[np.ix_(free, free)]
-    notes = measure_notes(family, sample)
+    errors = np.append(model.std_error[free], valued.visits_se)
+    steps = np.zeros((len(errors), len(model.terms) + 1))
+    steps[np.arange(len(free)), free] = _STEP * errors[:-1]
+    steps[-1, -1] = _STEP * errors[-1]
+    here = np.append(model.estimate, valued.sample.annual_visits)
+    points = np.vstack([here, here + steps, here - steps])
+    own = model.covariance[np.ix_(free, free)]
+    covariance = block_diag(own, np.array([[errors[-1] ** 2]]))
+    notes = measure_notes(valued)
     rows = []
-    for measure, values in measure_values(family, sample, points).items():
-        if measure in AREAS and model.price_coefficient >= 0:
+    for measure, values in measure_values(valued, points[:, :-1], points[:, -1]).items():
+        if measure in AREAS and not has_area(model, valued):
             rows.append(_row(measure, DELTA, note=no_area_words(model)))
             continue
-        if measure == VISITS_OBSERVED:
-            rows.append(_row(measure, OBSERVED, float(values[0]), note=notes[measure]))
-            continue
-        up, down = values[1 : len(free) + 1], values[len(free) + 1 :]
-        with np.errstate(invalid="ignore"):
-            gradient = (up - down) / (2 * _STEP * model.std_error[free])
+        up, down = values[1 : len(errors) + 1], values[len(errors) + 1 :]
+        with np.errstate(invalid="ignore", divide="ignore"):
+            gradient = np.where(errors > 0, (up - down) / (2 * _STEP * errors), 0.0)
             variance = float(gradient @ covariance @ gradient)
         error = float(np.sqrt(variance)) if np.isfinite(variance) else np.nan
-        width = model.quantile(confidence) * error
-        value = float(values[0])
-        rows.append(
-            _row(measure, DELTA, value, value - width, value + width, error, note=notes[measure])
-        )
+        rows.append(_delta_row(measure, float(values[0]), error, model, confidence, notes[measure]))
     return rows
+
+
+def _delta_row(
+    measure: str, value: float, error: float, model: FittedModel, confidence: float, note: str
+) -> Row:
+    width = model.quantile(confidence) * error
+    if measure != VISITS_OBSERVED:
+        return _row(measure, DELTA, value, value - width, value + width, error, note=note)
+    if error == 0:
+        return _row(measure, OBSERVED, value, note=note)
+    return _row(measure, OBSERVED, value, max(value - width, 0.0), value + width, error, note=note)
+
+
+def fieller_rows(model: FittedModel, valued: Valuation, confidence: float) -> list[Row]:
+    """Fieller's interval of −1/b and of what is a multiple of it; of a line, of its choke cost."""
+    quantile = model.quantile(confidence)
+    place = model.terms.index(PRICE)
+    variance = float(model.covariance[place, place])
+    family, sample = valued.family, valued.sample
+    if not has_area(model, valued):
+        return []
+    if isinstance(family, SemiLogCurve) and family.is_minus_one_over_b(sample):
+        spread = np.array([[0.0, 0.0], [0.0, variance]])
+        low, high = fieller(-1.0, model.price_coefficient, spread, quantile)
+        visits = sample.annual_visits
+        scale = {PER_TRIP: 1.0, ANNUAL: visits, PER_PERSON: visits / sample.people.sum()}
+        value = -1 / model.price_coefficient
+        note = "Fieller: −1 / (b ± z × standard error)."
+        known = " The visits are taken as known." if valued.visits_se else ""
+    elif isinstance(family, LinearCurve):
+        mean = mean_regressors(sample)
+        mean[sample.terms.index(PRICE)] = 0.0
+        above = np.zeros(len(model.terms))
+        above[: len(mean)] = mean
+        below = np.zeros_like(above)
+        below[place] = -1.0
+        both = np.vstack([above, below])
+        spread = both @ model.covariance @ both.T
+        numerator, denominator = (float(v) for v in both @ model.estimate)
+        low, high = fieller(numerator, denominator, spread, quantile)
+        scale, value, known = {CHOKE: 1.0}, numerator / denominator, ""
+        note = "Fieller, of the ratio of two estimates."
+    else:
+        return []
+    open_end = "" if np.isfinite(high) else " The interval has no finite upper end."
+    return [
+        _row(
+            measure,
+            FIELLER,
+            value * times,
+            low * times,
+            high * times,
+            note=note + (known if measure != PER_TRIP else "") + open_end,
+        )
+        for measure, times in scale.items()
+    ]
 
 
 def simulated_rows(
-    model: FittedModel, sample: Sample, draws: FloatArray, confidence: float
+    model: FittedModel,
+    valued: Valuation,
+    draws: FloatArray,
+    confidence: float,
+    *,
+    seed: int,
+    method: str = SIMULATED,
+    said: str = "",
 ) -> list[Row]:
-    """Median and percentiles of each measure over parameter draws.
+    """Median and percentiles of each measure over parameter draws, or bootstrap replicates.
 
-    A draw whose price coefficient is not negative bounds no area and counts as infinite: where
-    there are enough of them the interval has no upper end. No standard error is given: the
-    ratio −1/b has no variance.
+    A draw whose demand does not fall bounds no area and counts as infinite: where there are
+    enough of them the interval has no upper end. No standard error is given: the ratio −1/b has
+    no variance. The annual visits are drawn, too, where their standard error is known.
     """
-    family = FAMILIES[model.model]
-    wrong = float(np.mean(draws[:, model.terms.index(PRICE)] >= 0))
-    said = f"{wrong:.2%} of the draws have a price coefficient that is not negative."
-    notes = measure_notes(family, sample)
+    wrong = float(np.mean(~valued.family.falls(draws, valued.sample)))
+    words = f"{wrong:.2%} of the draws have a price coefficient that is not negative.{said}"
+    kind = "draws" if method == SIMULATED else "bootstrap replicates"
+    normal = np.random.default_rng([seed, 7]).standard_normal(len(draws))
+    visits = np.maximum(valued.sample.annual_visits + valued.visits_se * normal, 0.0)
+    notes = measure_notes(valued)
     rows = []
-    for measure, values in measure_values(family, sample, draws).items():
+    for measure, values in measure_values(valued, draws, visits).items():
         if measure == VISITS_OBSERVED:
             continue
-        if measure in AREAS and model.price_coefficient >= 0:
-            rows.append(_row(measure, SIMULATED, note=no_area_words(model)))
+        if measure in AREAS and not has_area(model, valued):
+            rows.append(_row(measure, method, note=no_area_words(model)))
             continue
         median, low, high = percentiles(values, confidence)
-        note = f"{notes[measure]} Median of {len(draws):,} draws. {said}"
+        note = f"{notes[measure]} Median of {len(draws):,} {kind}. {words}"
         if not np.isfinite(high):
             note += " The interval has no finite upper end."
-        rows.append(_row(measure, SIMULATED, median, low, high, note=note))
+        rows.append(_row(measure, method, median, low, high, note=note))
     return rows
+
+
+def has_area(model: FittedModel, valued: Valuation) -> bool:
+    """Whether visits fall with cost at the estimates, so that there is an area to value."""
+    return bool(valued.family.falls(model.estimate[None, :], valued.sample)[0])
 
 
 def percentiles(values: FloatArray, confidence: float) -> tuple[float, float, float]:
@@ -97,6 +170,11 @@ def percentiles(values: FloatArray, confidence: float) -> tuple[float, float, fl
 
 def no_area_words(model: FittedModel) -> str:
     """Why a model without a falling demand has no surplus."""
+    if model.price_coefficient < 0:
+        return (
+            "No finite surplus: the chance of any trip does not fall with cost (terms 'any:'), so "
+            "no area under the curve of expected visits is bounded."
+        )
     return (
         f"No finite surplus: the price coefficient is {model.price_coefficient:.4g}, not negative. "
         "Visits do not fall with cost in these data, so no area under the curve is bounded."

@@ -2,19 +2,36 @@
 
 from __future__ import annotations
 
+from concurrent.futures import Executor
+from typing import Any
+
 import pandas as pd
 
-from pipeline.demand import Sample, build_samples, fitted_models
+from pipeline.demand import Sample, fitted_models, study_samples
+from pipeline.demand.bootstrap import replicates
 from pipeline.demand.family import FittedModel
+from pipeline.demand.mixed_curve import MixedCurve
+from pipeline.demand.registry import FAMILIES
 from pipeline.demand.sample import FloatArray
 from pipeline.errors import SurplusError
 from pipeline.study import Study
 from pipeline.surplus.draws import parameter_draws
-from pipeline.surplus.fees import fee_rows
-from pipeline.surplus.intervals import DELTA, SIMULATED, delta_rows, missing_rows, simulated_rows
-from pipeline.surplus.measures import ANNUAL, PER_TRIP, measure_units
+from pipeline.surplus.fees import fee_rows, fee_steps
+from pipeline.surplus.intervals import (
+    BOOTSTRAP,
+    DELTA,
+    SIMULATED,
+    delta_rows,
+    fieller_rows,
+    missing_rows,
+    simulated_rows,
+)
+from pipeline.surplus.measures import ANNUAL, PER_TRIP, Valuation, measure_units
 from pipeline.surplus.zones import every_zone, zone_rows
 from pipeline.tables import FeeSchedule, Surplus, ZoneSurplus
+
+#: Draws × rows of a model whose area is integrated numerically; more would take minutes.
+MOST_INTEGRALS = 3_000_000
 
 
 def surplus(
@@ -44,13 +61,14 @@ def surplus(
         The estimates belong to another finished table, or none of them was chosen.
     """
     table = trip_table if trip_table is not None else zone_table
-    samples = {s.site_id: s for s in build_samples(zone_table, trip_table, study.demand.covariates)}
+    samples = {s.site_id: s for s in study_samples(zone_table, trip_table, study.demand)}
     picked = {(str(s), str(m)) for s, m in fit.loc[fit["chosen"], ["site_id", "model"]].to_numpy()}
     values, fees, zones = [], [], []
     for key, model in fitted_models(estimates, fit).items():
         sample = _sample_of(model, samples)
-        draws = _draws(model, study)
-        values.append(_value_rows(model, sample, draws, study).assign(chosen=key in picked))
+        draws = _draws(model, sample, study)
+        rows = _value_rows(model, sample, draws, study, replicated=key in picked)
+        values.append(rows.assign(chosen=key in picked))
         if key in picked and draws is not None:
             fees.append(fee_rows(model, sample, draws, settings=study.surplus))
             zones.append(zone_rows(model, sample))
@@ -63,10 +81,15 @@ def surplus(
     )
 
 
-def _draws(model: FittedModel, study: Study) -> FloatArray | None:
+def _draws(model: FittedModel, sample: Sample, study: Study) -> FloatArray | None:
+    """Parameter draws; fewer where each is a numerical integral over many rows."""
     if not model.converged:
         return None
-    return parameter_draws(model, draws=study.surplus.draws, seed=study.study.seed)
+    draws = study.surplus.draws
+    family = FAMILIES[model.model]
+    if isinstance(family, MixedCurve) and not family.is_minus_one_over_b(sample):
+        draws = max(1000, min(draws, MOST_INTEGRALS // max(sample.nobs, 1)))
+    return parameter_draws(model, draws=draws, seed=study.study.seed)
 
 
 def _sample_of(model: FittedModel, samples: dict[str, Sample]) -> Sample:
@@ -80,20 +103,65 @@ def _sample_of(model: FittedModel, samples: dict[str, Sample]) -> Sample:
 
 
 def _value_rows(
-    model: FittedModel, sample: Sample, draws: FloatArray | None, study: Study
+    model: FittedModel,
+    sample: Sample,
+    draws: FloatArray | None,
+    study: Study,
+    *,
+    replicated: bool,
 ) -> pd.DataFrame:
-    """Rows of `surplus` for one model at one site."""
-    confidence = study.surplus.confidence
+    """Rows of `surplus` for one model at one site; bootstrapped where it is the chosen one."""
+    confidence, seed = study.surplus.confidence, study.study.seed
     if draws is None:
         rows = missing_rows(model)
     else:
-        rows = delta_rows(model, sample, confidence)
-        rows += simulated_rows(model, sample, draws, confidence)
+        valued = _valuation(model, sample, study)
+        rows = delta_rows(model, valued, confidence)
+        rows += fieller_rows(model, valued, confidence)
+        rows += simulated_rows(model, valued, draws, confidence, seed=seed)
+        if replicated and study.surplus.bootstrap:
+            rows += bootstrap_rows(model, valued, study)
     units = measure_units(study.study.currency)
     frame = pd.DataFrame(rows)
     return frame.assign(
         model=model.model, site_id=model.site_id, unit=frame["measure"].map(units)
     ).sort_values("measure", key=lambda names: names.map(list(units).index), kind="stable")
+
+
+def _valuation(model: FittedModel, sample: Sample, study: Study) -> Valuation:
+    income = study.surplus.income
+    return Valuation(
+        family=FAMILIES[model.model],
+        sample=sample,
+        fees=fee_steps(model, sample, study.surplus.fees),
+        income=income if income in sample.terms else None,
+        income_unit=study.surplus.income_unit,
+    )
+
+
+def bootstrap_rows(
+    model: FittedModel, valued: Valuation, study: Study, executor: Executor | None = None
+) -> list[dict[str, Any]]:
+    """Intervals of every measure from refits to drawn rows; the visits stay as observed."""
+    drawn = replicates(
+        model,
+        valued.sample,
+        count=study.surplus.bootstrap,
+        seed=study.study.seed,
+        executor=executor,
+    )
+    if len(drawn.theta) < 2:
+        return []
+    said = f" {drawn.failed:,} more had no verified fit." if drawn.failed else ""
+    return simulated_rows(
+        model,
+        valued,
+        drawn.theta,
+        study.surplus.confidence,
+        seed=study.study.seed,
+        method=BOOTSTRAP,
+        said=said,
+    )
 
 
 def summarise_surplus(outputs: tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]) -> str:

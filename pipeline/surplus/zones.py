@@ -18,7 +18,7 @@ def zone_rows(model: FittedModel, sample: Sample) -> pd.DataFrame:
     less from a village does not colour the map and no small count can be worked back from it.
     """
     visits, area = FAMILIES[model.model].predict(model.estimate, sample)
-    falls = model.price_coefficient < 0
+    falls = FAMILIES[model.model].falls(model.estimate[None, :], sample)[0]
     scale = sample.annual_visits / visits.sum() if visits.sum() > 0 else 0.0
     rows = pd.DataFrame(
         {

@@ -18,8 +18,19 @@ SAMPLE = bare_sample([30, 20, 1], [2, 5, 20], [1000, 2000, 500])
 THETA = {
     "poisson": np.array([-3.0, -0.2]),
     "negative_binomial": np.array([-3.0, -0.2, 0.7]),
+    "negative_binomial_1": np.array([-3.0, -0.2, 0.7]),
+    "quasi_poisson": np.array([-3.0, -0.2]),
+    "zero_inflated_poisson": np.array([-3.0, -0.2, 0.4]),
+    "zero_inflated_negative_binomial": np.array([-3.0, -0.2, 0.4, 0.7]),
+    "truncated_poisson": np.array([-3.0, -0.2]),
+    "truncated_negative_binomial": np.array([-3.0, -0.2, 0.7]),
+    "on_site_poisson": np.array([-3.0, -0.2]),
+    "on_site_negative_binomial": np.array([-3.0, -0.2, 0.7]),
+    "hurdle": np.array([-3.0, -0.2, 0.5, -0.15, 0.7]),
     "log_linear": np.array([-3.0, -0.2, 1.3]),
     "linear": np.array([40.0, -2.5]),
+    "weighted_log_linear": np.array([-3.0, -0.2, 1.3]),
+    "weighted_linear": np.array([40.0, -2.5]),
 }
 
 

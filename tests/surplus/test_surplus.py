@@ -195,7 +195,12 @@ def test_other_units_give_the_same_surplus_to_six_digits(change: dict[str, float
     for name, factor in change.items():
         scaled[name] *= factor
     money = change.get("travel_cost", 1.0)
-    _assert_same(valued(plain), valued(scaled), money)
+    unit = money / change.get("household_income", 1.0)
+    study = a_study(
+        demand={"covariates": ("household_income",), "models": MODELS},
+        surplus={"income_unit": unit},
+    )
+    _assert_same(valued(plain), valued(scaled, study), money)
 
 
 def test_unsorted_rows_and_a_shifted_covariate_give_the_same_surplus() -> None:
@@ -203,7 +208,10 @@ def test_unsorted_rows_and_a_shifted_covariate_give_the_same_surplus() -> None:
     other = plain.sample(frac=1, random_state=1)
     other["household_income"] += 123_456.0
     one, two = valued(plain), valued(other)
-    _assert_same(one, (two[0], two[1], two[2].sort_values("zone_id")), 1.0)
+    # An elasticity is of the whole income, so it alone must change with a shift of it.
+    kept = [out[0][out[0]["measure"] != "income_elasticity"] for out in (one, two)]
+    by_zone = two[2].sort_values("zone_id")
+    _assert_same((kept[0], one[1], one[2]), (kept[1], two[1], by_zone), 1.0)
 
 
 def _assert_same(one: Outputs, two: Outputs, money: float) -> None:
