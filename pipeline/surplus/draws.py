@@ -22,15 +22,24 @@ def parameter_draws(model: FittedModel, *, draws: int, seed: int) -> FloatArray:
     """
     stream = zlib.crc32(f"{model.model}|{model.site_id}".encode())
     random = np.random.default_rng([seed, stream])
+    root = covariance_root(model)
+    normal = random.standard_normal((draws, root.shape[1]))
+    return np.asarray(model.estimate + normal @ root.T, dtype=float)
+
+
+def covariance_root(model: FittedModel) -> FloatArray:
+    """A root of the covariance, (p, parameters with a covariance): root @ root.T is it.
+
+    Its columns are the directions in which independent errors move the parameters: the price
+    coefficient first, the constant last.
+    """
     free = np.isfinite(np.diag(model.covariance))
     order = sorted(np.flatnonzero(free), key=lambda i: _rank(model.terms[i]))
     covariance = model.covariance[np.ix_(order, order)]
     scale = np.sqrt(np.diag(covariance))
-    correlation = covariance / np.outer(scale, scale)
-    normal = random.standard_normal((draws, len(order)))
-    values = np.tile(model.estimate, (draws, 1))
-    values[:, order] += normal @ _root(correlation).T * scale
-    return values
+    root = np.zeros((len(model.terms), len(order)))
+    root[order] = _root(covariance / np.outer(scale, scale)) * scale[:, None]
+    return root
 
 
 def _rank(term: str) -> int:

@@ -5,11 +5,11 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from scipy.linalg import block_diag
 
 from pipeline.demand.curves import LinearCurve, SemiLogCurve
 from pipeline.demand.family import FittedModel, mean_regressors
 from pipeline.demand.sample import PRICE, FloatArray
+from pipeline.surplus.draws import covariance_root
 from pipeline.surplus.measures import (
     ANNUAL,
     AREAS,
@@ -36,28 +36,26 @@ Row = dict[str, Any]
 def delta_rows(model: FittedModel, valued: Valuation, confidence: float) -> list[Row]:
     """Each measure at the estimates, with the interval of the delta method.
 
-    The gradient is taken by central differences over a ten-thousandth of each standard error. The
-    annual visits are one more parameter, where their standard error is known.
+    Derivatives are central differences over a ten-thousandth of a standard error, in directions
+    in which the errors are independent (so that no choice of units moves a step across a kink of
+    the curve). The annual visits are one more parameter, where their standard error is known.
     """
-    free = np.flatnonzero(np.isfinite(np.diag(model.covariance)))
-    errors = np.append(model.std_error[free], valued.visits_se)
-    steps = np.zeros((len(errors), len(model.terms) + 1))
-    steps[np.arange(len(free)), free] = _STEP * errors[:-1]
-    steps[-1, -1] = _STEP * errors[-1]
+    root = covariance_root(model)
+    number = root.shape[1] + 1
+    steps = np.zeros((number, len(model.terms) + 1))
+    steps[:-1, :-1] = _STEP * root.T
+    steps[-1, -1] = _STEP * valued.visits_se
     here = np.append(model.estimate, valued.sample.annual_visits)
     points = np.vstack([here, here + steps, here - steps])
-    own = model.covariance[np.ix_(free, free)]
-    covariance = block_diag(own, np.array([[errors[-1] ** 2]]))
     notes = measure_notes(valued)
     rows = []
     for measure, values in measure_values(valued, points[:, :-1], points[:, -1]).items():
         if measure in AREAS and not has_area(model, valued):
             rows.append(_row(measure, DELTA, note=no_area_words(model)))
             continue
-        up, down = values[1 : len(errors) + 1], values[len(errors) + 1 :]
-        with np.errstate(invalid="ignore", divide="ignore"):
-            gradient = np.where(errors > 0, (up - down) / (2 * _STEP * errors), 0.0)
-            variance = float(gradient @ covariance @ gradient)
+        up, down = values[1 : number + 1], values[number + 1 :]
+        with np.errstate(invalid="ignore"):
+            variance = float((((up - down) / (2 * _STEP)) ** 2).sum())
         error = float(np.sqrt(variance)) if np.isfinite(variance) else np.nan
         rows.append(_delta_row(measure, float(values[0]), error, model, confidence, notes[measure]))
     return rows
