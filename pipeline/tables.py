@@ -428,7 +428,7 @@ class Fit(Table):
     converged: Series[bool] = column("whether the maximum was reached and verified")
     chosen: Series[bool] = column("whether the surplus comes from this model")
     errors: Series[str] = column("kind of standard errors")
-    degrees_of_freedom: Series[float] = column(
+    degrees_of_freedom: Series[float] | None = column(
         "of Student's t for the intervals; missing: normal", gt=0, nullable=True
     )
     note: Series[str] = column("why it was chosen, or what is wrong with it", nullable=True)

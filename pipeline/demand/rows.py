@@ -89,7 +89,7 @@ def fitted_models(estimates: pd.DataFrame, fit: pd.DataFrame) -> dict[tuple[str,
 def _model(rows: pd.DataFrame, one: dict[Hashable, Any]) -> FittedModel:
     covariance = np.array([_from_json(row) for row in rows["covariance"]])
     note = one["note"] if isinstance(one["note"], str) else ""
-    degrees = float(one["degrees_of_freedom"])
+    degrees = float(one.get("degrees_of_freedom", np.nan))
     return FittedModel(
         model=one["model"],
         site_id=one["site_id"],

@@ -51,8 +51,7 @@ def fitted_curves(
     Curves by site.
     """
     samples = {
-        sample.site_id: sample
-        for sample in study_samples(zone_table, trip_table, study.demand)
+        sample.site_id: sample for sample in study_samples(zone_table, trip_table, study.demand)
     }
     unit = PER_ZONE if trip_table is None else 1.0
     tails = np.array([1 - study.surplus.confidence, 1 + study.surplus.confidence]) / 2
