@@ -7,7 +7,7 @@ PYTHON ?= python3
 VENV := .venv
 RUN := $(VENV)/bin/python
 export PYTHONPATH := $(CURDIR)
-STAGES := geocode roads route cost join demand surplus publish
+STAGES := geocode roads route cost join demand surplus sensitivity publish
 
 # What pyproject.toml says is needed, in the versions of config/constraints.txt.
 needs = $(RUN) -c 'import functools, sys, tomllib; \

@@ -2,7 +2,6 @@
 
 The flow, one way, each stage a pure function from tables to tables:
 
-=========  ================================  =================================================
 stage      module                            writes
 =========  ================================  =================================================
 geocode    ``origins``                       ``origins``, ``origin_summary``
@@ -14,6 +13,20 @@ demand     ``demand``                        ``estimates``, ``fit``, ``diagnosti
 surplus    ``surplus``                       ``surplus``, ``fee_schedule``, ``zone_surplus``
 publish    ``publish``                       GeoPackage, GeoJSON, Parquet, CSV, report, run.json
 =========  ================================  =================================================
+=======
+===========  ================================  =================================================
+stage        module                            writes
+===========  ================================  =================================================
+geocode      ``origins``                       ``origins``, ``origin_summary``
+roads        ``roads``                         road graph, ``road_quality``, ``road_lines``
+route        ``routes`` (``search``)           ``routes``, ``route_lines``
+cost         ``costs``                         ``costs``
+join         ``finished``                      ``zone_table``
+demand       ``demand``                        ``estimates``, ``fit``, ``diagnostics``
+surplus      ``surplus``                       ``surplus``, ``fee_schedule``, ``zone_surplus``
+sensitivity  ``sensitivity`` (``variants``)    ``sensitivity``
+publish      ``publish``                       GeoPackage, GeoJSON, Parquet, CSV, report, run.json
+===========  ================================  =================================================
 
 ``flow`` lists the stages with what each reads and writes; ``tables`` declares every column;
 ``settings`` declares every key of a study file; ``errors`` every error.

@@ -11,7 +11,17 @@ from pipeline.errors import PipelineError
 from pipeline.stamps import nothing_to_do
 from pipeline.study import Study, load_study
 
-STAGE_NAMES = ("geocode", "roads", "route", "cost", "join", "demand", "surplus", "publish")
+STAGE_NAMES = (
+    "geocode",
+    "roads",
+    "route",
+    "cost",
+    "join",
+    "demand",
+    "surplus",
+    "sensitivity",
+    "publish",
+)
 
 EXAMPLES = """\
 examples
@@ -21,14 +31,15 @@ examples
   python -m pipeline all my/park.toml --output /tmp/park
 
 stages, in their order
-  geocode   a zone of origin for every visit record
-  roads     a routable road graph from the road extract
-  route     fastest and shortest routes from every zone to every site
-  cost      the price of a visit, per person, itemised
-  join      one finished row per zone: visits a year, people, income, price
-  demand    the regression of visits on price
-  surplus   value in money with intervals, and what a fee would do
-  publish   GIS layers, tables and the report
+  geocode      a zone of origin for every visit record
+  roads        a routable road graph from the road extract
+  route        fastest and shortest routes from every zone to every site
+  cost         the price of a visit, per person, itemised
+  join         one finished row per zone: visits a year, people, income, price
+  demand       the regression of visits on price
+  surplus      value in money with intervals, and what a fee would do
+  sensitivity  what other assumptions would do to the surplus
+  publish      GIS layers, tables and the report
 
 What has not changed since the last run is not done again.
 exit codes: 0 done, 1 something in the study or its data is wrong, 2 a wrong command line

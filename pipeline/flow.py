@@ -30,6 +30,8 @@ from pipeline.roads import (
 )
 from pipeline.routes import route, summarise_route
 from pipeline.sections import Section
+from pipeline.sensitivity import sensitivity, summarise_sensitivity
+from pipeline.sensitivity_settings import SensitivitySettings
 from pipeline.settings import (
     SECTIONS,
     ComputeSettings,
@@ -58,6 +60,7 @@ from pipeline.tables import (
     RoadQuality,
     RouteLines,
     Routes,
+    Sensitivity,
     Sites,
     Surplus,
     TripTable,
@@ -215,6 +218,31 @@ FLOW: tuple[Stage, ...] = (
         summarise=summarise_surplus,
     ),
     Stage(
+        "sensitivity",
+        sensitivity,
+        reads=(
+            Maybe(Origins),
+            Maybe(Routes),
+            Maybe(Zones),
+            Maybe(Sites),
+            FINISHED,
+            Fit,
+            Surplus,
+        ),
+        writes=(Sensitivity,),
+        sections=(
+            CostsSettings,
+            VisitsSettings,
+            ZonesSettings,
+            MarketSettings,
+            DemandSettings,
+            SurplusSettings,
+            SensitivitySettings,
+            ComputeSettings,
+        ),
+        summarise=summarise_sensitivity,
+    ),
+    Stage(
         "publish",
         publish,
         reads=(
@@ -233,6 +261,7 @@ FLOW: tuple[Stage, ...] = (
             Surplus,
             FeeSchedule,
             ZoneSurplus,
+            Sensitivity,
         ),
         writes=(Publication,),
         sections=(*SECTIONS[1:], ScenarioSettings),

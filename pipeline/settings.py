@@ -22,6 +22,7 @@ from pipeline.sections import (
     Share,
     setting,
 )
+from pipeline.sensitivity_settings import SensitivitySettings
 
 
 class StudySettings(Section):
@@ -491,6 +492,7 @@ SECTIONS: tuple[type[Section], ...] = (
     MarketSettings,
     DemandSettings,
     SurplusSettings,
+    SensitivitySettings,
     PublishSettings,
     ComputeSettings,
 )

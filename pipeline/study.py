@@ -22,6 +22,7 @@ from pipeline.cost_settings import CostsSettings
 from pipeline.errors import StudyError
 from pipeline.presets import load_preset
 from pipeline.sections import Section, inner_section
+from pipeline.sensitivity_settings import SensitivitySettings
 from pipeline.settings import (
     ComputeSettings,
     DemandSettings,
@@ -36,6 +37,7 @@ from pipeline.settings import (
     VisitsSettings,
     ZonesSettings,
 )
+from pipeline.variants import check_own_variants
 
 
 class Study(BaseModel):
@@ -54,6 +56,7 @@ class Study(BaseModel):
     market: MarketSettings = MarketSettings()
     demand: DemandSettings = DemandSettings()
     surplus: SurplusSettings = SurplusSettings()
+    sensitivity: SensitivitySettings = SensitivitySettings()
     scenarios: dict[str, ScenarioSettings] = {}
     publish: PublishSettings = PublishSettings()
     compute: ComputeSettings = ComputeSettings()
@@ -118,6 +121,7 @@ def study_from(raw: dict[str, Any], *, base: Path, source: str) -> Study:
         raise StudyError(f"{source}: section [costs] is needed and missing; add it.")
     if study.costs is not None:
         _check_prices(study, source)
+    check_own_variants(study)
     for file in study.input_files():
         if not file.is_file():
             raise StudyError(

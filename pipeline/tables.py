@@ -544,6 +544,37 @@ class ZoneSurplus(Table):
         unique = ["zone_id", "site_id"]
 
 
+# --- sensitivity -----------------------------------------------------------------------------
+
+
+class Sensitivity(Table):
+    """What other assumptions would do: one row per alternative and site, the study itself first."""
+
+    site_id: Series[str] = column("site that is valued")
+    variant: Series[str] = column("the alternative, or 'the study'")
+    changed: Series[str] = column("keys of the study file that it changes; empty: none")
+    from_value: Series[str] = column("what they are in the study")
+    to_value: Series[str] = column("what they are in the alternative")
+    model: Series[str] = column("model that the figures come from", nullable=True)
+    surplus_per_trip: Series[float] = column(
+        "surplus per person-visit", unit="currency/visit", nullable=True
+    )
+    ci_low: Series[float] = column("lower end of its interval", nullable=True)
+    ci_high: Series[float] = column("upper end of its interval", nullable=True)
+    annual_surplus: Series[float] = column(
+        "surplus of the visits in the market per year", unit="currency/year", nullable=True
+    )
+    annual_ci_low: Series[float] = column("lower end of its interval", nullable=True)
+    annual_ci_high: Series[float] = column("upper end of its interval", nullable=True)
+    change_percent: Series[float] = column(
+        "change of annual_surplus against the study's", unit="%", nullable=True
+    )
+    note: Series[str] = column("why there is no value, where there is none", nullable=True)
+
+    class Config:
+        unique = ["site_id", "variant"]
+
+
 TABLES: tuple[type[Table], ...] = (
     VisitRecords,
     Zones,
@@ -564,6 +595,7 @@ TABLES: tuple[type[Table], ...] = (
     Surplus,
     FeeSchedule,
     ZoneSurplus,
+    Sensitivity,
 )
 
 

@@ -69,9 +69,9 @@ def test_a_study_without_ready_tables_runs_every_stage(tmp_path: Path) -> None:
 @pytest.mark.parametrize(
     ("section", "key", "stages"),
     [
-        ("routes", "table", "geocode cost join demand surplus publish"),
-        ("market", "zone_table", "demand surplus publish"),
-        ("market", "trip_table", "demand surplus publish"),
+        ("routes", "table", "geocode cost join demand surplus sensitivity publish"),
+        ("market", "zone_table", "demand surplus sensitivity publish"),
+        ("market", "trip_table", "demand surplus sensitivity publish"),
     ],
 )
 def test_a_ready_table_replaces_the_stages_before_it(

@@ -65,7 +65,14 @@ def test_nothing_is_done_twice(study: Path, capsys: pytest.CaptureFixture[str]) 
 def test_a_changed_price_runs_from_cost_on(study: Path, capsys: pytest.CaptureFixture[str]) -> None:
     replace(study, "vehicle_cost_per_km = 0.2", "vehicle_cost_per_km = 0.3")
     assert run("all", study) == 0
-    assert ran(capsys.readouterr().out) == ["cost", "join", "demand", "surplus", "publish"]
+    assert ran(capsys.readouterr().out) == [
+        "cost",
+        "join",
+        "demand",
+        "surplus",
+        "sensitivity",
+        "publish",
+    ]
 
 
 def test_changed_records_do_not_run_the_roads(
@@ -103,7 +110,17 @@ def test_a_study_elsewhere_gives_the_same_bytes(study: Path, tmp_path: Path) -> 
 
 
 def test_stage_by_stage_is_the_same_as_all(study: Path, tmp_path: Path) -> None:
-    stages = ["geocode", "roads", "route", "cost", "join", "demand", "surplus", "publish"]
+    stages = [
+        "geocode",
+        "roads",
+        "route",
+        "cost",
+        "join",
+        "demand",
+        "surplus",
+        "sensitivity",
+        "publish",
+    ]
     for stage in stages:
         assert run(stage, study, "--output", tmp_path / "out") == 0
     output = tmp_path / "out" / "output"

@@ -13,6 +13,7 @@ from pipeline.errors import PublishError
 from pipeline.provenance import Provenance
 from pipeline.publish.curve import fitted_curves
 from pipeline.publish.descriptor import data_package
+from pipeline.publish.effects import coarse
 from pipeline.publish.geofiles import write_geojson, write_geoparquet
 from pipeline.publish.geopackage import About, write_geopackage
 from pipeline.publish.layers import build_layers
@@ -125,6 +126,7 @@ def publish(
     surplus: pd.DataFrame,
     fee_schedule: pd.DataFrame,
     zone_surplus: pd.DataFrame,
+    sensitivity: pd.DataFrame,
     *,
     study: Study,
 ) -> tuple[Publication]:
@@ -133,7 +135,7 @@ def publish(
     Parameters
     ----------
     provenance : what the run was made from.
-    origin_summary, ..., zone_surplus : the tables of the flow; those that the study neither
+    origin_summary, ..., sensitivity : the tables of the flow; those that the study neither
         built nor brought are None, and the report says what is missing for it.
 
     Raises
@@ -167,6 +169,7 @@ def publish(
         surplus=surplus,
         fee_schedule=fee_schedule,
         zone_surplus=zone_surplus if shown is None else hide_zone_surplus(zone_surplus, shown),
+        sensitivity=coarse(sensitivity) if below else sensitivity,
         curves=fitted_curves(zone_table, trip_table, estimates, fit, study=study),
         headlines=headlines(fit, surplus, finished, sites),
     )

@@ -10,6 +10,7 @@ from pathlib import Path
 from pipeline.publish.answer import masthead
 from pipeline.publish.assumptions import assumptions_table
 from pipeline.publish.closing import attribution, cautions, inputs_table, made_with
+from pipeline.publish.effects import effects_figure, has_effects
 from pipeline.publish.evidence import demand_figure, map_figure, site_heading
 from pipeline.publish.findings import fee_figure, models_tried, values_table
 from pipeline.publish.losses import losses, road_table
@@ -63,6 +64,7 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Ht
         _section("demand", "How cost holds them back", _DEMAND, each(demand_figure)),
         _section("values", "What it is worth", _VALUES, each(values_table)),
         _section("fees", "What a fee would do", _FEES, each(fee_figure)),
+        *_effects(results, each),
         _section("assumed", "What was assumed", _ASSUMED, assumptions_table(results)),
         _section("lost", "What was lost on the way", _LOST, *losses(results)),
         _section("models", "Models tried", _MODELS, each(models_tried)),
@@ -72,6 +74,17 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Ht
     ]
 
 
+def _effects(results: Results, each: Callable[..., Html]) -> list[Html]:
+    """The section on other assumptions, where some were run."""
+    if not has_effects(results):
+        return []
+    return [_section("effects", "What the assumptions do", _EFFECTS, each(effects_figure))]
+
+
+_EFFECTS = (
+    "The same data under other assumptions, the strongest first. A bar that leaves the shaded "
+    "interval matters more than the sampling error does."
+)
 _MAP = (
     "Visits per 1,000 residents of each zone in a year, with the roads that bring them and the "
     "routes they take."

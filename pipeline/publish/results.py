@@ -70,6 +70,7 @@ class Results:
     surplus: pd.DataFrame
     fee_schedule: pd.DataFrame
     zone_surplus: pd.DataFrame
+    sensitivity: pd.DataFrame
     curves: dict[str, Curve]
     headlines: tuple[Headline, ...]
 

@@ -16,6 +16,7 @@ from pipeline.tables import (
     OriginSummary,
     RoadQuality,
     Routes,
+    Sensitivity,
     Sites,
     Surplus,
     Zones,
@@ -37,6 +38,7 @@ PUBLISHED = (
     Surplus,
     FeeSchedule,
     ZoneSurplus,
+    Sensitivity,
 )
 """Tables that people take away; records of people (`origins`, `trip_table`) are none of them."""
 

@@ -323,6 +323,31 @@ def make_zone_surplus(zone_table: pd.DataFrame) -> pd.DataFrame:
     )
 
 
+def make_sensitivity(visits: float, site_id: str = SITE) -> pd.DataFrame:
+    """The study, two alternatives, and one that gives no value."""
+    per_trip = [TRUE_TRIP_VALUE, 4.0, 9.0, np.nan]
+    spread = np.array([0.8, 0.85, 0.9, np.nan])
+    annual = np.array(per_trip) * visits
+    return pd.DataFrame(
+        {
+            "site_id": site_id,
+            "variant": ["the study", "time at no cost", "nobody shares the vehicle", "model: odd"],
+            "changed": ["", "costs.wage_fraction", "costs.shared_by", "demand.choose"],
+            "from_value": ["", "0.33", "everyone", "test"],
+            "to_value": ["", "0", "nobody", "odd"],
+            "model": ["negative_binomial"] * 3 + [None],
+            "surplus_per_trip": per_trip,
+            "ci_low": np.array(per_trip) * spread,
+            "ci_high": np.array(per_trip) / spread,
+            "annual_surplus": annual,
+            "annual_ci_low": annual * spread,
+            "annual_ci_high": annual / spread,
+            "change_percent": [0.0, -20.0, 80.0, np.nan],
+            "note": [None, None, None, "No value: it cannot be fitted."],
+        }
+    )
+
+
 def make_tables() -> dict[str, Any]:
     """Every argument of `publish` but provenance and study, as the flow would hand it over."""
     zones, sites = make_zones(), make_sites()
@@ -361,6 +386,7 @@ def make_tables() -> dict[str, Any]:
         "surplus": make_surplus(visits),
         "fee_schedule": make_fee_schedule(visits),
         "zone_surplus": make_zone_surplus(zone_table),
+        "sensitivity": make_sensitivity(visits),
     }
 
 

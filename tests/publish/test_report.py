@@ -238,7 +238,7 @@ def test_no_chosen_model_is_an_error() -> None:
 
 def test_summary_names_the_value(publication: Publication) -> None:
     assert summarise_publish((publication,)) == (
-        "report.html, 5 layers, 12 tables; Otter Fen <hide>: EUR 1,430 a year "
+        "report.html, 5 layers, 13 tables; Otter Fen <hide>: EUR 1,430 a year "
         "(95 % interval 1,180 to 1,840)"
     )
     assert publication.headlines[0].site_id == SITE
