@@ -183,10 +183,11 @@ class RoadsSettings(Section):
         gt=0.1,
         le=1.5,
     )
-    tracks: bool = setting(
-        "Whether ways of class `track` are roads to drive on.",
+    tracks: bool | Literal["last_stretch"] = setting(
+        "Whether ways of class `track` are roads to drive on; 'last_stretch': only in the first "
+        "and the last part of a trip, never as a way through.",
         default=False,
-        usual="false; true where sites lie on farm, forest or highland tracks",
+        usual="false; true or 'last_stretch' where sites lie on farm, forest or highland tracks",
     )
     ferries: Literal["all", "car_tagged", "none"] = setting(
         "Ferries to use: 'all' that are not closed to cars, only those tagged open to cars, none.",

@@ -11,15 +11,27 @@ import pandas as pd
 
 from pipeline.errors import RoadsError
 from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64
+from pipeline.roads.barriers import cut_at_barriers
 from pipeline.roads.contract import Chains, contract, reorder
+from pipeline.roads.copies import Copies, copy_junctions
 from pipeline.roads.extract import E7, RoadExtract
 from pipeline.roads.graph import CLOSED, RoadGraph, best_arcs, flag_bits, pack
+from pipeline.roads.limited import through_roads
 from pipeline.roads.networks import detached_km, main_networks
 from pipeline.roads.quality import lines_by_class, quality
-from pipeline.roads.rules import WayTraits, load_rules, way_traits
+from pipeline.roads.restrictions import Run, edge_runs, read_restrictions
+from pipeline.roads.rules import (
+    WayTraits,
+    closed_barriers,
+    load_rules,
+    turn_values,
+    way_traits,
+)
 from pipeline.roads.segments import Segments, segments_of
 from pipeline.settings import RoadsSettings
 from pipeline.study import Study
+
+COPIES = ("copy_of", "copy_kind", "head_edge", "head_node", "tail_edge", "tail_node")
 
 
 def build_roads(
@@ -53,12 +65,16 @@ def build_roads(
             f"none of the {extract.ways} ways of the road extract is a road open to cars. "
             "Give an extract with roads, or allow tracks by roads.tracks."
         )
-    is_ferry = traits.is_ferry[segments.way]
-    chains = contract(segments, len(extract.node_id), is_ferry)
+    extract, segments = cut_at_barriers(extract, segments, closed_barriers(extract, rules))
+    turns = read_restrictions(extract, segments, turn_values(extract, rules))
+    group = (traits.is_ferry * 1 + traits.is_limited * 2).astype(np.uint8)[segments.way]
+    forced = np.array(turns.nodes, dtype=np.int64)
+    chains = contract(segments, len(extract.node_lon_e7), group, forced)
     nodes, rank = _hilbert_order(extract, chains)
     chains = reorder(chains, np.lexsort((rank[chains.end], rank[chains.start])))
-    graph, parts = _graph(extract, traits, segments, chains, nodes, rank, settings)
-    table = quality(extract, traits, rules, segments, losses, graph, parts)
+    runs = edge_runs(turns.runs, chains)
+    graph, parts = _graph(extract, traits, segments, chains, nodes, rank, runs, settings)
+    table = quality(extract, traits, rules, segments, losses, graph, parts, turns)
     return graph, table, lines_by_class(extract, traits, rules, segments, chains)
 
 
@@ -77,7 +93,7 @@ def _hilbert_order(extract: RoadExtract, chains: Chains) -> tuple[Int64, Int32]:
     bounds = (west, south, max(east, west + E7), max(north, south + E7))
     along = points.hilbert_distance(total_bounds=bounds, level=16).to_numpy()
     nodes = junctions[np.argsort(along, kind="stable")]
-    rank = np.full(len(extract.node_id), -1, dtype=np.int32)
+    rank = np.full(len(extract.node_lon_e7), -1, dtype=np.int32)
     rank[nodes] = np.arange(len(nodes), dtype=np.int32)
     return nodes, rank
 
@@ -89,21 +105,26 @@ def _graph(
     chains: Chains,
     nodes: Int64,
     rank: Int32,
+    runs: list[Run],
     settings: RoadsSettings,
 ) -> tuple[RoadGraph, int]:
     """The graph, and how many parts of it join no main network."""
     start, end = rank[chains.start], rank[chains.end]
-    is_ferry = traits.is_ferry[segments.way[chains.segment[chains.first[:-1]]]]
+    way = segments.way[chains.segment[chains.first[:-1]]]
+    is_ferry, is_limited = traits.is_ferry[way], traits.is_limited[way]
     forward, backward = _costs(segments, chains, is_ferry, settings)
     number = np.arange(len(start), dtype=np.int32)
     is_open = np.concatenate([forward != CLOSED, backward != CLOSED])
     tail = np.concatenate([start, end])[is_open]
     head = np.concatenate([end, start])[is_open]
-    cost = np.concatenate([forward, backward])[is_open]
     directed = np.concatenate([2 * number, 2 * number + 1])[is_open]
-    arcs = best_arcs(tail, head, cost, directed, len(nodes))
-    arcs_in = best_arcs(head, tail, cost, directed, len(nodes))
     road_km = np.where(is_ferry, 0, _edge_sums(segments.length_m, chains) / 1000)
+    limited = through_roads(
+        tail, head, directed // 2, start, end, is_limited, road_km, settings.main_network_km
+    )
+    copies = copy_junctions(tail, head, directed, limited[directed // 2], runs, len(nodes))
+    both = np.concatenate([forward, backward])
+    arcs, arcs_in = _arcs(copies, both, len(start), len(nodes))
     network, weak = main_networks(tail, head, start, end, road_km, settings.main_network_km)
     island_km, islands = detached_km(start, network, weak, road_km)
     graph = RoadGraph(
@@ -121,8 +142,21 @@ def _graph(
         **_geometry(extract, traits, segments, chains),
         **_named("arc", arcs),
         **_named("in", arcs_in),
+        **{name: getattr(copies, name) for name in COPIES},
     )
     return graph, islands
+
+
+def _arcs(
+    copies: Copies, cost: Int64, edges: int, junctions: int
+) -> tuple[tuple[Int64, Int32, Int64, Int32], tuple[Int64, Int32, Int64, Int32]]:
+    """Arcs by tail and by head, with the packed costs of their edges."""
+    arc_cost = cost[copies.edge // 2 + edges * (copies.edge % 2)]
+    nodes = junctions + len(copies.copy_of)
+    return (
+        best_arcs(copies.tail, copies.head, arc_cost, copies.edge, nodes),
+        best_arcs(copies.head, copies.tail, arc_cost, copies.edge, nodes),
+    )
 
 
 def _named(prefix: str, arcs: tuple[Int64, Int32, Int64, Int32]) -> dict[str, npt.NDArray[Any]]:

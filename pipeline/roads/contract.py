@@ -29,26 +29,29 @@ class Chains:
     end: Int64
 
 
-def contract(segments: Segments, nodes: int, is_ferry: Bool) -> Chains:
+def contract(segments: Segments, nodes: int, group: Uint8, forced: Int64) -> Chains:
     """Join segments at every node where nothing can be decided.
 
-    A node lies within a chain if exactly two segments end there, both roads or both ferries,
-    and who comes in by one can leave by the other in the same directions. Everything else is
-    a junction: real ones, dead ends, places where a two-way road becomes one-way, terminals.
+    A node lies within a chain if exactly two segments of the same group end there, and who
+    comes in by one can leave by the other in the same directions. Everything else is a
+    junction: real ones, dead ends, places where a two-way road becomes one-way, terminals,
+    and the nodes that are to be junctions in any case (a turn restriction bites there).
     A closed ring without a junction is cut at one of its nodes.
 
     Parameters
     ----------
     segments : open stretches of road.
     nodes : how many nodes the extract has.
-    is_ferry : whether each segment is one of a ferry.
+    group : of each segment: segments of different groups are never joined.
+    forced : nodes that are to be junctions.
     """
     ends = np.concatenate([segments.a, segments.b]).astype(np.int64)
     order = np.argsort(ends, kind="stable")
     start = offsets(np.bincount(ends, minlength=nodes).astype(np.int64))
     can_ab, can_ba = ~np.isnan(segments.forward_s), ~np.isnan(segments.backward_s)
-    kind = _kinds(can_ab, can_ba, is_ferry)
+    kind = _kinds(can_ab, can_ba, group)
     inner = _inner_nodes(start, order, kind)
+    inner[forced] = False
     first, half = _walk(start, order, ends, inner)
     # A half is a segment seen from one end: below the count from a, above it from b.
     count = segments.count
@@ -63,10 +66,10 @@ def contract(segments: Segments, nodes: int, is_ferry: Bool) -> Chains:
     )
 
 
-def _kinds(can_ab: Bool, can_ba: Bool, is_ferry: Bool) -> Uint8:
-    """Bits of each half: 1 can be left by, 2 can be come in by, 4 is a ferry."""
-    from_a = can_ab * 1 + can_ba * 2 + is_ferry * 4
-    from_b = can_ba * 1 + can_ab * 2 + is_ferry * 4
+def _kinds(can_ab: Bool, can_ba: Bool, group: Uint8) -> Uint8:
+    """Bits of each half: 1 can be left by, 2 can be come in by, 4 and up the group."""
+    from_a = can_ab * 1 + can_ba * 2 + group * 4
+    from_b = can_ba * 1 + can_ab * 2 + group * 4
     return np.concatenate([from_a, from_b]).astype(np.uint8)
 
 
@@ -75,7 +78,7 @@ def _inner_nodes(start: Int64, order: Int64, kind: Uint8) -> Bool:
     inner = np.diff(start) == 2
     at = np.flatnonzero(inner)
     one, two = kind[order[start[at]]], kind[order[start[at] + 1]]
-    swapped = (two & 1) * 2 + (two & 2) // 2 + (two & 4)
+    swapped = (two & 1) * 2 + (two & 2) // 2 + (two & 0xFC)
     inner[at] = one == swapped
     return np.asarray(inner, dtype=np.bool_)
 

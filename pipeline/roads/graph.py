@@ -55,6 +55,12 @@ class RoadGraph:
         the edge's number, plus one for the backward direction.
     in_first, in_node, in_cost, in_edge : the same arcs by the node that they enter, with the
         node that they leave.
+    copy_of, copy_kind : (c,) junction of each copy and its kind, see ``copies``; copy `i` has
+        the node number ``n + i`` among the arcs.
+    head_edge, head_node : directed edges, ascending, that lead a trip which starts on them to a
+        copy, and the copy.
+    tail_edge, tail_node : directed edges, ascending, with copies from which a trip can end on
+        them.
     """
 
     folder_name: ClassVar[str] = "road_graph"
@@ -84,6 +90,12 @@ class RoadGraph:
     in_node: Int32
     in_cost: Int64
     in_edge: Int32
+    copy_of: Int32
+    copy_kind: Uint8
+    head_edge: Int32
+    head_node: Int32
+    tail_edge: Int32
+    tail_node: Int32
 
     @property
     def nodes(self) -> int:
@@ -138,7 +150,8 @@ class RoadGraph:
         -------
         Nodes are junctions with `x` and `y` (degrees). Edges have `length` (m), `travel_time`
         (s), `is_ferry`, `toll_m` and `unpaved_m`; their key is twice the number of the edge,
-        plus one for the backward direction. Loops and slower parallels are included.
+        plus one for the backward direction. Loops and slower parallels are included. It knows
+        no turn restrictions and no roads that are open only at the ends of a trip.
         """
         graph: nx.MultiDiGraph[int] = nx.MultiDiGraph(crs="EPSG:4326")
         places = zip(degrees(self.node_lon_e7), degrees(self.node_lat_e7), strict=True)

@@ -25,8 +25,8 @@ def main_networks(
         if it has at least this much road.
     """
     nodes = int(max(edge_start.max(), edge_end.max())) + 1
-    strong = _labels(tail, head, nodes, strong=True)
-    weak = _labels(edge_start, edge_end, nodes, strong=False)
+    strong = labels(tail, head, nodes, strong=True)
+    weak = labels(edge_start, edge_end, nodes, strong=False)
     inside = strong[edge_start] == strong[edge_end]
     km = np.bincount(strong[edge_start[inside]], road_km[inside], minlength=strong.max() + 1)
     order = np.argsort(-km, kind="stable")
@@ -49,7 +49,8 @@ def detached_km(
     return km[weak[edge_start]].astype(np.float32), int((~has_main).sum())
 
 
-def _labels(tail: Int32 | Int64, head: Int32 | Int64, nodes: int, *, strong: bool) -> Int32:
+def labels(tail: Int32 | Int64, head: Int32 | Int64, nodes: int, *, strong: bool) -> Int32:
+    """Number of the strongly or weakly connected part of each node."""
     links: Float64 = np.ones(len(tail))  # parallel arcs add up, and stay above zero
     matrix = csr_array((links, (tail, head)), shape=(nodes, nodes))
     connection: Literal["strong", "weak"] = "strong" if strong else "weak"

@@ -13,6 +13,7 @@ from pipeline.roads.contract import Chains
 from pipeline.roads.extract import RoadExtract
 from pipeline.roads.graph import RoadGraph, unpack_distance_km
 from pipeline.roads.lines import line_strings
+from pipeline.roads.restrictions import Restrictions
 from pipeline.roads.rules import FERRY, RoadRules, WayTraits
 from pipeline.roads.segments import Losses, Segments
 
@@ -27,10 +28,11 @@ def quality(
     losses: Losses,
     graph: RoadGraph,
     islands: int,
+    turns: Restrictions,
 ) -> pd.DataFrame:
     """The table `road_quality`: lengths and tagged limits by class, then what was lost."""
     by_class = _by_class(traits, rules, segments)
-    whole = _whole(extract, traits, segments, losses, graph, islands)
+    whole = _whole(extract, traits, segments, losses, graph, islands) + _turns(turns)
     return pd.DataFrame(
         by_class + whole, columns=["measure", "road_class", "value", "unit", "note"]
     )
@@ -105,6 +107,17 @@ def _whole(
         ("road off the main networks", dropped_km, "km", "no point is tied to it"),
     ]
     return [(measure, NO_CLASS, float(value), unit, note) for measure, value, unit, note in rows]
+
+
+def _turns(turns: Restrictions) -> list[tuple[Any, ...]]:
+    """What became of the turn restrictions."""
+    example = "".join(f"; relation {number}: {why}" for number, why in turns.unread[:1])
+    rows = [
+        ("turn restrictions applied", turns.applied, "in force for the vehicle and the season"),
+        ("turn restrictions moot", turns.moot, "on roads that are closed anyway"),
+        ("turn restrictions unread", len(turns.unread), f"not applied{example}"),
+    ]
+    return [(what, NO_CLASS, float(count), "relations", note) for what, count, note in rows]
 
 
 def km_of_edges(graph: RoadGraph) -> Float64:

@@ -13,6 +13,7 @@ from pipeline.roads.arrays import Float64, Int64, ranges
 from pipeline.roads.extract import degrees
 from pipeline.roads.graph import RoadGraph
 from pipeline.roads.lines import line_strings
+from pipeline.roads.passages import left_to
 from pipeline.roads.places import Places
 from pipeline.roads.trips import BY_END, BY_START, DIRECT, Trips
 from pipeline.search import path_edges
@@ -58,9 +59,12 @@ class Leg:
         leave = int(trips.leave[zone])
         edges, seed = np.empty(0, dtype=np.int64), -1
         if leave != DIRECT:
-            ends = graph.edge_end if leave == BY_END else graph.edge_start
-            node = int(ends[homes.edge[zone]])
-            edges, seed = path_edges(trips.tree.parent, trips.tree.via, graph.in_edge, node)
+            by_end = leave == BY_END
+            spent = (homes.to_end if by_end else homes.to_start)[zone]
+            edge = homes.edge[zone : zone + 1]
+            node = int(left_to(graph, edge, np.array([spent == 0]), by_end=by_end)[0])
+            edges, number = path_edges(trips.tree.parent, trips.tree.via, graph.in_edge, node)
+            seed = int(trips.seed_end[number])
         return cls(*names, drive_time_min, zone, door, leave, edges, int(seed))
 
 

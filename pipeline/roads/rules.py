@@ -6,6 +6,7 @@ worked out once per distinct value and spread over the ways.
 
 from __future__ import annotations
 
+import re
 import tomllib
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -33,7 +34,8 @@ class RoadRules:
     ----------
     classes : road classes in order; a class's code is its position; ferries come last.
     class_kmh, class_oneway, class_unpaved : defaults of each class, in that order.
-    access, oneway, speed, unpaved_kmh, ferry : sections of the table, as they stand there.
+    access, barriers, turns, oneway, speed, unpaved_kmh, ferry : sections of the table, as they
+        stand there.
     """
 
     classes: tuple[str, ...]
@@ -41,6 +43,8 @@ class RoadRules:
     class_oneway: Bool
     class_unpaved: Bool
     access: dict[str, Any]
+    barriers: dict[str, Any]
+    turns: dict[str, Any]
     oneway: dict[str, Any]
     speed: dict[str, float]
     unpaved_kmh: dict[str, float]
@@ -59,6 +63,7 @@ class WayTraits:
     forward, backward : whether it can be driven in the order of its nodes, and against it.
     forward_kmh, backward_kmh : driven speed; of ferries NaN (see `ferry_min`).
     limit_tagged, limit_unreadable : whether a limit is tagged, and cannot be read.
+    is_limited : whether it is open only at the ends of a trip.
     is_ferry, is_toll, is_unpaved : what it is.
     ferry_min : crossing by its `duration`, minutes; NaN where there is none to read.
     """
@@ -71,6 +76,7 @@ class WayTraits:
     backward_kmh: Float64
     limit_tagged: Bool
     limit_unreadable: Bool
+    is_limited: Bool
     is_ferry: Bool
     is_toll: Bool
     is_unpaved: Bool
@@ -100,6 +106,8 @@ def load_rules(settings: RoadsSettings, file: Path = RULES_FILE) -> RoadRules:
         class_oneway=np.array([row["oneway"] for row in rows], dtype=np.bool_),
         class_unpaved=np.array([row["unpaved"] for row in rows], dtype=np.bool_),
         access=table["access"],
+        barriers=table["barriers"],
+        turns=table["turns"],
         oneway=table["oneway"],
         speed=table["speed"],
         unpaved_kmh=table["unpaved_kmh"],
@@ -129,6 +137,7 @@ def way_traits(extract: RoadExtract, rules: RoadRules, settings: RoadsSettings) 
         backward_kmh=backward_kmh * settings.speed_factor,
         limit_tagged=tags["maxspeed"].notna().to_numpy(),
         limit_unreadable=unreadable,
+        is_limited=is_open & ((access == ENDS) | _last_stretch(class_code, rules, settings)),
         is_ferry=is_ferry,
         is_toll=_last_tagged(tags, ("toll", "toll:motorcar"), lambda v: float(v == "yes")) == 1,
         is_unpaved=np.isfinite(surface_kmh) | default_unpaved,
@@ -136,13 +145,14 @@ def way_traits(extract: RoadExtract, rules: RoadRules, settings: RoadsSettings) 
     )
 
 
+ENDS = 0.5  # access: 0 closed, 1 open, between them open only at the ends of a trip
 CLOSED = 2  # a direction: 1 forward only, -1 backward only, 0 both, 2 neither
 
 
 def _class_codes(tags: pd.DataFrame, rules: RoadRules, settings: RoadsSettings) -> Int32:
     """Code of each way's class; a way that is a road and a ferry counts as a ferry."""
     codes = {name: code for code, name in enumerate(rules.classes)}
-    if not settings.tracks:
+    if settings.tracks is False:
         del codes["track"]
     ferry = codes.pop(FERRY) if settings.ferries != "none" else -1
     road = _by_value(tags["highway"], lambda value: codes.get(value, -1), -1)
@@ -153,7 +163,39 @@ def _class_codes(tags: pd.DataFrame, rules: RoadRules, settings: RoadsSettings) 
 def _access(tags: pd.DataFrame, rules: RoadRules) -> Float64:
     """1 open, 0 closed, NaN untagged: the most specific key with a known value decides."""
     known = dict.fromkeys(rules.access["closed"], 0.0) | dict.fromkeys(rules.access["open"], 1.0)
+    known |= dict.fromkeys(rules.access["ends"], ENDS)
     return _last_tagged(tags, rules.access["keys"], lambda value: known.get(value, np.nan))
+
+
+def _last_stretch(class_code: Int32, rules: RoadRules, settings: RoadsSettings) -> Bool:
+    """Tracks, where the study opens them at the ends of a trip only."""
+    is_track = class_code == rules.classes.index("track")
+    return np.asarray(is_track & (settings.tracks == "last_stretch"))
+
+
+def closed_barriers(extract: RoadExtract, rules: RoadRules) -> Bool:
+    """Of each tagged node, whether it is a barrier that cannot be passed."""
+    tags = extract.tagged_nodes.tags
+    closed = set(rules.barriers["closed"])
+    by_kind = _by_value(tags["barrier"], lambda value: float(value in closed), 0) == 1
+    access = _access(tags, rules)
+    is_locked = _by_value(tags["locked"], lambda value: float(value == "yes"), 0) == 1
+    is_barrier = tags["barrier"].notna().to_numpy()
+    return np.asarray(is_barrier & ((by_kind & ~(access > 0)) | (access == 0) | is_locked))
+
+
+def turn_values(extract: RoadExtract, rules: RoadRules) -> pd.Series[str]:
+    """Of each turn restriction what it forbids; missing where it does not bind the vehicle."""
+    tags = extract.turn_relations.tags
+    values = tags["restriction"].astype(object)
+    for key in rules.turns["keys"]:
+        own = tags[key].astype(object)
+        values = own.where(own.notna(), values)
+    spared = set(rules.turns["excepted"])
+    is_spared = _by_value(
+        tags["except"], lambda value: float(bool(spared & set(re.split(r"[;, ]+", value)))), 0
+    )
+    return values.where(is_spared == 0)
 
 
 def _untagged_ferry(is_ferry: Bool, access: Float64, settings: RoadsSettings) -> Bool:

@@ -6,8 +6,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from pipeline.roads.arrays import Bool, Float64, Int64
+from pipeline.roads.arrays import Bool, Float64, Int32, Int64
 from pipeline.roads.graph import DISTANCE_MASK, RoadGraph
+from pipeline.roads.passages import entered_from, entry_label, left_to
 from pipeline.roads.places import Places
 from pipeline.search import UNREACHED, Tree, search, sums_along
 
@@ -27,6 +28,7 @@ class Trips:
         start (1), or along the edge to an access point on the same edge (2).
     along : (z, 4) of the route there: ferry km, ferry minutes, toll km, unpaved km.
     tree : the search behind `there`.
+    seed_end : of each seed of the tree the end of the access point's edge: 0 start, 1 end.
     """
 
     there: Int64
@@ -35,6 +37,16 @@ class Trips:
     leave: Int64
     along: Float64
     tree: Tree
+    seed_end: Int64
+
+
+@dataclass(frozen=True)
+class _Seeds:
+    """Junctions and copies next to an access point, with what it costs between them."""
+
+    node: Int32
+    cost: Int64
+    end: Int64
 
 
 def trips_to(graph: RoadGraph, homes: Places, doors: Places, door: int) -> Trips:
@@ -47,24 +59,57 @@ def trips_to(graph: RoadGraph, homes: Places, doors: Places, door: int) -> Trips
     doors : places of the access points.
     door : which of them.
     """
-    edge = int(doors.edge[door])
-    ends = np.array([graph.edge_start[edge], graph.edge_end[edge]], dtype=np.int32)
-    to_door = np.array([doors.from_start[door], doors.from_end[door]])
-    from_door = np.array([doors.to_start[door], doors.to_end[door]])
+    to_door, from_door = _seeds_to(graph, doors, door), _seeds_from(graph, doors, door)
     into = (graph.in_first, graph.in_node, graph.in_cost)
     out = (graph.arc_first, graph.arc_node, graph.arc_cost)
     leaving = (homes.to_end, homes.to_start)
     direct = _direct(homes, doors, door, homewards=False)
-    tree = search(*into, ends, to_door, by_time=True)
-    there, leave = _best(graph, homes, tree.cost, (*leaving, direct))
-    short = search(*into, ends, to_door, by_time=False)
+    tree = search(*into, to_door.node, to_door.cost, by_time=True)
+    there, leave = _best(homes, _leaving_labels(graph, homes, tree.cost), (*leaving, direct))
+    short = search(*into, to_door.node, to_door.cost, by_time=False)
     lengths = tuple(_length(cost) for cost in (*leaving, direct))
-    shortest, _ = _best(graph, homes, short.cost, lengths)
-    back = search(*out, ends, from_door, by_time=True)
+    shortest, _ = _best(homes, _leaving_labels(graph, homes, short.cost), lengths)
+    back = search(*out, from_door.node, from_door.cost, by_time=True)
     arriving = (homes.from_end, homes.from_start, _direct(homes, doors, door, homewards=True))
-    home, _ = _best(graph, homes, back.cost, arriving)
-    along = _along(graph, homes, doors, door, tree, np.where(there < UNREACHED, leave, -1))
-    return Trips(there, home, shortest, leave, along, tree)
+    home, _ = _best(homes, _arriving_labels(graph, homes, back.cost), arriving)
+    leave = np.where(there < UNREACHED, leave, -1)
+    along = _along(graph, homes, doors, door, tree, to_door.end, leave)
+    return Trips(there, home, shortest, leave, along, tree, to_door.end)
+
+
+def _seeds_to(graph: RoadGraph, doors: Places, door: int) -> _Seeds:
+    """From where an access point can be reached, by either end of its edge."""
+    edge = doors.edge[door : door + 1].astype(np.int64)
+    node, cost, end = [], [], []
+    for number, spent in enumerate((doors.from_start[door], doors.from_end[door])):
+        _, found = entered_from(graph, edge, np.array([spent == 0]), by_start=number == 0)
+        node.append(found)
+        cost.append(np.full(len(found), spent))
+        end.append(np.full(len(found), number))
+    return _Seeds(np.concatenate(node).astype(np.int32), np.concatenate(cost), np.concatenate(end))
+
+
+def _seeds_from(graph: RoadGraph, doors: Places, door: int) -> _Seeds:
+    """Where a trip that starts at an access point comes to first."""
+    edge = doors.edge[door : door + 1].astype(np.int64)
+    cost = np.array([doors.to_start[door], doors.to_end[door]])
+    node = [left_to(graph, edge, cost[end : end + 1] == 0, by_end=end == 1)[0] for end in (0, 1)]
+    return _Seeds(np.array(node, dtype=np.int32), cost, np.arange(2))
+
+
+def _leaving_labels(graph: RoadGraph, homes: Places, label: Int64) -> tuple[Int64, Int64]:
+    """Labels where trips come to that leave the zones' places by the end, by the start."""
+    by_end = left_to(graph, homes.edge, homes.to_end == 0, by_end=True)
+    by_start = left_to(graph, homes.edge, homes.to_start == 0, by_end=False)
+    return label[by_end], label[by_start]
+
+
+def _arriving_labels(graph: RoadGraph, homes: Places, label: Int64) -> tuple[Int64, Int64]:
+    """Least labels of where trips can come from that reach the zones' places by either end."""
+    return (
+        entry_label(graph, label, homes.edge, homes.from_end == 0, by_start=False),
+        entry_label(graph, label, homes.edge, homes.from_start == 0, by_start=True),
+    )
 
 
 def _length(cost: Int64) -> Int64:
@@ -72,17 +117,14 @@ def _length(cost: Int64) -> Int64:
 
 
 def _best(
-    graph: RoadGraph, homes: Places, label: Int64, ways: tuple[Int64, ...]
+    homes: Places, labels: tuple[Int64, Int64], ways: tuple[Int64, ...]
 ) -> tuple[Int64, Int64]:
     """Least cost by the end of the zone's edge, by its start, or direct; and which it was."""
     by_end, by_start, direct = ways
     options = np.full((3, len(homes.edge)), UNREACHED)
-    for option, cost, node in (
-        (BY_END, by_end, graph.edge_end[homes.edge]),
-        (BY_START, by_start, graph.edge_start[homes.edge]),
-    ):
-        is_open = (cost >= 0) & (label[node] < UNREACHED)
-        options[option, is_open] = cost[is_open] + label[node[is_open]]
+    for option, cost, label in ((BY_END, by_end, labels[0]), (BY_START, by_start, labels[1])):
+        is_open = (cost >= 0) & (label < UNREACHED)
+        options[option, is_open] = cost[is_open] + label[is_open]
     options[DIRECT, direct >= 0] = direct[direct >= 0]
     options[:, homes.edge < 0] = UNREACHED
     return options.min(axis=0), options.argmin(axis=0)
@@ -119,7 +161,13 @@ def _position(places: Places) -> Float64:
 
 
 def _along(
-    graph: RoadGraph, homes: Places, doors: Places, door: int, tree: Tree, leave: Int64
+    graph: RoadGraph,
+    homes: Places,
+    doors: Places,
+    door: int,
+    tree: Tree,
+    seed_end: Int64,
+    leave: Int64,
 ) -> Float64:
     """Ferry km, ferry minutes, toll km and unpaved km of each route there."""
     along = np.full((len(leave), 4), np.nan)
@@ -128,15 +176,16 @@ def _along(
             [doors.start_toll_m[door], doors.start_unpaved_m[door]],
             [doors.end_toll_m[door], doors.end_unpaved_m[door]],
         ]
-    )
-    for option, node, toll_m, unpaved_m in (
-        (BY_END, graph.edge_end, homes.end_toll_m, homes.end_unpaved_m),
-        (BY_START, graph.edge_start, homes.start_toll_m, homes.start_unpaved_m),
+    )[seed_end]
+    for option, spent, toll_m, unpaved_m in (
+        (BY_END, homes.to_end, homes.end_toll_m, homes.end_unpaved_m),
+        (BY_START, homes.to_start, homes.start_toll_m, homes.start_unpaved_m),
     ):
         at = np.flatnonzero(leave == option)
+        node = left_to(graph, homes.edge[at], spent[at] == 0, by_end=option == BY_END)
         along[at] = sums_along(
             tree,
-            node[homes.edge[at]].astype(np.int64),
+            node,
             graph.in_edge,
             graph.in_cost,
             graph.edge_is_ferry,
