@@ -1,4 +1,4 @@
-"""The study's own files: visit records, zones, crosswalk, sites, and tables that it brings.
+"""The study's own files: zones, crosswalk, sites, and tables that it brings.
 
 Each reader maps the study's own column names to ours, fills what may be absent, and checks the
 result; an error names the file, the row and the column as their owner knows them.
@@ -15,48 +15,11 @@ import pandas as pd
 
 from pipeline.centroids import locate
 from pipeline.errors import InputError, StudyError, TableError
+from pipeline.mapped import Mapped, as_truth, read_section
 from pipeline.schema import Table
-from pipeline.sections import Section
-from pipeline.settings import FileSection
 from pipeline.study import Study
-from pipeline.tables import Crosswalk, Sites, VisitRecords, Zones
-from pipeline.userfiles import PARQUET, TEXT, UserTable, first_true, read_user_table
-
-
-def read_visit_records(study: Study) -> pd.DataFrame:
-    """Read the visit records.
-
-    Absent columns: `record_id` is the row in the file; `site_id` is the only site to be valued;
-    `trips` and `weight` are 1; `party_size` is unknown.
-
-    Raises
-    ------
-    TableError
-        The file is empty, lacks a column, or holds a value that cannot be right: a party of
-        zero, a record twice, a site that is not in the sites file.
-    """
-    columns = study.visits.columns
-    table = _read(study.visits)
-    if table.frame.empty:
-        raise TableError(f"{table.name}: no visit record; fill in the rows under the header.")
-    sites = read_sites(study)
-    mapped = _Mapped(table, columns)
-    rows = table.frame.index
-    frame = pd.DataFrame(
-        {
-            "record_id": mapped.texts("record_id", pd.Series(rows + 1, rows)),
-            "postal_code_raw": mapped.texts("postal_code"),
-            "site_id": mapped.texts("site_id", _only_site(sites)),
-            "trips": mapped.numbers("trips", 1.0),
-            "party_size": mapped.numbers("party_size", np.nan),
-            "weight": mapped.numbers("weight", 1.0),
-        },
-        index=rows,
-    )
-    names = {**columns.model_dump(), "postal_code_raw": columns.postal_code}
-    checked = VisitRecords.checked(frame, source=table.source(names))
-    _check_sites(table, columns.site_id, checked["site_id"], sites)
-    return checked.reset_index(drop=True)
+from pipeline.tables import Crosswalk, Sites, Zones
+from pipeline.userfiles import PARQUET, TEXT, UserTable, read_user_table
 
 
 def read_zones(study: Study) -> gpd.GeoDataFrame:
@@ -77,10 +40,10 @@ def read_zones(study: Study) -> gpd.GeoDataFrame:
         CRS, or a zone has neither polygon nor centroid.
     """
     columns = study.zones.columns
-    table = _read(study.zones)
+    table = read_section(study.zones)
     if table.frame.empty:
         raise TableError(f"{table.name}: no zone; fill in the rows under the header.")
-    mapped = _Mapped(table, columns)
+    mapped = Mapped(table, columns)
     zone_id = mapped.texts("zone_id")
     frame = pd.DataFrame(
         {
@@ -105,7 +68,7 @@ def read_crosswalk(study: Study) -> pd.DataFrame | None:
         return None
     columns = study.visits.crosswalk_columns
     table = read_user_table(path, encoding=study.visits.encoding)
-    mapped = _Mapped(table, columns)
+    mapped = Mapped(table, columns)
     frame = pd.DataFrame(
         {"postal_code": mapped.texts("postal_code"), "zone_id": mapped.texts("zone_id")}
     )
@@ -126,8 +89,8 @@ def read_sites(study: Study) -> pd.DataFrame:
         has two roles.
     """
     columns = study.sites.columns
-    table = _read(study.sites)
-    mapped = _Mapped(table, columns)
+    table = read_section(study.sites)
+    mapped = Mapped(table, columns)
     site_id = mapped.texts("site_id")
     numbered = (site_id.groupby(site_id).cumcount() + 1).astype("str")
     frame = pd.DataFrame(
@@ -178,49 +141,6 @@ def read_brought(table_class: type[Table], path: Path) -> pd.DataFrame:
     return table_class.checked(frame, source=table.source({})).reset_index(drop=True)
 
 
-class _Mapped:
-    """Columns of a user's table by our names; what may be absent has a default."""
-
-    def __init__(self, table: UserTable, columns: Section) -> None:
-        self.table, self.columns = table, columns
-
-    def texts(self, name: str, default: object = None) -> pd.Series[str]:
-        column = self._column(name, default)
-        if column is not None:
-            return self.table.texts(column)
-        return self._filled(default).astype("str").where(self._filled(default).notna())
-
-    def numbers(self, name: str, default: float | None = None) -> pd.Series[float]:
-        column = self._column(name, default)
-        return self._filled(default) if column is None else self.table.numbers(column)
-
-    def _filled(self, default: object) -> pd.Series:
-        if isinstance(default, pd.Series):
-            return default
-        return pd.Series(default, index=self.table.frame.index)
-
-    def _column(self, name: str, default: object) -> str | None:
-        """The user's column; None where it is absent and may be."""
-        column = str(getattr(self.columns, name))
-        asked_for = name in self.columns.model_fields_set
-        if default is None or asked_for or self.table.has(column):
-            meaning = type(self.columns).model_fields[name].description or name
-            self.table.need(column, f"{name}: {meaning.split(';')[0].rstrip('.').lower()}")
-            return column
-        return None
-
-
-def _read(section: FileSection) -> UserTable:
-    """Read a section's own file."""
-    if section.file is None:
-        raise StudyError(
-            f"[{section.section_name}] file is needed and missing; name the file in the study file."
-        )
-    return read_user_table(
-        section.file, sheet=section.sheet, layer=section.layer, encoding=section.encoding
-    )
-
-
 def _covariates(study: Study, table: UserTable) -> pd.DataFrame:
     """Further columns of the zones, as numbers."""
     fixed = {*Zones.columns(), "site_id", "visits", "travel_cost", "geometry"}
@@ -230,25 +150,6 @@ def _covariates(study: Study, table: UserTable) -> pd.DataFrame:
         table.need(name, "named in [zones] covariates")
     columns = {name: table.numbers(name) for name in study.zones.covariates}
     return pd.DataFrame(columns, index=table.frame.index)
-
-
-def _only_site(sites: pd.DataFrame) -> str | None:
-    """The one site to be valued, for records that do not name theirs; None if there are more."""
-    valued = sites.loc[sites["role"] == "site", "site_id"].unique()
-    return str(valued[0]) if len(valued) == 1 else None
-
-
-def _check_sites(table: UserTable, column: str, site_id: pd.Series, sites: pd.DataFrame) -> None:
-    """Every record is of a known site."""
-    unknown = ~site_id.isin(sites["site_id"])
-    if unknown.any():
-        first = first_true(unknown)
-        raise TableError(
-            f"{table.name}: {int(unknown.sum())} of {len(site_id)} records are of a site that is "
-            f"not in the sites file; first: {column} {site_id.iloc[first]!r}"
-            f"{table.row(unknown, first)} (sites: {', '.join(sites['site_id'].unique())}). "
-            "Add the site to the sites file, or correct the records."
-        )
 
 
 def _check_roles(table: UserTable, sites: pd.DataFrame) -> None:
@@ -271,20 +172,7 @@ def _kind(table: UserTable, name: str) -> str:
     return "float64" if numeric and not as_code and not text.empty else "str"
 
 
-TRUTH = {"true": True, "1": True, "yes": True, "false": False, "0": False, "no": False}
-
-
 def _as_kind(table: UserTable, name: str, kind: str) -> pd.Series:
     if kind in ("float64", "int64"):
         return table.numbers(name)
-    if kind != "bool":
-        return table.texts(name)
-    text = table.texts(name).str.lower()
-    wrong = ~text.isin(list(TRUTH))
-    if wrong.any():
-        first = first_true(wrong)
-        raise TableError(
-            f"{table.name}: {int(wrong.sum())} value(s) in column {name!r} are neither true nor "
-            f"false; first: {text.iloc[first]!r}{table.row(wrong, first)}. Write true or false."
-        )
-    return text.map(TRUTH).astype("bool")
+    return as_truth(table, name) if kind == "bool" else table.texts(name)

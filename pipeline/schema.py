@@ -85,14 +85,16 @@ class Table(pa.DataFrameModel):
 
     @classmethod
     def columns(cls) -> list[str]:
-        """Names of the declared columns, in order."""
-        return list(cls.to_schema().columns)
+        """Names of the declared columns: the table's own, then those that it shares."""
+        names = list(cls.to_schema().columns)
+        return sorted(names, key=lambda name: name not in cls.__annotations__)
 
     @classmethod
     def dictionary(cls) -> pd.DataFrame:
         """Data dictionary: `table, column, type, unit, required, missing_allowed, meaning`."""
         rows = []
-        for name, column in cls.to_schema().columns.items():
+        schema = cls.to_schema().columns
+        for name, column in ((name, schema[name]) for name in cls.columns()):
             unit = (column.metadata or {}).get("unit", "")
             rows.append(
                 {

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal, Self
 
-from pydantic import Field, model_validator
+from pydantic import AfterValidator, Field, model_validator
 
 from pipeline.cost_settings import CostsSettings
 from pipeline.sections import (
@@ -23,6 +23,17 @@ from pipeline.sections import (
     setting,
 )
 from pipeline.sensitivity_settings import SensitivitySettings
+
+from pipeline.countries import country_names
+
+
+def _country(value: str) -> str:
+    if value not in country_names():
+        raise ValueError("no ISO 3166 country code of two capitals")
+    return value
+
+
+CountryCode = Annotated[str, AfterValidator(_country)]
 
 
 class StudySettings(Section):
@@ -103,9 +114,16 @@ class ZonesSettings(FileSection):
     covariates: tuple[str, ...] = setting(
         "Further columns of the zones file (numbers) to carry into the finished table.", ()
     )
+    country: CountryCode | None = setting(
+        "Country of the zones (ISO 3166, two letters): its postal code format says what is well "
+        "formed, a ZIP+4 counts as its ZIP, a leading country prefix is dropped.",
+        None,
+    )
     postal_code_pattern: Regex | None = setting(
-        "Regular expression that a normalised code (capitals and digits only) matches fully; "
-        "default: a code is well formed when some code of the zones file has the same form.",
+        "Regular expression that a normalised code (capitals and digits only) matches fully, for "
+        "made-up or local codes; where it has a group, the first group is the zone's code and the "
+        "rest says where in the zone. Default: the country's format; without a country a code is "
+        "well formed when some code of the zones file has the same form.",
         None,
     )
 
@@ -117,8 +135,40 @@ class VisitColumns(Section):
     postal_code: str = setting("Postal code of the visitor's home.", "postal_code")
     site_id: str = setting("Site visited; may be absent with one site.", "site_id")
     trips: str = setting("Trips that the record stands for; absent: 1.", "trips")
-    party_size: str = setting("People who came together; absent: unknown.", "party_size")
+    party_size: str = setting(
+        "People who came together; absent: adults and children, else unknown.", "party_size"
+    )
     weight: str = setting("Sampling weight; absent: 1.", "weight")
+    lon: str | None = setting("Longitude or easting of the home, in [visits] crs.", None)
+    lat: str | None = setting("Latitude or northing of the home, in [visits] crs.", None)
+    country: str | None = setting("Country of the home: two letters or English name.", None)
+    adults: str | None = setting("Adults in the party.", None)
+    children: str | None = setting("Children in the party.", None)
+    vehicle: str | None = setting("Class of vehicle, as [costs] knows it.", None)
+    mode: str | None = setting(
+        "Means of travel: car, motorcycle, coach, bus, train, bicycle, foot, aeroplane.", None
+    )
+    nights: str | None = setting("Nights away from home.", None)
+    lodging: str | None = setting("Kind of lodging.", None)
+    hours_on_site: str | None = setting("Hours spent on the site.", None)
+    trip_hours: str | None = setting(
+        "Hours of the whole stay away, travel not counted (other places included).", None
+    )
+    stops: str | None = setting("Other places visited on the same trip.", None)
+    purpose_share: str | None = setting(
+        "Share of the trip's purpose that was this site, 0 to 1.", None
+    )
+    activity: str | None = setting("Main activity.", None)
+    date: str | None = setting("Day of the visit, in [visits] date_format.", None)
+    season: str | None = setting("Season; default: from the date by [visits] seasons.", None)
+    household_income: str | None = setting("Respondent's household income per year.", None)
+    surveyed: str | None = setting(
+        "Whether the register's record was surveyed (kind sample_of_register).", None
+    )
+    trips_se: str | None = setting("Standard error of the count (kind zone_counts).", None)
+    reported_distance_km: str | None = setting("Distance that was reported, one way, km.", None)
+    reported_time_min: str | None = setting("Travel time that was reported, one way, min.", None)
+    reported_cost: str | None = setting("Spending on travel that was reported, per party.", None)
 
 
 class CrosswalkColumns(Section):

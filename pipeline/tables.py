@@ -26,6 +26,7 @@ ORIGIN_STATUSES = (
     "foreign",
 )
 PLACED_STATUSES = ("matched", "crosswalk", "point_in_zone")
+MODES = ("car", "motorcycle", "coach", "bus", "train", "bicycle", "foot", "aeroplane")
 ROUTE_STATUSES = ("routed", "within_zone", "no_path", "too_far_from_road")
 REACHED_STATUSES = ("routed", "within_zone")
 SITE_ROLES = ("site", "substitute")
@@ -35,7 +36,55 @@ CENTROID_SOURCES = ("given", "inside_polygon", "population_weighted")
 # --- what the study brings -------------------------------------------------------------------
 
 
-class VisitRecords(Table):
+class SurveyColumns(Table):
+    """What a record may tell beyond who came from where; a study names the columns it has."""
+
+    adults: Series[float] | None = column(
+        "adults in the party", unit="people", ge=0, nullable=True
+    )
+    children: Series[float] | None = column(
+        "children in the party", unit="people", ge=0, nullable=True
+    )
+    vehicle: Series[str] | None = column("class of vehicle", nullable=True)
+    mode: Series[str] | None = column("means of travel", isin=MODES, nullable=True)
+    nights: Series[float] | None = column(
+        "nights away from home", unit="nights", ge=0, le=366, nullable=True
+    )
+    lodging: Series[str] | None = column("kind of lodging", nullable=True)
+    hours_on_site: Series[float] | None = column(
+        "hours spent on the site", unit="h", ge=0, le=8784, nullable=True
+    )
+    trip_hours: Series[float] | None = column(
+        "hours of the whole stay away, travel not counted", unit="h", gt=0, le=8784, nullable=True
+    )
+    stops: Series[float] | None = column(
+        "other places visited on the same trip", ge=0, le=1000, nullable=True
+    )
+    purpose_share: Series[float] | None = column(
+        "share of the trip's purpose that was this site", unit="share", ge=0, le=1, nullable=True
+    )
+    activity: Series[str] | None = column("main activity", nullable=True)
+    date: Series[str] | None = column("day of the visit (ISO 8601)", nullable=True)
+    season: Series[str] | None = column("season of the visit", nullable=True)
+    household_income: Series[float] | None = column(
+        "respondent's household income per year", unit="currency/year", gt=0, nullable=True
+    )
+    surveyed: Series[bool] | None = column("whether the register's record was surveyed")
+    trips_se: Series[float] | None = column(
+        "standard error of the count", unit="trips", ge=0, nullable=True
+    )
+    reported_distance_km: Series[float] | None = column(
+        "reported distance, one way", unit="km", ge=0, le=20_100, nullable=True
+    )
+    reported_time_min: Series[float] | None = column(
+        "reported travel time, one way", unit="min", ge=0, nullable=True
+    )
+    reported_cost: Series[float] | None = column(
+        "reported spending on travel, per party and trip", unit="currency", ge=0, nullable=True
+    )
+
+
+class VisitRecords(SurveyColumns):
     """Visit records as they came: one row per permit, interview or register line."""
 
     record_id: Series[str] = column("identifier of the record, unique")
@@ -46,6 +95,13 @@ class VisitRecords(Table):
         "people who travelled together", unit="people", gt=0, nullable=True
     )
     weight: Series[float] = column("how many records like it this record stands for", ge=0)
+    lon: Series[float] | None = column(
+        "longitude of the home", unit="degree", ge=-180, le=180, nullable=True
+    )
+    lat: Series[float] | None = column(
+        "latitude of the home", unit="degree", ge=-90, le=90, nullable=True
+    )
+    country: Series[str] | None = column("country of the home (ISO 3166)", nullable=True)
 
     class Config:
         unique = ["record_id"]
@@ -97,7 +153,7 @@ class Sites(Table):
 # --- geocode ---------------------------------------------------------------------------------
 
 
-class Origins(Table):
+class Origins(SurveyColumns):
     """Every visit record with its zone of origin, or the reason why it has none."""
 
     record_id: Series[str] = column("identifier of the record, unique")
