@@ -8,7 +8,7 @@ geocode    ``origins``                       ``origins``, ``origin_summary``
 roads      ``roads``                         road graph, ``road_quality``, ``road_lines``
 route      ``routes`` (``search``)           ``routes``, ``route_lines``
 cost       ``costs``                         ``costs``
-join       ``finished``                      ``zone_table``
+join       ``finished``                      ``zone_table``, ``trip_table``
 demand     ``demand``                        ``estimates``, ``fit``, ``diagnostics``
 surplus    ``surplus``                       ``surplus``, ``fee_schedule``, ``zone_surplus``
 publish    ``publish``                       GeoPackage, GeoJSON, Parquet, CSV, report, run.json

@@ -41,6 +41,11 @@ class CodeFormat:
         rests = (code.removeprefix(prefix) for prefix in ("", *self.prefixes))
         return any(self.pattern.fullmatch(rest) for rest in rests)
 
+    def without_prefix(self, code: str) -> str:
+        """A normalised code without the country's prefix, where the rest is well formed."""
+        rests = (code.removeprefix(prefix) for prefix in self.prefixes)
+        return next((rest for rest in rests if self.pattern.fullmatch(rest)), code)
+
 
 @cache
 def country_names() -> Mapping[str, str]:

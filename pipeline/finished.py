@@ -1,32 +1,29 @@
 """The join stage: visits, people and prices in one finished table, a row per zone and site.
 
-**Expansion.** Where the study knows a site's person-visits in a year (`annual_visits`), they are
-divided by the shares that the records show. Visitors from abroad have their share of the total
-and are left out, being outside the market. The rest is domestic; records without a zone are
-taken to come from the zones in the proportions of those with one. So
-
-    expansion_factor = annual_visits × domestic ÷ (domestic + foreign) ÷ with a zone,
-
-in person-visits of the site's records, and the zones' visits add up to the domestic part of the
-known total. Without a known total the visits with a zone stand as they are, factor 1.
+**Visits** are expanded from the records by their kind (``expansion``), less what belongs to
+other purposes of the trips (``purposes``), with standard errors (``sampling_errors``).
 
 **Substitutes.** `substitute_cost` is the price of the cheapest site with the role 'substitute'
 that the zone can reach; [market] sites_are_substitutes adds the other valued sites to the choice.
+
+**Persons.** With [market] level = "person" the records of an on-site or household survey become
+a table of their own (``persons``), priced with their own party size.
 """
 
 from __future__ import annotations
 
-import difflib
 from typing import Any
 
 import numpy as np
 import pandas as pd
 
 from pipeline.errors import JoinError
-from pipeline.parties import person_visits
+from pipeline.expansion import expanded_records
+from pipeline.persons import person_table
+from pipeline.sampling_errors import visits_variance
 from pipeline.settings import MarketSettings
 from pipeline.study import Study
-from pipeline.tables import PLACED_STATUSES
+from pipeline.visit_settings import VisitsSettings
 
 PAIR = ["zone_id", "site_id"]
 
@@ -39,18 +36,19 @@ def join(
     sites: pd.DataFrame,
     *,
     study: Study,
-) -> tuple[pd.DataFrame]:
+) -> tuple[pd.DataFrame, pd.DataFrame | None]:
     """Bring visits, population, income, prices and the market together.
 
     Parameters
     ----------
     origins, costs, routes, zones, sites : tables of the earlier stages.
-    study : reads [visits] annual_visits, [zones] covariates and [market].
+    study : reads [visits], [zones] covariates and [market].
 
     Returns
     -------
     The `zone_table`: every zone for every site to be valued, zones without a visit with zero,
-    zones outside the market with the reason in `market_note`.
+    zones outside the market with the reason in `market_note`. And the `trip_table`, where
+    [market] level asks for it, else None.
 
     Raises
     ------
@@ -60,12 +58,14 @@ def join(
     """
     valued = sites.loc[sites["role"] == "site", "site_id"].drop_duplicates()
     _check_zones(origins, zones)
-    factors = expansion_factors(origins, valued, study.visits.annual_visits)
+    records = expanded_records(origins, zones, valued, study.visits)
     pairs = zones[["zone_id"]].merge(valued.to_frame(), how="cross")
     people = zones[["zone_id", "population", "household_income", *study.zones.covariates]]
     table = (
         pairs.merge(pd.DataFrame(people), on="zone_id", how="left", validate="many_to_one")
-        .merge(sampled_visits(origins), on=PAIR, how="left", validate="one_to_one")
+        .merge(
+            zone_visits(records, origins, study.visits), on=PAIR, how="left", validate="one_to_one"
+        )
         .merge(_ways(routes), on=PAIR, how="left", validate="one_to_one")
         .merge(_prices(costs), on=PAIR, how="left", validate="one_to_one")
         .merge(
@@ -75,58 +75,67 @@ def join(
             validate="one_to_one",
         )
     )
-    table["sampled_visits"] = table["sampled_visits"].fillna(0.0)
-    table["expansion_factor"] = table["site_id"].map(factors)
-    table["visits"] = table["sampled_visits"] * table["expansion_factor"]
+    table = _with_zeros(table, records)
     population = table["population"]
     table["visits_per_1000"] = 1000 * table["visits"] / population.where(population > 0)
-    table["market_note"] = _market_notes(table, study.market)
+    table["market_note"] = _market_notes(table, study)
     table["in_market"] = table["market_note"].isna()
-    return (table.drop(columns=["cost_status", "route_status"]),)
+    table = table.drop(columns=["cost_status", "route_status"])
+    if study.market.level == "zone":
+        return table, None
+    return table, person_table(records, origins, costs, table, study.visits)
 
 
-def sampled_visits(origins: pd.DataFrame) -> pd.DataFrame:
-    """Person-visits in the records with a zone: `zone_id, site_id, sampled_visits`."""
-    placed = origins["origin_status"].isin(PLACED_STATUSES)
-    visits = origins.loc[placed, PAIR].assign(sampled_visits=person_visits(origins)[placed])
-    return visits.groupby(PAIR, as_index=False).agg(sampled_visits=("sampled_visits", "sum"))
+def zone_visits(
+    records: pd.DataFrame, origins: pd.DataFrame, visits: VisitsSettings
+) -> pd.DataFrame:
+    """Expanded visits of the zones that have a record.
 
-
-def expansion_factors(
-    origins: pd.DataFrame, valued: pd.Series[str], annual_visits: dict[str, float]
-) -> dict[str, float]:
-    """Visits per year that a sampled visit stands for, by site (see the module's text).
-
-    Raises
-    ------
-    JoinError
-        A known total is of no site to be valued, or none of its visits has a zone.
+    Returns
+    -------
+    `zone_id, site_id, sampled_records, sampled_visits, expansion_factor, visits, visits_se`, and
+    where trips with other purposes are treated `other_purpose_visits, multi_purpose`.
     """
-    for site in annual_visits:
-        if site not in set(valued):
-            near = difflib.get_close_matches(site, list(valued), n=1, cutoff=0.0)
-            raise JoinError(
-                f"[visits] annual_visits names {site!r}, which is no site to be valued; "
-                f"the nearest is {near[0]!r}. Correct the name."
-            )
-    visits = person_visits(origins)
-    everyone = _by_site(visits, origins)
-    domestic = _by_site(visits[origins["origin_status"] != "foreign"], origins)
-    placed = _by_site(visits[origins["origin_status"].isin(PLACED_STATUSES)], origins)
-    factors = {str(site): 1.0 for site in valued}
-    for site, total in annual_visits.items():
-        if placed.get(site, 0.0) <= 0:
-            raise JoinError(
-                f"[visits] annual_visits: the total of {site!r} cannot be spread over the zones, "
-                "because none of its visits has a zone. Bring records of that site."
-            )
-        factors[site] = total * domestic[site] / everyone[site] / placed[site]
-    return factors
+    variance = visits_variance(records, origins, visits).groupby(["zone_id", "site_id"]).sum()
+    placed = records[records["is_placed"]]
+    whole = placed["person_visits"] * placed["factor"]
+    sums = (
+        placed[PAIR]
+        .assign(
+            sampled_records=1.0,
+            sampled_visits=placed["person_visits"] * placed["share"],
+            visits=whole * placed["share"],
+            other_purpose_visits=whole * (1 - placed["share"]),
+            multi_purpose=whole * placed["multi_purpose"],
+        )
+        .groupby(PAIR)
+        .sum()
+    )
+    factor = sums["visits"] / sums["sampled_visits"].where(sums["sampled_visits"] > 0)
+    everything = sums["visits"] + sums["other_purpose_visits"]
+    sums["multi_purpose"] = sums["multi_purpose"] / everything.where(everything > 0)
+    sums = sums.assign(expansion_factor=factor, visits_se=(variance**0.5).reindex(sums.index))
+    if visits.other_purposes == "keep":
+        sums = sums.drop(columns=["other_purpose_visits", "multi_purpose"])
+    return sums.reset_index()
 
 
-def _by_site(visits: pd.Series[float], origins: pd.DataFrame) -> dict[str, float]:
-    sums = visits.groupby(origins["site_id"].loc[visits.index]).sum()
-    return {str(site): float(value) for site, value in sums.items()}
+def _with_zeros(table: pd.DataFrame, records: pd.DataFrame) -> pd.DataFrame:
+    """Zones without a record: zero visits, and their site's means where a mean is needed."""
+    filled = table.copy()
+    counts = ["sampled_records", "sampled_visits", "visits", "visits_se", "other_purpose_visits"]
+    for name in counts:
+        if name in filled:
+            filled[name] = filled[name].fillna(0.0)
+    placed = records[records["is_placed"]]
+    number = placed["person_visits"].groupby(placed["site_id"]).sum()
+    means = {"expansion_factor": "factor", "multi_purpose": "multi_purpose"}
+    for name, of_record in means.items():
+        if name in filled:
+            total = (placed[of_record] * placed["person_visits"]).groupby(placed["site_id"]).sum()
+            mean = filled["site_id"].map(total / number.where(number > 0)).astype("float64")
+            filled[name] = filled[name].fillna(mean)
+    return filled
 
 
 def substitute_costs(
@@ -194,9 +203,9 @@ def _prices(costs: pd.DataFrame) -> pd.DataFrame:
     return costs[[*PAIR, "travel_cost", "cost_status"]]
 
 
-def _market_notes(table: pd.DataFrame, market: MarketSettings) -> pd.Series[str]:
+def _market_notes(table: pd.DataFrame, study: Study) -> pd.Series[str]:
     """Why a pair is left out of the market; missing where it is not. The first reason counts."""
-    far, long = market.max_distance_km, market.max_drive_time_min
+    far, long = study.market.max_distance_km, study.market.max_drive_time_min
     nobody = table["population"] <= 0
     no_price = table["travel_cost"].isna()
     visited = nobody & (table["visits"] > 0)
@@ -206,6 +215,8 @@ def _market_notes(table: pd.DataFrame, market: MarketSettings) -> pd.Series[str]
         (no_price & table["cost_status"].isna(), "no route in the routes table"),
         (no_price, "no price: " + table["cost_status"].fillna("")),
     ]
+    if study.visits.kind == "household" and study.visits.household_expansion == "zone_population":
+        reasons.append((table["sampled_records"] == 0, "no respondent lives in the zone"))
     if far is not None:
         reasons.append((table["distance_km"] > far, f"further than {far:g} km"))
     if long is not None:
@@ -229,12 +240,21 @@ def _check_zones(origins: pd.DataFrame, zones: pd.DataFrame) -> None:
 
 def summarise_join(outputs: tuple[Any, ...]) -> str:
     """One line: rows, zones with visits, visits in the market, and what lies outside."""
-    table = outputs[0]
+    table, persons = outputs
     inside = table["in_market"]
     visits, outside = table.loc[inside, "visits"].sum(), table.loc[~inside, "visits"].sum()
     share = outside / (visits + outside) if visits + outside else 0.0
-    return (
-        f"{table['zone_id'].nunique():,} zones × {table['site_id'].nunique():,} sites, "
-        f"{int((table['visits'] > 0).sum()):,} pairs with visits, {visits:,.0f} visits a year in "
-        f"the market ({int(inside.sum()):,} pairs), {share:.1%} of visits from outside it"
+    line = (
+        f"{_count(table['zone_id'].nunique(), 'zone')} × "
+        f"{_count(table['site_id'].nunique(), 'site')}, "
+        f"{_count(int((table['visits'] > 0).sum()), 'pair')} with visits, {visits:,.0f} visits a "
+        f"year in the market ({_count(int(inside.sum()), 'pair')}), {share:.1%} of visits from "
+        "outside it"
     )
+    if "other_purpose_visits" in table:
+        line += f", {table['other_purpose_visits'].sum():,.0f} visits left to other purposes"
+    return line if persons is None else f"{line}; {_count(len(persons), 'record')} of persons"
+
+
+def _count(number: int, thing: str) -> str:
+    return f"{number:,} {thing}{'' if number == 1 else 's'}"

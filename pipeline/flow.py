@@ -13,7 +13,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from pipeline import inputs
+from pipeline import inputs, records
 from pipeline.cost_settings import CostsSettings
 from pipeline.costs import cost, summarise_cost
 from pipeline.demand import demand_with_diagnostics, summarise_demand
@@ -42,8 +42,6 @@ from pipeline.settings import (
     ScenarioSettings,
     SitesSettings,
     SurplusSettings,
-    VisitsSettings,
-    ZonesSettings,
 )
 from pipeline.study import Study
 from pipeline.surplus import summarise_surplus, surplus
@@ -69,6 +67,7 @@ from pipeline.tables import (
     ZoneSurplus,
     ZoneTable,
 )
+from pipeline.visit_settings import VisitsSettings, ZonesSettings
 
 Kind = type[Any]
 
@@ -98,7 +97,8 @@ class Stage:
     ----------
     name : as on the command line.
     run : the pure function; gets what `reads` lists and the keyword `study`.
-    reads, writes : classes of tables and artefacts, in the order of arguments and results.
+    reads, writes : classes of tables and artefacts, in the order of arguments and results; a
+        stage returns None for a table that the study does not ask for.
     sections : sections of the study that it reads beside [study].
     summarise : one line for people from what it returned.
     """
@@ -140,7 +140,7 @@ INPUTS: dict[Kind, Input] = {
     for item in (
         Input(
             VisitRecords,
-            inputs.read_visit_records,
+            records.read_visit_records,
             (VisitsSettings, SitesSettings),
             "visits.file",
         ),
@@ -197,7 +197,7 @@ FLOW: tuple[Stage, ...] = (
         "join",
         join,
         reads=(Origins, Costs, Routes, Zones, Sites),
-        writes=(ZoneTable,),
+        writes=(ZoneTable, TripTable),
         sections=(VisitsSettings, MarketSettings, ZonesSettings),
         summarise=summarise_join,
     ),

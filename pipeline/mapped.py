@@ -5,8 +5,7 @@ from __future__ import annotations
 import pandas as pd
 
 from pipeline.errors import StudyError, TableError
-from pipeline.sections import Section
-from pipeline.settings import FileSection
+from pipeline.sections import FileSection, Section
 from pipeline.userfiles import UserTable, first_true, read_user_table
 
 TRUTH = {"true": True, "1": True, "yes": True, "false": False, "0": False, "no": False}

@@ -2,7 +2,24 @@
 
 from __future__ import annotations
 
+import numpy as np
 import pandas as pd
+
+from pipeline.visit_settings import VisitsSettings
+
+KINDS_OF_PERSONS = ("household", "zone_counts")
+
+
+def counted_trips(origins: pd.DataFrame, kind: str) -> pd.Series[float]:
+    """Trips that each record adds to the sample.
+
+    An interview on the site is one visit that was met, however often the respondent comes:
+    those who come often are met more often, each time as one visit. Of every other kind a
+    record adds the trips that it tells of. Both times its weight.
+    """
+    if kind == "on_site":
+        return origins["weight"].astype("float64")
+    return origins["trips"] * origins["weight"]
 
 
 def mean_party_sizes(origins: pd.DataFrame) -> pd.Series[float]:
@@ -20,39 +37,67 @@ def mean_party_sizes(origins: pd.DataFrame) -> pd.Series[float]:
     People per party by `site_id`; a site none of whose records has a party size is absent.
     """
     known = _known(origins)
-    trips = (known["trips"] * known["weight"]).groupby(known["site_id"]).sum()
-    people = (known["party_size"] * known["trips"] * known["weight"]).groupby(known["site_id"])
-    return people.sum() / trips[trips > 0]
+    return _mean_per_trip(known, known["site_id"])
 
 
 def overall_party_size(origins: pd.DataFrame) -> float | None:
     """Mean party size per trip over all records; None where no record has one."""
     known = _known(origins)
-    trips = known["trips"] * known["weight"]
+    trips = known["counted_trips"]
     if trips.sum() == 0:
         return None
     return float((known["party_size"] * trips).sum() / trips.sum())
 
 
-def person_visits(origins: pd.DataFrame) -> pd.Series[float]:
-    """Person-visits that each record stands for: trips × party size × weight.
+def records_are_parties(visits: VisitsSettings) -> bool:
+    """Whether a record's trip counts for its whole party."""
+    if visits.records_are == "by_kind":
+        return visits.kind not in KINDS_OF_PERSONS
+    return visits.records_are == "parties"
 
-    A record without party size takes the mean of its site. Where no record of a site has one, a
-    trip counts as one person: such records are tickets or permits of persons, not of parties.
+
+def people_per_trip(origins: pd.DataFrame, visits: VisitsSettings) -> pd.DataFrame:
+    """People whom one trip of each record counts for.
+
+    One, where records are of persons. Of parties it is the party size; a record without takes
+    the mean of its site (of a surveyed register, of its class). Where no record of a site has
+    one, a trip counts as one person: such records are tickets or permits of persons.
 
     Parameters
     ----------
     origins : the `origins` table.
+    visits : reads kind, records_are and register_classes.
 
     Returns
     -------
-    Person-visits, with the index of `origins`.
+    `people` and `is_filled` (whether it is a mean), with the index of `origins`.
     """
-    site_mean = origins["site_id"].map(mean_party_sizes(origins).dropna())
-    party_size = origins["party_size"].fillna(site_mean).fillna(1.0)
-    return origins["trips"] * party_size * origins["weight"]
+    if not records_are_parties(visits):
+        return pd.DataFrame({"people": 1.0, "is_filled": False}, index=origins.index)
+    size = origins["party_size"]
+    filled = size
+    if visits.kind == "sample_of_register":
+        known = _known(origins)
+        label = class_labels(origins, visits.register_classes)
+        filled = filled.fillna(label.map(_mean_per_trip(known, label.loc[known.index]).dropna()))
+    site_mean = origins["site_id"].map(mean_party_sizes(origins).dropna()).astype("float64")
+    filled = filled.fillna(site_mean)
+    is_filled = size.isna() & filled.notna()
+    return pd.DataFrame({"people": filled.fillna(1.0), "is_filled": is_filled})
+
+
+def class_labels(origins: pd.DataFrame, classes: tuple[str, ...]) -> pd.Series[int]:
+    """A number for each combination of the site and the given columns."""
+    return origins.groupby(["site_id", *classes], sort=True, dropna=False).ngroup()
+
+
+def _mean_per_trip(known: pd.DataFrame, group: pd.Series) -> pd.Series[float]:
+    trips = known["counted_trips"].groupby(group).sum()
+    people = (known["party_size"] * known["counted_trips"]).groupby(group).sum()
+    return people / trips.where(trips > 0, np.nan)
 
 
 def _known(origins: pd.DataFrame) -> pd.DataFrame:
+    """Party size and counted trips of the records that have a party size and are not foreign."""
     is_known = origins["party_size"].notna() & (origins["origin_status"] != "foreign")
-    return origins.loc[is_known, ["site_id", "party_size", "trips", "weight"]]
+    return origins.loc[is_known, ["site_id", "party_size", "counted_trips"]]

@@ -8,7 +8,6 @@ the file, the row and the column as their owner knows them.
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import cast
 
 import geopandas as gpd
 import numpy as np
@@ -19,10 +18,10 @@ from pipeline.countries import country_names
 from pipeline.errors import StudyError, TableError
 from pipeline.inputs import read_sites
 from pipeline.mapped import Mapped, as_truth, read_section
-from pipeline.settings import VisitsSettings
 from pipeline.study import Study
 from pipeline.tables import SurveyColumns, VisitRecords
 from pipeline.userfiles import UserTable, first_true
+from pipeline.visit_settings import VisitColumns, VisitsSettings
 
 PARTY_TOLERANCE = 1e-6
 
@@ -56,7 +55,7 @@ def read_visit_records(study: Study) -> pd.DataFrame:
             "postal_code_raw": mapped.texts("postal_code", no_code),
             "site_id": mapped.texts("site_id", _only_site(sites)),
             "trips": mapped.numbers("trips", 1.0),
-            "party_size": _party_sizes(table, mapped),
+            "party_size": _party_sizes(table, mapped, visits.columns),
             "weight": mapped.numbers("weight", 1.0),
         },
         index=rows,
@@ -67,6 +66,8 @@ def read_visit_records(study: Study) -> pd.DataFrame:
     checked = VisitRecords.checked(frame, source=table.source(names))
     _check_sites(table, visits.columns.site_id, checked["site_id"], sites)
     _check_weights(table, visits.columns.weight, checked)
+    if visits.kind == "on_site":
+        _check_interviews(table, visits.columns.trips, checked["trips"])
     return checked.reset_index(drop=True)
 
 
@@ -101,7 +102,7 @@ def _survey(table: UserTable, mapped: Mapped, visits: VisitsSettings) -> pd.Data
     return pd.DataFrame(found, index=table.frame.index)
 
 
-def _party_sizes(table: UserTable, mapped: Mapped) -> pd.Series[float]:
+def _party_sizes(table: UserTable, mapped: Mapped, columns: VisitColumns) -> pd.Series[float]:
     """Party size as given; adults and children together where it is not."""
     size = mapped.numbers("party_size", np.nan)
     names = [name for name in ("adults", "children") if mapped.has(name)]
@@ -115,8 +116,8 @@ def _party_sizes(table: UserTable, mapped: Mapped) -> pd.Series[float]:
         raise TableError(
             f"{table.name}: in {int(wrong.sum())} record(s) adults and children do not add up to "
             f"the party; first: {parts[0].iloc[first]:g} + {parts[1].iloc[first]:g} in columns "
-            f"{mapped.columns.adults!r} and {mapped.columns.children!r}, but {size.iloc[first]:g} "  # type: ignore[attr-defined]
-            f"in column {mapped.columns.party_size!r}{table.row(wrong, first)}. Correct the record."  # type: ignore[attr-defined]
+            f"{columns.adults!r} and {columns.children!r}, but {size.iloc[first]:g} "
+            f"in column {columns.party_size!r}{table.row(wrong, first)}. Correct the record."
         )
     return size.fillna(together)
 
@@ -132,7 +133,7 @@ def _points(table: UserTable, mapped: Mapped, visits: VisitsSettings) -> pd.Data
         shapes = gpd.GeoSeries(table.frame["geometry"])
         if shapes.crs is None:
             raise TableError(f"{table.name}: the layer has no CRS; write it into the file.")
-        if not shapes.dropna().geom_type.eq("Point").all():
+        if not gpd.GeoSeries(shapes.dropna()).geom_type.isin(["Point"]).all():
             raise TableError(f"{table.name}: homes are points; the layer has other shapes.")
         x, y = shapes.x, shapes.y
     else:
@@ -141,7 +142,7 @@ def _points(table: UserTable, mapped: Mapped, visits: VisitsSettings) -> pd.Data
     known = (x.notna() & y.notna()).to_numpy()
     lonlat = pd.DataFrame({"lon": placed.x, "lat": placed.y}, index=table.frame.index)
     lonlat = lonlat.where(pd.Series(known, index=table.frame.index))
-    lost = known & ~np.isfinite(lonlat).all(axis=1).to_numpy()
+    lost = known & ~np.isfinite(lonlat.to_numpy()).all(axis=1)
     if lost.any():
         wrong = pd.Series(lost, index=table.frame.index)
         first = first_true(wrong)
@@ -157,7 +158,8 @@ def _dates(table: UserTable, column: str, form: str) -> pd.Series[str]:
     """Days as ISO 8601 text."""
     values = table.frame[column]
     if pd.api.types.is_datetime64_any_dtype(values):
-        return values.dt.strftime("%Y-%m-%d")
+        days_given: pd.Series[str] = values.dt.strftime("%Y-%m-%d").astype("str")
+        return days_given
     text = table.texts(column)
     days = pd.to_datetime(text, format=form, errors="coerce")
     wrong = text.notna() & days.isna()
@@ -168,7 +170,7 @@ def _dates(table: UserTable, column: str, form: str) -> pd.Series[str]:
             f"as {form}; first: {text.iloc[first]!r}{table.row(wrong, first)}. Correct the file, "
             "or say how days are written: [visits] date_format."
         )
-    return days.dt.strftime("%Y-%m-%d")
+    return days.dt.strftime("%Y-%m-%d").astype("str")
 
 
 def _seasons(
@@ -212,7 +214,7 @@ def _countries(table: UserTable, column: str, words: dict[str, str]) -> pd.Serie
             f"first: {text.iloc[first]!r}{table.row(wrong, first)}. Write its two-letter code, or "
             f'add the word to the study file: country_words = {{ "{text.iloc[first]}" = "..." }}.'
         )
-    return cast("pd.Series[str]", codes.where(text.notna()))
+    return codes.where(text.notna())
 
 
 def _only_site(sites: pd.DataFrame) -> str | None:
@@ -244,4 +246,16 @@ def _check_weights(table: UserTable, column: str, records: pd.DataFrame) -> None
             f"{table.name}: the weights in column {column!r} of the {int(nothing.sum())} records "
             f"of site {records['site_id'].iloc[first]!r} sum to nothing; first: 0"
             f"{table.row(nothing, first)}. Give at least one of them a weight."
+        )
+
+
+def _check_interviews(table: UserTable, column: str, trips: pd.Series[float]) -> None:
+    """Whoever is met on the site has come at least once."""
+    wrong = trips < 1
+    if wrong.any():
+        first = first_true(wrong)
+        raise TableError(
+            f"{table.name}: {int(wrong.sum())} interview(s) on the site tell of less than one trip "
+            f"in column {column!r}; first: {trips.iloc[first]:g}{table.row(wrong, first)}. Count "
+            "the trip on which the person was met, or set [visits] kind."
         )

@@ -86,8 +86,13 @@ class Run:
         return None
 
     def _stamp_whole_run(self, stages: tuple[Stage, ...]) -> None:
-        files = [self._path(kind) for stage in stages for kind in stage.writes]
+        files = self._written(stages)
         self._write_stamp(stamps.WHOLE_RUN, stamps.study_stamp(self.study), files)
+
+    def _written(self, stages: tuple[Stage, ...]) -> list[Path]:
+        """What the stages have written; a table that the study does not ask for is not there."""
+        paths = [self._path(kind) for stage in stages for kind in stage.writes]
+        return [path for path in paths if path.exists()]
 
     def _write_stamp(self, name: str, stamp: str, files: list[Path]) -> None:
         content = {"stamp": stamp, "files": stamps.file_digests(files, self.folder)}
@@ -105,7 +110,7 @@ class Run:
         )
         for kind, result in zip(stage.writes, checked, strict=True):
             self._write(kind, result)
-        self._write_stamp(stage.name, stamp, [self._path(kind) for kind in stage.writes])
+        self._write_stamp(stage.name, stamp, self._written((stage,)))
         seconds = time.perf_counter() - started
         self.tell(f"{stage.name}: {stage.summarise(checked)}, {seconds:.1f} s")
 
@@ -147,6 +152,8 @@ class Run:
         if not any(kind in stage.writes for stage in plan(self.study)):
             return None
         path = self._path(kind)
+        if not path.exists():
+            return None
         return read_table(kind, path) if issubclass(kind, Table) else kind.read(path)
 
     def _read_input(self, kind: Kind) -> Any:
@@ -177,6 +184,10 @@ class Run:
         return self.folder / "work" / str(kind.folder_name)
 
     def _write(self, kind: Kind, result: Any) -> None:
+        if result is None:
+            # What an earlier run wrote is not of this study any more.
+            self._path(kind).unlink(missing_ok=True)
+            return
         if issubclass(kind, Table):
             write_table(result, self._path(kind))
             return

@@ -69,6 +69,15 @@ class Section(BaseModel):
     section_name: ClassVar[str] = ""
 
 
+class FileSection(Section):
+    """A section whose table is a file of the study's own."""
+
+    file: InputPath | None = setting("CSV, Excel or Parquet.", None)
+    sheet: str | None = setting("Sheet, where the file is a workbook; default: the first.", None)
+    layer: str | None = setting("Layer, where the file is a GIS file with several.", None)
+    encoding: str = setting("Encoding of a CSV file: 'utf-8', 'latin-1', 'cp1252', ...", "utf-8")
+
+
 def inner_section(info: FieldInfo) -> type[Section] | None:
     """The section that a key holds many of (by name, or in a list); None for a plain key."""
     for part in get_args(info.annotation):

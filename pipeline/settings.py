@@ -9,31 +9,20 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal, Self
 
-from pydantic import AfterValidator, Field, model_validator
+from pydantic import Field, model_validator
 
 from pipeline.cost_settings import CostsSettings
 from pipeline.sections import (
     CrsName,
+    FileSection,
     InputPath,
     OutputPath,
     Positive,
-    Regex,
     Section,
-    Share,
     setting,
 )
 from pipeline.sensitivity_settings import SensitivitySettings
-
-from pipeline.countries import country_names
-
-
-def _country(value: str) -> str:
-    if value not in country_names():
-        raise ValueError("no ISO 3166 country code of two capitals")
-    return value
-
-
-CountryCode = Annotated[str, AfterValidator(_country)]
+from pipeline.visit_settings import VisitsSettings, ZonesSettings
 
 
 class StudySettings(Section):
@@ -53,15 +42,6 @@ class StudySettings(Section):
         "default: a folder with the study's name beside the study file.",
         None,
     )
-
-
-class FileSection(Section):
-    """A section whose table is a file of the study's own."""
-
-    file: InputPath | None = setting("CSV, Excel or Parquet.", None)
-    sheet: str | None = setting("Sheet, where the file is a workbook; default: the first.", None)
-    layer: str | None = setting("Layer, where the file is a GIS file with several.", None)
-    encoding: str = setting("Encoding of a CSV file: 'utf-8', 'latin-1', 'cp1252', ...", "utf-8")
 
 
 class SiteColumns(Section):
@@ -86,129 +66,6 @@ class SitesSettings(FileSection):
         "CSV, Excel, Parquet or GIS layer of points; one row per access point.", None
     )
     columns: SiteColumns = setting("Column names in that file.", SiteColumns())
-
-
-class ZoneColumns(Section):
-    """The study's own column names in the zones file."""
-
-    zone_id: str = setting("Zone's identifier.", "zone_id")
-    postal_code: str = setting("Postal code of the zone; absent: the identifier.", "postal_code")
-    zone_name: str = setting("Name to show; may be absent.", "zone_name")
-    population: str = setting("People who live there.", "population")
-    household_income: str = setting(
-        "Household income per year; absent: [costs] fallback_household_income.",
-        "household_income",
-    )
-    lon: str = setting("Longitude of the centroid, WGS 84; may be absent with polygons.", "lon")
-    lat: str = setting("Latitude of the centroid, WGS 84; may be absent with polygons.", "lat")
-
-
-class ZonesSettings(FileSection):
-    """Zones of origin with their people and income."""
-
-    section_name: ClassVar[str] = "zones"
-    file: InputPath | None = setting(
-        "CSV, Excel or Parquet with centroids, or a GIS layer with polygons.", None
-    )
-    columns: ZoneColumns = setting("Column names in that file.", ZoneColumns())
-    covariates: tuple[str, ...] = setting(
-        "Further columns of the zones file (numbers) to carry into the finished table.", ()
-    )
-    country: CountryCode | None = setting(
-        "Country of the zones (ISO 3166, two letters): its postal code format says what is well "
-        "formed, a ZIP+4 counts as its ZIP, a leading country prefix is dropped.",
-        None,
-    )
-    postal_code_pattern: Regex | None = setting(
-        "Regular expression that a normalised code (capitals and digits only) matches fully, for "
-        "made-up or local codes; where it has a group, the first group is the zone's code and the "
-        "rest says where in the zone. Default: the country's format; without a country a code is "
-        "well formed when some code of the zones file has the same form.",
-        None,
-    )
-
-
-class VisitColumns(Section):
-    """The study's own column names in the visit records."""
-
-    record_id: str = setting("Record's identifier; absent: its row in the file.", "record_id")
-    postal_code: str = setting("Postal code of the visitor's home.", "postal_code")
-    site_id: str = setting("Site visited; may be absent with one site.", "site_id")
-    trips: str = setting("Trips that the record stands for; absent: 1.", "trips")
-    party_size: str = setting(
-        "People who came together; absent: adults and children, else unknown.", "party_size"
-    )
-    weight: str = setting("Sampling weight; absent: 1.", "weight")
-    lon: str | None = setting("Longitude or easting of the home, in [visits] crs.", None)
-    lat: str | None = setting("Latitude or northing of the home, in [visits] crs.", None)
-    country: str | None = setting("Country of the home: two letters or English name.", None)
-    adults: str | None = setting("Adults in the party.", None)
-    children: str | None = setting("Children in the party.", None)
-    vehicle: str | None = setting("Class of vehicle, as [costs] knows it.", None)
-    mode: str | None = setting(
-        "Means of travel: car, motorcycle, coach, bus, train, bicycle, foot, aeroplane.", None
-    )
-    nights: str | None = setting("Nights away from home.", None)
-    lodging: str | None = setting("Kind of lodging.", None)
-    hours_on_site: str | None = setting("Hours spent on the site.", None)
-    trip_hours: str | None = setting(
-        "Hours of the whole stay away, travel not counted (other places included).", None
-    )
-    stops: str | None = setting("Other places visited on the same trip.", None)
-    purpose_share: str | None = setting(
-        "Share of the trip's purpose that was this site, 0 to 1.", None
-    )
-    activity: str | None = setting("Main activity.", None)
-    date: str | None = setting("Day of the visit, in [visits] date_format.", None)
-    season: str | None = setting("Season; default: from the date by [visits] seasons.", None)
-    household_income: str | None = setting("Respondent's household income per year.", None)
-    surveyed: str | None = setting(
-        "Whether the register's record was surveyed (kind sample_of_register).", None
-    )
-    trips_se: str | None = setting("Standard error of the count (kind zone_counts).", None)
-    reported_distance_km: str | None = setting("Distance that was reported, one way, km.", None)
-    reported_time_min: str | None = setting("Travel time that was reported, one way, min.", None)
-    reported_cost: str | None = setting("Spending on travel that was reported, per party.", None)
-
-
-class CrosswalkColumns(Section):
-    """The study's own column names in the crosswalk."""
-
-    postal_code: str = setting("Code that is no zone of its own.", "postal_code")
-    zone_id: str = setting("Zone that the code belongs to.", "zone_id")
-
-
-class VisitsSettings(FileSection):
-    """Visit records and what turns them into a year of visits."""
-
-    section_name: ClassVar[str] = "visits"
-    file: InputPath | None = setting("CSV, Excel or Parquet; one row per record.", None)
-    columns: VisitColumns = setting("Column names in that file.", VisitColumns())
-    crosswalk: InputPath | None = setting(
-        "CSV, Excel or Parquet of codes that are no zone of their own (PO boxes, retired codes).",
-        None,
-    )
-    crosswalk_columns: CrosswalkColumns = setting(
-        "Column names in the crosswalk.", CrosswalkColumns()
-    )
-    foreign_codes: tuple[Regex, ...] = setting(
-        "Regular expressions of codes of other countries; matched in full against the code as "
-        "written (in capitals) and as normalised, after the zones' own codes.",
-        (),
-    )
-    max_unmatched_share: Share = setting(
-        "The run stops when a larger share of the records that are not foreign has no zone.",
-        0.1,
-        unit="share",
-        usual="0.05 to 0.2",
-    )
-    annual_visits: dict[str, Positive] = setting(
-        "Known person-visits in a year, per site, visitors from abroad included; the records are "
-        "expanded to it. A site that is not named is taken as counted in full.",
-        {},
-        unit="visits/year",
-        usual="a counter or ticket total",
-    )
 
 
 class RoadsSettings(Section):
@@ -336,6 +193,12 @@ class MarketSettings(Section):
     )
     trip_table: InputPath | None = setting(
         "A ready trip_table (CSV or Parquet); the flow starts at demand.", None
+    )
+    level: Literal["zone", "person"] = setting(
+        "What demand is fitted to: zones, or the records of persons (kinds on_site and "
+        "household), which join then writes as trip_table.",
+        "zone",
+        usual="zone; person for surveys with trips per respondent",
     )
     max_distance_km: float | None = setting(
         "Zones further away are left out of the regression.",

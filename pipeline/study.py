@@ -34,10 +34,9 @@ from pipeline.settings import (
     SitesSettings,
     StudySettings,
     SurplusSettings,
-    VisitsSettings,
-    ZonesSettings,
 )
 from pipeline.variants import check_own_variants
+from pipeline.visit_settings import VisitsSettings, ZonesSettings
 
 
 class Study(BaseModel):

@@ -39,9 +39,7 @@ CENTROID_SOURCES = ("given", "inside_polygon", "population_weighted")
 class SurveyColumns(Table):
     """What a record may tell beyond who came from where; a study names the columns it has."""
 
-    adults: Series[float] | None = column(
-        "adults in the party", unit="people", ge=0, nullable=True
-    )
+    adults: Series[float] | None = column("adults in the party", unit="people", ge=0, nullable=True)
     children: Series[float] | None = column(
         "children in the party", unit="people", ge=0, nullable=True
     )
@@ -168,6 +166,13 @@ class Origins(SurveyColumns):
     weight: Series[float] = column("how many records like it this record stands for", ge=0)
     origin_status: Series[str] = column("how the zone was found, or why not", isin=ORIGIN_STATUSES)
     origin_note: Series[str] = column("what was changed, or the nearest valid codes", nullable=True)
+    counted_trips: Series[float] = column(
+        "trips that the record adds to the sample: trips times weight; of an interview on the "
+        "site its weight, however often the respondent comes",
+        unit="trips",
+        ge=0,
+    )
+    weight_before_raking: Series[float] | None = column("weight as it came", ge=0)
 
     class Config:
         unique = ["record_id"]
@@ -181,9 +186,12 @@ class OriginSummary(Table):
     records: Series[int] = column("visit records", unit="records", ge=0)
     trips: Series[float] = column("trips in those records", unit="trips", ge=0)
     person_visits: Series[float] = column(
-        "trips times party size times weight; unknown party sizes at the site's mean",
+        "counted trips times party size; unknown party sizes at the site's mean",
         unit="visits",
         ge=0,
+    )
+    party_size_filled: Series[int] | None = column(
+        "records whose party size is the site's mean, being unknown", unit="records", ge=0
     )
     share: Series[float] = column("share of the site's records", ge=0, le=1)
 
@@ -371,6 +379,9 @@ class ZoneTable(Table):
     household_income: Series[float] | None = column(
         "household income per year", unit="currency/year", gt=0, nullable=True
     )
+    sampled_records: Series[float] | None = column(
+        "visit records from the zone", unit="records", ge=0, nullable=True
+    )
     sampled_visits: Series[float] | None = column(
         "person-visits in the records, before expansion", unit="visits", ge=0, nullable=True
     )
@@ -382,6 +393,19 @@ class ZoneTable(Table):
     )
     visits_se: Series[float] | None = column(
         "standard error of the expanded visits", unit="visits/year", ge=0, nullable=True
+    )
+    other_purpose_visits: Series[float] | None = column(
+        "person-visits per year that belong to other purposes of the trips, not in visits",
+        unit="visits/year",
+        ge=0,
+        nullable=True,
+    )
+    multi_purpose: Series[float] | None = column(
+        "share of the visits on trips with other purposes; without visits the site's share",
+        unit="share",
+        ge=0,
+        le=1,
+        nullable=True,
     )
     visits_per_1000: Series[float] | None = column(
         "person-visits per year per 1,000 people", unit="visits/1000/year", ge=0, nullable=True
@@ -417,6 +441,20 @@ class TripTable(Table):
     site_id: Series[str] = column("site that is valued")
     trips: Series[float] = column("trips of the person in a year", unit="trips/year", ge=0)
     weight: Series[float] | None = column("how many people the record stands for", ge=0)
+    visits: Series[float] | None = column(
+        "person-visits per year that the record stands for: trips times weight",
+        unit="visits/year",
+        ge=0,
+    )
+    party_size: Series[float] | None = column(
+        "people who travelled together", unit="people", gt=0, nullable=True
+    )
+    purpose_share_used: Series[float] | None = column(
+        "share of the trip, and of its cost, that belongs to the site", unit="share", ge=0, le=1
+    )
+    multi_purpose: Series[float] | None = column(
+        "1 where the trip had other purposes, otherwise 0", ge=0, le=1
+    )
     travel_cost: Series[float] = column("price of a trip per person", unit="currency", ge=0)
     substitute_cost: Series[float] | None = column(
         "price of a trip to the cheapest substitute", unit="currency", ge=0, nullable=True

@@ -25,7 +25,7 @@ def finished(origins: pd.DataFrame, study: Study, **tables: pd.DataFrame) -> pd.
     zones, sites = tables.get("zones", make_zones()), tables.get("sites", make_sites())
     routes = tables.get("routes", make_routes())
     (costs,) = cost(routes, zones, sites, origins, study=study)
-    (table,) = join(origins, costs, routes, zones, sites, study=study)
+    table, _ = join(origins, costs, routes, zones, sites, study=study)
     return ZoneTable.checked(table).set_index("zone_id")
 
 
@@ -157,8 +157,8 @@ def test_summary_line() -> None:
     """West has 2 visits in the market, east 4 outside it."""
     study = make_study(market={"max_distance_km": 50.0})
     table = finished(make_origins(["west", "east", "east"]), study).reset_index()
-    assert summarise_join((table,)) == (
-        "3 zones × 1 sites, 2 pairs with visits, 2 visits a year in the market (1 pairs), "
+    assert summarise_join((table, None)) == (
+        "3 zones × 1 site, 2 pairs with visits, 2 visits a year in the market (1 pair), "
         "66.7% of visits from outside it"
     )
 
@@ -196,7 +196,7 @@ def test_the_domestic_part_of_a_known_total_is_conserved(
     known = domestic & ~np.isnan(size)
     people = w * np.where(np.isnan(size), (w * size)[known].sum() / w[known].sum(), size)
     study = make_study(visits={"annual_visits": {"reserve": total}})
-    (table,) = join(origins, COSTS, make_routes(), ZONES, make_sites(), study=study)
+    table, _ = join(origins, COSTS, make_routes(), ZONES, make_sites(), study=study)
     expected = total * people[domestic].sum() / people.sum()
     assert table["visits"].sum() == pytest.approx(expected, rel=1e-9)
     placed = np.array([state == "matched" for state in status])

@@ -20,9 +20,9 @@ from pipeline.inputs import (
     read_brought,
     read_crosswalk,
     read_sites,
-    read_visit_records,
     read_zones,
 )
+from pipeline.records import read_visit_records
 from pipeline.study import Study
 from pipeline.tables import Routes, TripTable, ZoneTable
 from tests.visit_world import make_routes, make_study

@@ -178,7 +178,10 @@ def test_summary_of_a_small_register() -> None:
     assert summary["trips"].tolist() == [5, 5]
     assert summary["person_visits"].tolist() == [10, 10]
     assert summary["share"].tolist() == [0.75, 0.25]
-    assert summarise_geocode(outputs) == "4 records: 3 matched, 1 unknown_code"
+    assert summary["party_size_filled"].tolist() == [1, 0]
+    assert summarise_geocode(outputs) == (
+        "4 records: 3 matched, 1 unknown_code; 1 without party size take the mean"
+    )
 
 
 CODES = st.one_of(

@@ -11,7 +11,7 @@ import pytest
 
 from pipeline.cost_settings import CostsSettings
 from pipeline.errors import StudyError
-from pipeline.settings import SECTIONS, ZonesSettings
+from pipeline.settings import SECTIONS
 from pipeline.study import Study, load_study, study_from
 from pipeline.template import (
     _is_section,
@@ -20,6 +20,7 @@ from pipeline.template import (
     tables_reference,
     write_new_study,
 )
+from pipeline.visit_settings import ZonesSettings
 
 DOCS = Path(__file__).parent.parent / "docs"
 

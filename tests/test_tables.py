@@ -34,9 +34,13 @@ def test_physical_columns_say_their_unit() -> None:
 
 
 def test_declared_columns_come_first_and_others_stay() -> None:
-    frame = make_records(["1"]).assign(day="Monday")[["day", *VisitRecords.columns()[::-1]]]
-    checked = VisitRecords.checked(frame)
-    assert checked.columns.tolist() == [*VisitRecords.columns(), "day"]
+    """A table's own columns come before those that it shares with others."""
+    records = make_records(["1"], lon=1.0, lat=2.0, adults=2.0)
+    checked = VisitRecords.checked(records.assign(day="Monday")[["day", *records.columns[::-1]]])
+    names = [*VisitRecords.columns()[:8], "adults", "day"]
+    assert checked.columns.tolist() == names
+    assert names[:8] == ["record_id", "postal_code_raw", "site_id", "trips", "party_size",
+                         "weight", "lon", "lat"]  # fmt: skip
 
 
 def test_whole_numbers_become_numbers_and_missing_stays_missing() -> None:

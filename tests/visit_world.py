@@ -92,7 +92,8 @@ def make_origins(zones: list[str | None], **columns: object) -> pd.DataFrame:
         "origin_status": ["unknown_code" if zone is None else "matched" for zone in zones],
         "origin_note": None,
     }
-    return Origins.checked(pd.DataFrame({**frame, **columns}))
+    origins = pd.DataFrame({**frame, **columns})
+    return Origins.checked(origins.assign(counted_trips=origins["trips"] * origins["weight"]))
 
 
 def make_routes() -> pd.DataFrame:

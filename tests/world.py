@@ -224,7 +224,7 @@ def estimate(
     origins: pd.DataFrame, settings: Study, *, count: int = 1
 ) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
     """Join, demand and surplus: `estimates, fit, surplus`."""
-    (zone_table,) = join(
+    zone_table, _ = join(
         origins, prices(count), routes(count), zones(), sites(count), study=settings
     )
     estimates, fit = demand(zone_table, None, study=settings)

@@ -19,6 +19,7 @@ _WHOLE_FLOAT = re.compile(r"(\d+)(?:\.0*|,0{1,2})")
 _SCIENTIFIC = re.compile(r"(\d(?:[.,]\d+)?)E\+?(\d{1,2})")
 _LOOK_ALIKE = {"O": "0O", "0": "0O", "I": "1I", "1": "1I"}
 _MOST_LOOK_ALIKES = 6
+_LONGEST_REST = 4
 
 
 def normalise(written: str) -> str:
@@ -102,16 +103,34 @@ class ValidCodes:
     codes: frozenset[str]
     digit_widths: tuple[int, ...]
     numbers: tuple[tuple[int, str], ...]
+    pattern: re.Pattern[str] | None = None
 
     @classmethod
-    def of(cls, codes: Set[str]) -> ValidCodes:
-        """Prepare the valid codes."""
+    def of(cls, codes: Set[str], pattern: re.Pattern[str] | None = None) -> ValidCodes:
+        """Prepare the valid codes; the first group of `pattern` is a code within a longer one."""
         digits = [code for code in codes if code.isascii() and code.isdigit()]
+        widths = {len(code) for code in digits}
+        longer = pattern if pattern is not None and pattern.groups else None
+        if longer is not None:
+            widths |= {width + more for width in widths for more in range(1, _LONGEST_REST + 1)}
         return cls(
             frozenset(codes),
-            tuple(sorted({len(code) for code in digits})),
+            tuple(sorted(widths)),
             tuple(sorted((int(code), code) for code in digits)),
+            longer,
         )
+
+    def area(self, code: str) -> str:
+        """The delivery area of a normalised code: of a ZIP+4 the ZIP; else the code itself."""
+        found = self.pattern.fullmatch(code) if self.pattern is not None else None
+        return code if found is None else found[1] or code
+
+    def within(self, code: str) -> str | None:
+        """The valid code that a normalised one is, or lies in (ZIP+4); None if neither."""
+        if code in self.codes:
+            return code
+        area = self.area(code)
+        return area if area in self.codes else None
 
 
 def lost_zeros(written: str, valid: ValidCodes) -> Reading:
@@ -119,8 +138,9 @@ def lost_zeros(written: str, valid: ValidCodes) -> Reading:
     code = normalise(written)
     if not (code.isascii() and code.isdigit()):
         return Reading(frozenset(), "")
-    padded = {code.zfill(width) for width in valid.digit_widths if width > len(code)}
-    return Reading(frozenset(padded & valid.codes), "leading zeros restored")
+    padded = (code.zfill(width) for width in valid.digit_widths if width > len(code))
+    codes = {found for found in map(valid.within, padded) if found is not None}
+    return Reading(frozenset(codes), "leading zeros restored")
 
 
 def lost_digits(written: str, valid: ValidCodes) -> Reading:
@@ -138,8 +158,9 @@ def look_alikes(written: str, valid: ValidCodes) -> Reading:
     choices = [_LOOK_ALIKE.get(character, character) for character in code]
     if sum(len(choice) > 1 for choice in choices) > _MOST_LOOK_ALIKES:
         return Reading(frozenset(), "")
-    codes = {"".join(characters) for characters in itertools.product(*choices)}
-    return Reading(frozenset(codes & valid.codes), "O and 0, or I and 1, exchanged")
+    written_so = ("".join(characters) for characters in itertools.product(*choices))
+    codes = {found for found in map(valid.within, written_so) if found is not None}
+    return Reading(frozenset(codes), "O and 0, or I and 1, exchanged")
 
 
 READINGS: tuple[Callable[[str, ValidCodes], Reading], ...] = (
