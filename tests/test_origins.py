@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import itertools
-import time
 from typing import Any
 
 import numpy as np
@@ -237,32 +236,3 @@ def test_nearest_codes_are_those_one_slip_away(code: str, valid: set[str]) -> No
     valid.discard(code)
     found = nearest_codes(code, valid, most=1000)
     assert sorted(found) == sorted(other for other in valid if slips(code, other) == 1)
-
-
-@pytest.mark.slow
-def test_two_million_records_in_half_a_minute() -> None:
-    """Memory is measured by `make bench`; time here, with 130,000 different written codes."""
-    rng = np.random.default_rng(1)
-    codes = pd.Series(np.sort(rng.choice(100_000, 30_000, replace=False))).astype("str")
-    codes = codes.str.zfill(5)
-    zones = pd.DataFrame({"zone_id": codes, "postal_code": codes})
-    n = 2_000_000
-    raw = codes.iloc[rng.integers(0, len(codes), n)].reset_index(drop=True)
-    kind = rng.integers(0, 20, n)
-    wrong = pd.Series(rng.integers(0, 100_000, n)).astype("str").str.zfill(5)
-    raw = raw.where(kind != 1, raw + ".0").where(kind != 2, raw.str.lstrip("0"))
-    raw = raw.where(kind != 3, wrong)
-    records = pd.DataFrame(
-        {
-            "record_id": np.arange(n).astype("str"),
-            "postal_code_raw": raw,
-            "site_id": "reserve",
-            "trips": 1.0,
-            "party_size": 2.0,
-            "weight": 1.0,
-        }
-    )
-    start = time.perf_counter()
-    _, summary = geocode(records, zones, None, study=ANY)
-    assert time.perf_counter() - start < 25
-    assert summary["records"].sum() == n

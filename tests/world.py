@@ -215,6 +215,7 @@ def draw_origins(seed: int, truth: Truth = TRUTH, *, site_id: str = "fen000") ->
         postal_code_raw=records["postal_code"],
         site_id=site_id,
         weight=1.0,
+        counted_trips=records["trips"],
         origin_status="matched",
         origin_note=pd.Series(np.nan, index=records.index).astype("str"),
     )
