@@ -3,7 +3,8 @@
 A row's weight is the number of people whom it stands for, so that trips × weight over the rows
 are the visits of a year. In an on-site survey it falls with the trips of the respondent, who was
 the more likely to be met the more often he came (Shaw, "On-site samples' regression", Journal
-of Econometrics 37, 1988); whoever never came is in no such table.
+of Econometrics 37, 1988); whoever never came is in no such table. `sampling_weight` is without
+that: what a record counts for in a likelihood that corrects for it itself.
 
 A trip with other purposes keeps its place in the count, and the share of its cost that belongs
 to the site is its price.
@@ -74,6 +75,7 @@ def _row_per_person(table: pd.DataFrame) -> pd.DataFrame:
         table["household_income"] = table["household_income_told"].fillna(table["household_income"])
     rows = table.assign(
         weight=people,
+        sampling_weight=table["weight"] * table["people"],
         visits=people * table["trips"],
         party_size=size,
         purpose_share_used=table["share"],

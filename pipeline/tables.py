@@ -441,6 +441,9 @@ class TripTable(Table):
     site_id: Series[str] = column("site that is valued")
     trips: Series[float] = column("trips of the person in a year", unit="trips/year", ge=0)
     weight: Series[float] | None = column("how many people the record stands for", ge=0)
+    sampling_weight: Series[float] | None = column(
+        "weight in the likelihood: as drawn, whatever the respondent's number of trips", ge=0
+    )
     visits: Series[float] | None = column(
         "person-visits per year that the record stands for: trips times weight",
         unit="visits/year",

@@ -299,14 +299,25 @@ def _trip_sample(site_id: str, rows: pd.DataFrame, covariates: tuple[str, ...]) 
         design=_design(used, covariates),
         counts=used["trips"].to_numpy(dtype=float),
         exposure=np.ones(len(used)),
-        # Weights that average one leave the likelihood on the scale of the records.
-        weight=people / people.mean() if len(people) else people,
+        weight=_likelihood_weights(used),
         people=people,
         visits=used["visits"].to_numpy(dtype=float),
         per=1.0,
         notes=notes,
         **_optional_arrays(used),
     )
+
+
+def _likelihood_weights(rows: pd.DataFrame) -> FloatArray:
+    """What each record counts for in the likelihood.
+
+    Where records of visitors met on the site stand for fewer people the more often they came,
+    the on-site models correct for that already, and `sampling_weight` is without it. Weights
+    that average one leave the likelihood on the scale of the records.
+    """
+    name = "sampling_weight" if "sampling_weight" in rows else "weight"
+    weights = rows[name].to_numpy(dtype=float)
+    return weights / weights.mean() if len(weights) else weights
 
 
 def _usable(

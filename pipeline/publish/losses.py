@@ -5,7 +5,7 @@ from __future__ import annotations
 import pandas as pd
 
 from pipeline.publish.markup import Html, table, tag
-from pipeline.publish.privacy import REASON
+from pipeline.publish.privacy import GIVEN_AWAY, REASON
 from pipeline.publish.results import Results
 from pipeline.publish.rows import rows_of
 from pipeline.publish.words import count, number, percent, whole, words_of
@@ -123,10 +123,17 @@ def _hidden(results: Results) -> Html | None:
     hidden = int(zones[REASON].notna().sum())
     words = (
         f"{count(hidden, 'zone')} with few visit records (below "
-        f"{results.study.publish.suppress_below}), or beside a single such zone, "
+        f"{results.study.publish.suppress_below}), or hiding such a zone in a total, "
         f"{'is' if hidden == 1 else 'are'} published without visits, so that nobody can be made "
         "out. The models used them."
     )
+    exposed = int(zones[REASON].str.endswith(GIVEN_AWAY, na=False).sum())
+    if exposed:
+        words += (
+            f" The visits of {count(exposed, 'zone')} of them can be worked out from the totals "
+            "of the site all the same, because no other zone in or outside the market hides them: "
+            "think before you publish, or move the market's limit."
+        )
     return tag("div", tag("h3", "Hidden figures"), tag("p", words))
 
 

@@ -1,15 +1,21 @@
 """What is hidden before anything is published: small cells, and every record.
 
 A zone with few visit records may point at a household. Counts from 1 to n − 1 are blanked with
-everything that would give them away, and the reason stands beside them. Zero is published: it
-tells of nobody. Where a site would be left with a single blank, its next smallest count is
-blanked too, or the known total would give the blank away (complementary suppression: Willenborg
-and de Waal, Elements of Statistical Disclosure Control, 2001, from memory).
+everything that would give them away. Zero is published: it tells of nobody.
+
+A total gives a blank away: published are, of each site, the visits of the market and, through
+the known total, those from outside it. So in each of these two blocks further counts are
+blanked, the smallest first, until what is hidden holds at least two counts and so much that
+none of them is known to within n, even to somebody who knows that every one is at least 1
+(complementary suppression: Willenborg and de Waal, Elements of Statistical Disclosure Control,
+2001, from memory). The reason that stands beside a blank does not say which of the two it is,
+for that would narrow it down. A block too small to hide anything in is named.
 """
 
 from __future__ import annotations
 
 import numpy as np
+import numpy.typing as npt
 import pandas as pd
 
 COUNT_COLUMNS = ("sampled_records", "sampled_visits", "visits")
@@ -19,7 +25,11 @@ HIDDEN_COLUMNS = (
     "visits",
     "visits_se",
     "visits_per_1000",
+    "expansion_factor",
+    "other_purpose_visits",
+    "multi_purpose",
 )
+GIVEN_AWAY = "; the total gives it away"
 REASON = "hidden_note"
 FEWEST_PER_MEAN = 5
 
@@ -36,26 +46,45 @@ def hide_small_cells(zone_table: pd.DataFrame, *, below: int) -> pd.DataFrame:
     if below < 1:
         return zone_table
     name = next(column for column in COUNT_COLUMNS if column in zone_table)
-    counts = zone_table[name]
+    counts = zone_table[name].fillna(0.0)
     small = (counts > 0) & (counts < below)
-    partner = _partners(zone_table, counts, small)
-    hidden = small | partner
-    note = np.select([small, partner], [f"count below {below}", "protects another"], "")
+    hidden, exposed = _with_company(zone_table, counts, small, below)
+    words = f"fewer than {below} records, or hides such a zone"
+    note = np.where(exposed, words + GIVEN_AWAY, words)
     result = zone_table.copy()
     result.loc[hidden, [c for c in HIDDEN_COLUMNS if c in result]] = np.nan
     result[REASON] = pd.Series(note, index=result.index, dtype="str").where(hidden)
     return result
 
 
-def _partners(zone_table: pd.DataFrame, counts: pd.Series, small: pd.Series) -> pd.Series:
-    """The next smallest count of every site that has exactly one small one."""
-    partner = pd.Series(data=False, index=zone_table.index)
-    for site_id in zone_table["site_id"].unique():
-        of_site = zone_table["site_id"] == site_id
-        others = counts[of_site & ~small & (counts > 0)]
-        if (small & of_site).sum() == 1 and len(others):
-            partner.loc[others.index[int(others.argmin())]] = True
-    return partner
+def _with_company(
+    zone_table: pd.DataFrame, counts: pd.Series, small: pd.Series, below: int
+) -> tuple[pd.Series, pd.Series]:
+    """What to hide, and which of it the total of its block gives away all the same."""
+    hidden, exposed = small.copy(), pd.Series(data=False, index=zone_table.index)
+    inside = zone_table.get("in_market", True)
+    block = zone_table.assign(inside=inside)[["site_id", "inside"]]
+    for _, rows in block[counts > 0].groupby(["site_id", "inside"], sort=True):
+        ordered = counts.loc[rows.index].sort_values(kind="stable")
+        number = int(small[rows.index].sum())
+        if number == 0:
+            continue
+        while number < len(ordered) and not is_safe(ordered.iloc[:number].to_numpy(), below):
+            number += 1
+        company = ordered.index[:number]
+        hidden.loc[company] = True
+        exposed.loc[company] = not is_safe(ordered.iloc[:number].to_numpy(), below)
+    return hidden, exposed
+
+
+def is_safe(hidden_counts: npt.NDArray[np.float64], below: int) -> bool:
+    """Whether counts that are hidden together cannot be told from their sum.
+
+    Each is at least 1, so with k counts of sum S each lies between 1 and S − k + 1; that range
+    is to span `below` or more.
+    """
+    number = len(hidden_counts)
+    return number >= 2 and float(hidden_counts.sum()) - number >= below
 
 
 def hide_zone_surplus(zone_surplus: pd.DataFrame, zone_table: pd.DataFrame) -> pd.DataFrame:
