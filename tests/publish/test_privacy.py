@@ -7,7 +7,7 @@ import pandas as pd
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from scipy.optimize import LinearConstraint, milp
+from scipy.optimize import Bounds, LinearConstraint, milp
 
 from pipeline.publish.privacy import GIVEN_AWAY, HIDDEN_COLUMNS, REASON, hide_small_cells
 
@@ -84,28 +84,23 @@ def ranges(published: pd.DataFrame, table: pd.DataFrame) -> pd.DataFrame:
     hidden counts are at least 1.
     """
     blank = published.index[published[REASON].notna()]
-    blocks = table.loc[blank].groupby(["site_id", "in_market"]).groups
-    left = {
-        key: table.loc[(table["site_id"] == key[0]) & (table["in_market"] == key[1]),
-                       "sampled_records"].sum()
-        - published.loc[(table["site_id"] == key[0]) & (table["in_market"] == key[1]),
-                        "sampled_records"].sum()
-        for key in blocks
-    }  # fmt: skip
-    matrix = np.array([[float(cell in rows) for cell in blank] for rows in blocks.values()])
-    totals = np.array(list(left.values()))
+    side = table["site_id"] + table["in_market"].astype("str")
+    left = (table["sampled_records"] - published["sampled_records"].fillna(0)).groupby(side).sum()
+    sides = side[blank].unique()
+    matrix = np.array([(side[blank] == name).to_numpy(dtype=float) for name in sides])
+    totals = left[sides].to_numpy(dtype=float)
     found = []
-    for i in range(len(blank)):
-        goal = np.eye(len(blank))[i]
-        ends = [
-            milp(
+    for goal in np.eye(len(blank)):
+        ends = []
+        for sign in (1, -1):
+            best = milp(
                 sign * goal,
                 constraints=LinearConstraint(matrix, totals, totals),
-                integrality=np.ones(len(blank)),
-                bounds=(1, np.inf),
-            ).x[i]
-            for sign in (1, -1)
-        ]
+                integrality=np.ones(len(blank), dtype=int),
+                bounds=Bounds(1, np.inf),
+            )
+            assert best.success
+            ends.append(sign * best.fun)
         found.append(ends)
     return pd.DataFrame(found, index=blank, columns=["least", "most"])
 
@@ -132,6 +127,7 @@ def test_no_hidden_count_can_be_worked_out_from_the_margins(
         found = ranges(shown, table).loc[shown.index[protected]]
         assert (found["most"] - found["least"] >= below).all()
     # What is given away is so only where its whole block is hidden.
-    for row in table[shown[REASON].str.endswith(GIVEN_AWAY, na=False)].itertuples():
-        block = (table["site_id"] == row.site_id) & (table["in_market"] == row.in_market)
+    given_away = table[shown[REASON].str.endswith(GIVEN_AWAY, na=False)]
+    for site, is_inside in set(zip(given_away["site_id"], given_away["in_market"], strict=True)):
+        block = (table["site_id"] == site) & (table["in_market"] == is_inside)
         assert shown.loc[block & (table["sampled_records"] > 0), REASON].notna().all()
