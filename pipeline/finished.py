@@ -188,7 +188,7 @@ def repriced(
             validate="one_to_one",
         )
     )
-    notes = _market_notes(table, study.market)
+    notes = _market_notes(table, study)
     table = table.assign(market_note=notes, in_market=notes.isna())
     return table[[*zone_table.columns, *table.columns.difference(zone_table.columns)]].drop(
         columns="cost_status"

@@ -162,10 +162,10 @@ class Flow:
             (costs,) = cost(routes, zones, sites, pricing.origins, study=study)
             self._priced = (study, costs)
         costs = self._priced[1]
-        if counted_alike and tables.zone_table is not None and tables.trip_table is None:
+        by_zone = study.market.level == "zone" and tables.trip_table is None
+        if counted_alike and by_zone and tables.zone_table is not None:
             return repriced(tables.zone_table, costs, sites, study=study), None
-        zone_table, *_ = join(pricing.origins, costs, routes, zones, sites, study=study)
-        return zone_table, None
+        return join(pricing.origins, costs, routes, zones, sites, study=study)
 
 
 def _about(variant: Variant | None, study: Study) -> Row:
