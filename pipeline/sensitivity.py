@@ -164,8 +164,8 @@ class Flow:
         costs = self._priced[1]
         if counted_alike and tables.zone_table is not None and tables.trip_table is None:
             return repriced(tables.zone_table, costs, sites, study=study), None
-        zone_table, *_ = join(pricing.origins, costs, routes, zones, sites, study=study)
-        return zone_table, None
+        zone_table, *others = join(pricing.origins, costs, routes, zones, sites, study=study)
+        return zone_table, others[0] if others else None
 
 
 def _about(variant: Variant | None, study: Study) -> Row:

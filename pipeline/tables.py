@@ -340,12 +340,14 @@ class ZoneTable(Table):
         "price of a visit per person", unit="currency", ge=0, nullable=True
     )
     substitute_cost: Series[float] | None = column(
-        "price of a visit to the cheapest substitute, per person",
+        "price of a visit to the substitute ([market] substitute says which), per person",
         unit="currency",
         ge=0,
         nullable=True,
     )
-    substitute_id: Series[str] | None = column("the cheapest substitute", nullable=True)
+    substitute_id: Series[str] | None = column(
+        "that substitute; missing for an index of all", nullable=True
+    )
     in_market: Series[bool] | None = column("whether the zone belongs to the market of the site")
     market_note: Series[str] | None = column("why the zone is left out", nullable=True)
 
