@@ -16,6 +16,7 @@ from pipeline.publish.findings import fee_figure, models_tried, values_table
 from pipeline.publish.losses import losses, road_table
 from pipeline.publish.mapview import base_map
 from pipeline.publish.markup import Html, join, tag
+from pipeline.publish.reported import reported_table
 from pipeline.publish.results import Headline, Results
 
 STYLE_FILE = Path(__file__).with_name("report.css")
@@ -67,6 +68,7 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Ht
         *_effects(results, each),
         _section("assumed", "What was assumed", _ASSUMED, assumptions_table(results)),
         _section("lost", "What was lost on the way", _LOST, *losses(results)),
+        *_reported(results),
         _section("models", "Models tried", _MODELS, each(models_tried)),
         _section("roads", "The road data", _ROADS, roads) if roads else Html(""),
         _section("care", "Cautions", "Read these before quoting a figure.", cautions()),
@@ -81,6 +83,16 @@ def _effects(results: Results, each: Callable[..., Html]) -> list[Html]:
     return [_section("effects", "What the assumptions do", _EFFECTS, each(effects_figure))]
 
 
+def _reported(results: Results) -> list[Html]:
+    """The section on what the records report, where they do."""
+    body = reported_table(results)
+    return [] if body is None else [_section("reported", "Reported and routed", _REPORTED, body)]
+
+
+_REPORTED = (
+    "What visitors say of their way, against the way that was routed for them. A bias that grows "
+    "with distance speaks of the roads' speeds, or of trips with other stops."
+)
 _EFFECTS = (
     "The same data under other assumptions, the strongest first. A bar that leaves the shaded "
     "interval matters more than the sampling error does."
