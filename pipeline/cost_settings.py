@@ -72,17 +72,17 @@ class CostsSettings(Section):
         "fastest",
         usual="fastest",
     )
-    distance_factor: float = setting(
-        "Multiplies routed distances; from reported ones (table reported_check).",
+    distance_factor: Literal["records"] | Positive = setting(
+        "Multiplies routed distances; 'records': the median of reported over routed (see the table "
+        "reported_check).",
         1.0,
         usual="0.95 to 1.1",
-        gt=0,
     )
-    time_factor: float = setting(
-        "Multiplies routed times; from reported ones (table reported_check).",
+    time_factor: Literal["records"] | Positive = setting(
+        "Multiplies routed times; 'records': the median of reported over routed (see the table "
+        "reported_check).",
         1.0,
         usual="0.9 to 1.2",
-        gt=0,
     )
     toll_per_km: float = setting(
         "Toll per vehicle and km of toll road.",

@@ -4,7 +4,8 @@
 other purposes of the trips (``purposes``), with standard errors (``sampling_errors``).
 
 **Substitutes.** `substitute_cost` is the price of the cheapest site with the role 'substitute'
-that the zone can reach; [market] sites_are_substitutes adds the other valued sites to the choice.
+that the zone can reach, or of the second, or an index of all ([market] substitute);
+sites_are_substitutes adds the other valued sites to the choice.
 
 **Persons.** With [market] level = "person" the records of an on-site or household survey become
 a table of their own (``persons``), priced with their own party size.
@@ -141,25 +142,56 @@ def _with_zeros(table: pd.DataFrame, records: pd.DataFrame) -> pd.DataFrame:
 def substitute_costs(
     costs: pd.DataFrame, sites: pd.DataFrame, valued: pd.Series[str], market: MarketSettings
 ) -> pd.DataFrame:
-    """Cheapest substitute of each zone and site.
+    """Price of the substitutes of each zone and site, as [market] substitute asks for it.
 
     Returns
     -------
-    `zone_id, site_id, substitute_cost, substitute_id`; pairs whose zone reaches no substitute are
-    absent.
+    `zone_id, site_id, substitute_cost, substitute_id` (missing for the index, which is of all);
+    pairs whose zone reaches no such substitute are absent.
+
+    Raises
+    ------
+    JoinError
+        The index lacks the attractiveness of a substitute, or is given that of no substitute.
     """
     roles = sites.drop_duplicates("site_id").set_index("site_id")["role"]
     usable = roles.index if market.sites_are_substitutes else roles.index[roles == "substitute"]
+    if market.substitute == "index":
+        _check_attractiveness(market, list(usable))
     offers = costs.loc[
         costs["site_id"].isin(usable) & costs["travel_cost"].notna(),
         ["zone_id", "site_id", "travel_cost"],
     ].rename(columns={"site_id": "substitute_id", "travel_cost": "substitute_cost"})
     offers = offers.sort_values(["zone_id", "substitute_cost", "substitute_id"])
-    cheapest = [
-        offers[offers["substitute_id"] != site].drop_duplicates("zone_id").assign(site_id=site)
+    found = [
+        _substitute(offers[offers["substitute_id"] != site], market).assign(site_id=site)
         for site in valued
     ]
-    return pd.concat(cheapest)[[*PAIR, "substitute_cost", "substitute_id"]]
+    return pd.concat(found)[[*PAIR, "substitute_cost", "substitute_id"]]
+
+
+def _substitute(offers: pd.DataFrame, market: MarketSettings) -> pd.DataFrame:
+    """One row per zone, of its offers from the cheapest on."""
+    if market.substitute != "index":
+        place = 1 if market.substitute == "second_cheapest" else 0
+        return offers[offers.groupby("zone_id").cumcount() == place]
+    weight = offers["substitute_id"].map(market.attractiveness).astype("float64")
+    parts = offers.assign(weight=weight, per_price=weight / offers["substitute_cost"])
+    sums = parts.groupby("zone_id")[["weight", "per_price"]].sum()
+    index = (sums["weight"] / sums["per_price"]).rename("substitute_cost").reset_index()
+    return index.assign(substitute_id=pd.Series(np.nan, index=index.index).astype("str"))
+
+
+def _check_attractiveness(market: MarketSettings, usable: list[str]) -> None:
+    strange = [site for site in market.attractiveness if site not in usable]
+    lacking = [site for site in usable if site not in market.attractiveness]
+    if strange or lacking:
+        wrong = f"names {strange[0]!r}, which is no substitute" if strange else ""
+        wrong = wrong or f"has no weight of {lacking[0]!r}"
+        raise JoinError(
+            f'[market] substitute = "index", but [market.attractiveness] {wrong} (substitutes: '
+            f"{', '.join(usable) or 'none'}). Give every substitute its weight."
+        )
 
 
 def repriced(

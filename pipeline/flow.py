@@ -15,7 +15,7 @@ from typing import Any
 
 from pipeline import inputs, records
 from pipeline.cost_settings import CostsSettings
-from pipeline.costs import cost, summarise_cost
+from pipeline.costs import cost_and_check, summarise_cost
 from pipeline.demand import demand_with_diagnostics, summarise_demand
 from pipeline.finished import join, summarise_join
 from pipeline.origins import geocode, summarise_geocode
@@ -54,6 +54,7 @@ from pipeline.tables import (
     Fit,
     Origins,
     OriginSummary,
+    ReportedCheck,
     RoadLines,
     RoadQuality,
     RouteLines,
@@ -187,9 +188,9 @@ FLOW: tuple[Stage, ...] = (
     ),
     Stage(
         "cost",
-        cost,
+        cost_and_check,
         reads=(Routes, Zones, Sites, Maybe(Origins)),
-        writes=(Costs,),
+        writes=(Costs, ReportedCheck),
         sections=(CostsSettings,),
         summarise=summarise_cost,
     ),
@@ -255,6 +256,7 @@ FLOW: tuple[Stage, ...] = (
             Maybe(Zones),
             Maybe(Sites),
             Maybe(Costs),
+            Maybe(ReportedCheck),
             FINISHED,
             Estimates,
             Fit,

@@ -219,6 +219,19 @@ class MarketSettings(Section):
         default=False,
         usual="false; true where the sites are alike",
     )
+    substitute: Literal["cheapest", "second_cheapest", "index"] = setting(
+        "What substitute_cost is: the price of the cheapest substitute that the zone reaches, of "
+        "the second cheapest, or an index of all that it reaches, each weighted by its "
+        "attractiveness: sum of weights / sum of (weight / price), so that a far one counts "
+        "little.",
+        "cheapest",
+        usual="cheapest",
+    )
+    attractiveness: dict[str, Positive] = setting(
+        "Weight of each substitute in the index: its size, or its visits from everywhere.",
+        {},
+        usual="hectares, length of shore, or annual visits",
+    )
 
 
 ModelName = Literal[

@@ -367,6 +367,29 @@ class Costs(Table):
         unique = ["zone_id", "site_id"]
 
 
+class ReportedCheck(Table):
+    """Routed and priced figures against those that the records report: by measure and distance."""
+
+    measure: Series[str] = column(
+        "distance and time (one way), spending (of the party on vehicle, parking, tolls, ferries)"
+    )
+    band: Series[str] = column("routed distance, one way, or 'all'")
+    records: Series[int] = column("records that report it", unit="records", ge=0)
+    reported_mean: Series[float] = column("mean of what is reported", nullable=True)
+    routed_mean: Series[float] = column("mean of what is routed or priced", nullable=True)
+    bias: Series[float] = column("mean of routed less reported", nullable=True)
+    mean_absolute_error: Series[float] = column(
+        "mean distance between the two", ge=0, nullable=True
+    )
+    median_ratio: Series[float] = column(
+        "median of reported over routed: a calibration factor", ge=0, nullable=True
+    )
+    unit: Series[str] = column("unit of the means, the bias and the error")
+
+    class Config:
+        unique = ["measure", "band"]
+
+
 # --- join ------------------------------------------------------------------------------------
 
 
@@ -420,12 +443,14 @@ class ZoneTable(Table):
         "price of a visit per person", unit="currency", ge=0, nullable=True
     )
     substitute_cost: Series[float] | None = column(
-        "price of a visit to the cheapest substitute, per person",
+        "price of a visit to the substitute ([market] substitute says which), per person",
         unit="currency",
         ge=0,
         nullable=True,
     )
-    substitute_id: Series[str] | None = column("the cheapest substitute", nullable=True)
+    substitute_id: Series[str] | None = column(
+        "that substitute; missing for an index of all", nullable=True
+    )
     in_market: Series[bool] | None = column("whether the zone belongs to the market of the site")
     market_note: Series[str] | None = column("why the zone is left out", nullable=True)
 
@@ -684,6 +709,7 @@ TABLES: tuple[type[Table], ...] = (
     Routes,
     RouteLines,
     Costs,
+    ReportedCheck,
     ZoneTable,
     TripTable,
     Estimates,

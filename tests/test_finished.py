@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -10,7 +12,8 @@ from hypothesis import strategies as st
 
 from pipeline.costs import cost
 from pipeline.errors import JoinError
-from pipeline.finished import join, summarise_join
+from pipeline.finished import join, substitute_costs, summarise_join
+from pipeline.settings import MarketSettings
 from pipeline.study import Study
 from pipeline.tables import ZoneTable
 from tests.visit_world import make_origins, make_routes, make_sites, make_study, make_zones
@@ -113,6 +116,50 @@ def test_the_cheapest_substitute() -> None:
     nothing = {"west": False, "east": False, "isle": True}
     assert table["substitute_cost"].isna().to_dict() == nothing
     assert table["substitute_id"].isna().to_dict() == nothing
+
+
+def two_substitutes(**market: Any) -> dict[str, float]:
+    """`substitute_cost` of the west, 44 at the lake and 20 at the pond."""
+    costs = pd.DataFrame(
+        {
+            "zone_id": ["west", "west", "west", "east"],
+            "site_id": ["reserve", "lake", "pond", "lake"],
+            "travel_cost": [25.5, 44.0, 20.0, 30.0],
+        }
+    )
+    pond = make_sites().tail(1).assign(site_id="pond")
+    sites = pd.concat([make_sites(), pond], ignore_index=True)
+    valued = pd.Series(["reserve"])
+    table = substitute_costs(costs, sites, valued, MarketSettings(**market))
+    return dict(zip(table["zone_id"], table["substitute_cost"], strict=True))
+
+
+def test_the_second_cheapest_substitute() -> None:
+    """The east reaches one substitute only, and so has no second."""
+    assert two_substitutes() == {"west": 20.0, "east": 30.0}
+    assert two_substitutes(substitute="second_cheapest") == {"west": 44.0}
+
+
+def test_an_index_of_the_substitutes_by_attractiveness() -> None:
+    """West: (3 + 1) ÷ (3 ÷ 44 + 1 ÷ 20) = 33.8462; the east's is its only one's price."""
+    index = two_substitutes(substitute="index", attractiveness={"lake": 3.0, "pond": 1.0})
+    assert index == pytest.approx({"west": 4 / (3 / 44 + 1 / 20), "east": 30.0})
+    equal = two_substitutes(substitute="index", attractiveness={"lake": 1e9, "pond": 1e-9})
+    assert equal["west"] == pytest.approx(44.0)
+
+
+@pytest.mark.parametrize(
+    ("weights", "words"),
+    [
+        ({"lake": 1.0}, r"has no weight of 'pond' \(substitutes: lake, pond\)"),
+        ({"lake": 1.0, "pond": 1.0, "puddle": 1.0}, r"'puddle', which is no substitute"),
+    ],
+)
+def test_an_index_needs_the_weight_of_every_substitute(
+    weights: dict[str, float], words: str
+) -> None:
+    with pytest.raises(JoinError, match=words):
+        two_substitutes(substitute="index", attractiveness=weights)
 
 
 def test_valued_sites_are_substitutes_of_each_other_only_where_the_study_says_so() -> None:

@@ -4,7 +4,6 @@
 module          what it holds
 ==============  ==============================================================================
 ``stage``       the stage itself: every zone and site priced
-``records``     records of visits priced one by one, each with its own party and income
 ``trips``       round trips from routes: kilometres and hours by what they are spent on
 ``people``      parties, their adults, and who bears the cost
 ``driving``     the vehicle's cost per km: flat, or built up by class of vehicle
@@ -17,6 +16,6 @@ module          what it holds
 """
 
 from pipeline.costs.items import ITEMS
-from pipeline.costs.stage import cost, summarise_cost
+from pipeline.costs.stage import cost, cost_and_check, summarise_cost
 
-__all__ = ["ITEMS", "cost", "summarise_cost"]
+__all__ = ["ITEMS", "cost", "cost_and_check", "summarise_cost"]

@@ -11,6 +11,7 @@ from pipeline.costs.driving import cost_per_km
 from pipeline.costs.figures import Figures
 from pipeline.costs.items import fees, price
 from pipeline.costs.people import parties
+from pipeline.costs.reported import calibrated, reported_check
 from pipeline.costs.trips import round_trips
 from pipeline.costs.wages import hourly_wages
 from pipeline.errors import CostError
@@ -49,7 +50,7 @@ def cost(
         records but none has one; a route has no distance; a zone or site is unknown; a figure
         of a zone is negative; an index year is missing.
     """
-    settings = study.costs
+    settings = calibrated(study.costs, routes, origins)
     pairs = routes[["zone_id", "site_id"]].reset_index(drop=True)
     _refuse_strange_zones(pairs["zone_id"], zones)
     _refuse_strange_sites(tuple(settings.parking_per_vehicle), sites)
@@ -79,6 +80,24 @@ def cost(
             axis=1,
         ),
     )
+
+
+def cost_and_check(
+    routes: pd.DataFrame,
+    zones: pd.DataFrame,
+    sites: pd.DataFrame,
+    origins: pd.DataFrame | None,
+    *,
+    study: Study,
+) -> tuple[pd.DataFrame, pd.DataFrame]:
+    """`cost`, with the routed figures held against those that the records report.
+
+    Returns
+    -------
+    `costs`, `reported_check`.
+    """
+    (costs,) = cost(routes, zones, sites, origins, study=study)
+    return costs, reported_check(routes, costs, origins)
 
 
 def _refuse_strange_zones(zone_id: pd.Series[str], zones: pd.DataFrame) -> None:

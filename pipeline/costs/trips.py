@@ -33,6 +33,7 @@ def round_trips(routes: pd.DataFrame, settings: CostsSettings) -> pd.DataFrame:
         A route that was found has no distance or no time.
     """
     table = routes.reset_index(drop=True)
+    distance_factor, time_factor = _number(settings.distance_factor), _number(settings.time_factor)
     reached = table["route_status"].isin(REACHED_STATUSES)
     there_km, home_km = _distances(table, settings)
     there_min = table["drive_time_min"]
@@ -40,21 +41,28 @@ def round_trips(routes: pd.DataFrame, settings: CostsSettings) -> pd.DataFrame:
     home_min = table["return_drive_time_min"].fillna(there_min)
     ferry_km = 2 * table["ferry_km"].fillna(0.0)
     ferry_hours = 2 * table["ferry_min"].fillna(0.0) / 60
-    driven_km = (there_km + home_km - ferry_km).clip(lower=0) * settings.distance_factor
-    wheel_hours = ((there_min + home_min) / 60 - ferry_hours).clip(lower=0) * settings.time_factor
+    driven_km = (there_km + home_km - ferry_km).clip(lower=0) * distance_factor
+    wheel_hours = ((there_min + home_min) / 60 - ferry_hours).clip(lower=0) * time_factor
     trips = pd.DataFrame(
         {
             "one_way_km": (driven_km + ferry_km) / 2,
             "round_trip_km": driven_km + ferry_km,
             "round_trip_hours": wheel_hours + ferry_hours,
             "driven_km": driven_km,
-            "toll_km": 2 * table["toll_km"].fillna(0.0) * settings.distance_factor,
+            "toll_km": 2 * table["toll_km"].fillna(0.0) * distance_factor,
             "ferries": np.where(ferry_km > 0, 2.0, 0.0),
             "wheel_hours": wheel_hours,
             "ferry_hours": ferry_hours,
         }
     )
     return trips.where(reached)
+
+
+def _number(factor: str | float) -> float:
+    """A factor of the study; one that comes from the records is put in its place before."""
+    if isinstance(factor, str):
+        raise CostError("a calibration factor is to come from the records; see calibrated().")
+    return factor
 
 
 def _distances(

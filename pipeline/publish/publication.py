@@ -21,6 +21,7 @@ from pipeline.publish.layers import build_layers
 from pipeline.publish.manifest import manifest_text, run_manifest
 from pipeline.publish.privacy import hide_small_cells, hide_zone_surplus, trip_means
 from pipeline.publish.report import build_report
+from pipeline.publish.reported import hide_few
 from pipeline.publish.results import Headline, Results, headlines
 from pipeline.publish.tabular import PUBLISHED, describe_tables, write_csv, write_table_files
 from pipeline.publish.words import count
@@ -120,6 +121,7 @@ def publish(
     zones: gpd.GeoDataFrame | None,
     sites: pd.DataFrame | None,
     costs: pd.DataFrame | None,
+    reported_check: pd.DataFrame | None,
     zone_table: pd.DataFrame | None,
     trip_table: pd.DataFrame | None,
     estimates: pd.DataFrame,
@@ -163,6 +165,7 @@ def publish(
         zones=zones,
         sites=sites,
         costs=costs,
+        reported_check=hide_few(reported_check, below=below),
         zone_table=shown,
         trip_means=None if trip_table is None else trip_means(trip_table, below=below),
         estimates=estimates,

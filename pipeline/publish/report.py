@@ -19,6 +19,7 @@ from pipeline.publish.mapview import BaseMap, base_map
 from pipeline.publish.markup import Html, join, tag
 from pipeline.publish.methods import methods, sources
 from pipeline.publish.pagedata import data_block
+from pipeline.publish.reported import reported_table
 from pipeline.publish.results import Headline, Results
 
 STYLE_FILE = Path(__file__).with_name("report.css")
@@ -103,6 +104,7 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Ht
         *_effects(results, each),
         _section("assumed", "What was assumed", _ASSUMED, assumptions_table(results)),
         _section("lost", "What was lost on the way", _LOST, *losses(results)),
+        *_reported(results),
         _section("models", "Models tried", _MODELS, each(models_tried)),
         _section("roads", "The road data", _ROADS, roads) if roads else Html(""),
         _section("methods", "How it was worked out", _METHODS, *methods(results)),
@@ -119,6 +121,16 @@ def _effects(results: Results, each: Callable[..., Html]) -> list[Html]:
     return [_section("effects", "What the assumptions do", _EFFECTS, each(effects_figure))]
 
 
+def _reported(results: Results) -> list[Html]:
+    """The section on what the records report, where they do."""
+    body = reported_table(results)
+    return [] if body is None else [_section("reported", "Reported and routed", _REPORTED, body)]
+
+
+_REPORTED = (
+    "What visitors say of their way, against the way that was routed for them. A bias that grows "
+    "with distance speaks of the roads' speeds, or of trips with other stops."
+)
 _EFFECTS = (
     "The same data under other assumptions, the strongest first. A bar that leaves the shaded "
     "interval matters more than the sampling error does."

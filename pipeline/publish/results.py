@@ -64,6 +64,7 @@ class Results:
     zones: gpd.GeoDataFrame | None
     sites: pd.DataFrame | None
     costs: pd.DataFrame | None
+    reported_check: pd.DataFrame | None
     zone_table: pd.DataFrame | None
     trip_means: pd.DataFrame | None
     estimates: pd.DataFrame

@@ -379,6 +379,7 @@ def make_tables() -> dict[str, Any]:
         "zones": zones,
         "sites": sites,
         "costs": make_costs(routes),
+        "reported_check": None,
         "zone_table": zone_table,
         "trip_table": None,
         "estimates": make_estimates(),
