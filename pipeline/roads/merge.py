@@ -55,6 +55,11 @@ class FileRoads:
     tags: dict[str, TagColumn]
     signs: Signs = field(default_factory=Signs)
 
+    def nodes_of(self, way: int) -> list[int]:
+        """Ids of the nodes of the way in a row."""
+        nodes = self.way_node[self.way_start[way] : self.way_start[way + 1]]
+        return [int(number) for number in self.node_id[nodes]]
+
     @property
     def located(self) -> Bool:
         """Nodes that the file holds."""
