@@ -233,8 +233,9 @@ def summarise_join(outputs: tuple[Any, ...]) -> str:
     inside = table["in_market"]
     visits, outside = table.loc[inside, "visits"].sum(), table.loc[~inside, "visits"].sum()
     share = outside / (visits + outside) if visits + outside else 0.0
+    sites = table["site_id"].nunique()
     return (
-        f"{table['zone_id'].nunique():,} zones × {table['site_id'].nunique():,} sites, "
+        f"{table['zone_id'].nunique():,} zones × {sites:,} site{'' if sites == 1 else 's'}, "
         f"{int((table['visits'] > 0).sum()):,} pairs with visits, {visits:,.0f} visits a year in "
         f"the market ({int(inside.sum()):,} pairs), {share:.1%} of visits from outside it"
     )

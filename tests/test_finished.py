@@ -158,7 +158,7 @@ def test_summary_line() -> None:
     study = make_study(market={"max_distance_km": 50.0})
     table = finished(make_origins(["west", "east", "east"]), study).reset_index()
     assert summarise_join((table,)) == (
-        "3 zones × 1 sites, 2 pairs with visits, 2 visits a year in the market (1 pairs), "
+        "3 zones × 1 site, 2 pairs with visits, 2 visits a year in the market (1 pairs), "
         "66.7% of visits from outside it"
     )
 

@@ -141,6 +141,16 @@ def _fee_chart(schedule: pd.DataFrame, column: str, words: str, unit: str, curre
         if has_band
         else None,
         tag("path", d=line(across, y.at(rows[column].to_numpy() / divisor)), class_="fitted"),
+        tag(
+            "line",
+            y1=40,
+            y2=186,
+            class_="fee-mark",
+            visibility="hidden",
+            data_start=x.start,
+            data_end=x.end,
+            data_top=x.high,
+        ),
         tag("text", head, x=4, y=18, class_="head"),
         tag("text", f"added fee, {currency}", x=306, y=226, text_anchor="end"),
         title=f"{words} against the added fee",

@@ -7,7 +7,8 @@ import pandas as pd
 
 from pipeline.publish.charts import demand_chart, is_skewed
 from pipeline.publish.curve import Curve
-from pipeline.publish.mapview import BaseMap, rate_map
+from pipeline.publish.mapmeasures import ZONE_HEAD, MapFigures, map_figures
+from pipeline.publish.mapview import BaseMap, draw_map
 from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Headline, Results
 from pipeline.publish.words import count, level, model_words, number
@@ -15,16 +16,6 @@ from pipeline.publish.words import count, level, model_words, number
 MOST_ROWS = 250
 MOST_POINTS = 1_500
 CLASSES = 60
-ZONE_HEAD = (
-    ("visits_per_1000", "Visits per 1,000"),
-    ("visits", "Visits a year"),
-    ("population", "People"),
-    ("household_income", "Household income"),
-    ("travel_cost", "Travel cost"),
-    ("distance_km", "Distance, km"),
-    ("drive_time_min", "Drive, min"),
-    ("annual_surplus", "Surplus a year"),
-)
 
 
 def site_heading(results: Results, headline: Headline) -> Html | None:
@@ -32,7 +23,23 @@ def site_heading(results: Results, headline: Headline) -> Html | None:
     return tag("h3", headline.site_name) if len(results.headlines) > 1 else None
 
 
-def map_figure(results: Results, base: BaseMap | None, headline: Headline) -> Html:
+def site_map(results: Results, base: BaseMap | None, headline: Headline) -> MapFigures | None:
+    """What the map of a site can show; None where there is nothing to draw."""
+    rows = results.site_zones(headline.site_id)
+    if rows is None or base is None:
+        return None
+    return map_figures(results, headline.site_id, _with_surplus(results, rows), base.zone_names)
+
+
+def _with_surplus(results: Results, rows: pd.DataFrame) -> pd.DataFrame:
+    rated = rows if "visits_per_1000" in rows else rows.assign(visits_per_1000=_rates(rows))
+    keys = ["zone_id", "site_id"]
+    return rated.merge(results.zone_surplus, on=keys, how="left", validate="one_to_one")
+
+
+def map_figure(
+    results: Results, base: BaseMap | None, headline: Headline, figures: MapFigures | None
+) -> Html:
     """Map of one site, and the same as a table."""
     rows = results.site_zones(headline.site_id)
     if rows is None:
@@ -41,7 +48,12 @@ def map_figure(results: Results, base: BaseMap | None, headline: Headline) -> Ht
     if base is None:
         words = "The study brought a finished table without zones' places, so there is no map."
         return join([tag("p", words), zone_table(results, rows)])
-    with_rates = rows if "visits_per_1000" in rows else rows.assign(visits_per_1000=_rates(rows))
+    if figures is None:
+        words = (
+            "So that this page stays small it draws the first site's map only; the GIS layers hold "
+            "every site's."
+        )
+        return join([tag("p", words), zone_table(results, rows)])
     caption = "Lambert azimuthal equal-area projection centred on the zones; north is up. "
     if not base.has_roads:
         caption += "The study brought no roads to draw. "
@@ -49,10 +61,45 @@ def map_figure(results: Results, base: BaseMap | None, headline: Headline) -> Ht
         caption += f"{base.left_out.capitalize()}. "
     figure_ = tag(
         "figure",
-        rate_map(results, base, headline.site_id, with_rates),
+        _measure_switch(figures),
+        draw_map(results, base, figures),
+        _zone_picker(figures),
         tag("figcaption", caption, results.study.publish.attribution),
+        data_map=headline.site_id,
     )
-    return join([figure_, zone_table(results, with_rates)])
+    return join([figure_, zone_table(results, rows)])
+
+
+def _measure_switch(figures: MapFigures) -> Html | None:
+    """Radio buttons that the page's script shows and obeys."""
+    if len(figures.measures) < 2:
+        return None
+    choices = [
+        tag(
+            "label",
+            tag(
+                "input",
+                type="radio",
+                name=f"measure-{figures.site_id}",
+                value=measure.column,
+                checked="checked" if place == 0 else None,
+            ),
+            measure.short,
+        )
+        for place, measure in enumerate(figures.measures)
+    ]
+    legend = tag("legend", "The map shows")
+    return tag("fieldset", legend, *choices, class_="map-tool", hidden="hidden")
+
+
+def _zone_picker(figures: MapFigures) -> Html | None:
+    """A list of zones, filled by the page's script; the row of the one that is chosen."""
+    if figures.rows is None:
+        return None
+    choice = tag("select", tag("option", "point at the map, or choose", value="-1"))
+    label = tag("label", "Zone ", choice)
+    row = tag("dl", class_="zone-row", aria_live="polite")
+    return tag("div", label, row, class_="map-tool picker", hidden="hidden")
 
 
 def _rates(rows: pd.DataFrame) -> pd.Series:
@@ -63,9 +110,7 @@ def _rates(rows: pd.DataFrame) -> pd.Series:
 
 def zone_table(results: Results, rows: pd.DataFrame) -> Html:
     """Zones with their figures, the most visited first."""
-    frame = rows.merge(
-        results.zone_surplus, on=["zone_id", "site_id"], how="left", validate="one_to_one"
-    )
+    frame = _with_surplus(results, rows)
     names = _zone_names(results)
     frame = frame.sort_values(["visits", "zone_id"], ascending=[False, True], na_position="last")
     shown = [(column, words) for column, words in ZONE_HEAD if column in frame]

@@ -2,9 +2,13 @@
 
 from __future__ import annotations
 
+import math
+from typing import Any
+
 import pandas as pd
 
 from pipeline.publish.charts import fee_charts
+from pipeline.publish.feetool import fee_tool
 from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Headline, Results
 from pipeline.publish.rows import rows_of
@@ -35,7 +39,7 @@ def fee_figure(results: Results, headline: Headline) -> Html:
             _cell(row.visits, row.visits_ci_low, row.visits_ci_high),
             _cell(row.revenue, row.revenue_ci_low, row.revenue_ci_high),
             _cell(row.consumer_surplus, row.consumer_surplus_ci_low, row.consumer_surplus_ci_high),
-            "0" if row.surplus_lost == 0 else figure(row.surplus_lost),
+            _lost(row),
         )
         for row in rows_of(schedule.sort_values("fee"))
     ]
@@ -53,7 +57,19 @@ def fee_figure(results: Results, headline: Headline) -> Html:
         caption=f"What an added fee per person and visit would do ({sure} intervals in brackets)",
         numbers=range(5),
     )
-    return join([fee_charts(schedule, currency=currency), grid])
+    curve = results.fees.get(headline.site_id)
+    smooth = schedule if curve is None else curve.table
+    tool = None if curve is None else fee_tool(headline.site_id, curve, currency=currency)
+    figure_ = tag("div", tool, fee_charts(smooth, currency=currency), class_="fees")
+    return join([figure_, grid])
+
+
+def _lost(row: Any) -> object:
+    """Surplus lost, with its interval where the table has one."""
+    if row.surplus_lost == 0:
+        return "0"
+    ends = (getattr(row, f"surplus_lost_ci_{end}", math.nan) for end in ("low", "high"))
+    return _cell(row.surplus_lost, *ends)
 
 
 def _cell(value: float, low: float, high: float) -> object:
@@ -139,23 +155,66 @@ def _estimates(results: Results, fit: pd.DataFrame) -> Html:
     return tag("details", tag("summary", "Estimates of every model"), grid, open="open")
 
 
+MEASURE_WORDS = {
+    "surplus_per_trip": "Surplus per visit",
+    "annual_surplus": "Annual surplus, observed visits",
+    "annual_surplus_predicted": "Annual surplus, predicted visits",
+    "surplus_per_person_per_year": "Surplus per resident",
+    "price_elasticity": "Price elasticity of visits",
+    "annual_visits_observed": "Visits observed",
+    "annual_visits_predicted": "Visits predicted",
+    "choke_cost": "Cost that ends all visits",
+}
+POINT_METHODS = ("delta", "observed")
+
+
 def values_table(results: Results, headline: Headline) -> Html:
-    """Every measure of the chosen model, with every kind of interval."""
+    """Every measure of the chosen model in a row, its kinds of interval side by side."""
     rows = results.surplus[
         (results.surplus["site_id"] == headline.site_id)
         & (results.surplus["model"] == headline.model)
     ]
+    kinds = [kind for kind in dict.fromkeys(rows["method"]) if kind != "observed"]
+    measures = list(dict.fromkeys(rows["measure"]))
     body = [
-        (
-            words_of(str(row.measure)),
-            figure(row.value, row.ci_low, row.ci_high),
-            interval(row.ci_low, row.ci_high, row.value),
-            str(row.unit).replace("currency", results.currency),
-            row.method,
-            "" if pd.isna(row.note) else row.note,
-        )
-        for row in rows_of(rows)
+        _measure_row(rows[rows["measure"] == measure], measure, kinds, results.currency)
+        for measure in measures
     ]
     sure = level(results.study.surplus.confidence)
-    head = ("Measure", "Value", f"{sure} interval", "Unit", "Kind of interval", "To know")
-    return table(head, body, caption="Values from the chosen model", numbers=(1, 2))
+    head = ("Measure", "Estimate", *(f"{sure} interval, {kind}" for kind in kinds), "Unit")
+    grid = table(
+        head, body, caption="Values from the chosen model", numbers=range(1, len(head) - 1)
+    )
+    remarks = [tag("li", tag("b", "Simulated: "), words) for words in _remarks(rows)]
+    return join([grid, tag("ul", *remarks, class_="care") if remarks else None])
+
+
+def _measure_row(
+    rows: pd.DataFrame, measure: str, kinds: list[str], currency: str
+) -> tuple[object, ...]:
+    """Name with how it is made, estimate, an interval per kind, unit."""
+    by_kind = {str(row.method): row for row in rows_of(rows)}
+    point = next((by_kind[kind] for kind in POINT_METHODS if kind in by_kind), None)
+    first = point if point is not None else next(iter(by_kind.values()))
+    note = "" if pd.isna(first.note) else str(first.note)
+    name = MEASURE_WORDS.get(measure, words_of(measure))
+    ends = [
+        interval(by_kind[kind].ci_low, by_kind[kind].ci_high, by_kind[kind].value)
+        if kind in by_kind
+        else "–"
+        for kind in kinds
+    ]
+    about = tag("small", note, class_="note") if note else None
+    shown = figure(first.value, first.ci_low, first.ci_high)
+    unit = str(first.unit).replace("currency", currency)
+    return (join([name, about]), shown, *ends, unit)
+
+
+def _remarks(rows: pd.DataFrame) -> list[str]:
+    """What the notes of the other kinds of interval add, each sentence once."""
+    said: dict[str, None] = {}
+    for _, group in rows.groupby("measure", sort=False):
+        notes = [str(note) for note in group["note"].dropna()]
+        for note in notes[1:]:
+            said[note.removeprefix(notes[0]).strip()] = None
+    return [words for words in said if words]

@@ -4,11 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-import pandas as pd
 
-from pipeline.publish.classes import Classes
+from pipeline.publish.mapmeasures import Measure, colour_of
 from pipeline.publish.markup import Html, join, tag, text
-from pipeline.publish.privacy import REASON
 from pipeline.publish.results import Results
 
 
@@ -16,7 +14,7 @@ def class_name(place: int, total: int) -> str:
     """Style of a class: its colour out of five, spread when there are fewer classes."""
     if place < 0:
         return "zero" if place == -1 else "none"
-    return f"c{round(place * 4 / max(1, total - 1)) if total > 1 else 3}"
+    return f"c{colour_of(place, total)}"
 
 
 def marker(x: float, y: float, kind: str) -> Html:
@@ -28,32 +26,19 @@ def marker(x: float, y: float, kind: str) -> Html:
     return join([ring, dot])
 
 
-def missing_words(rows: pd.DataFrame) -> str:
-    """Why zones are without a figure: hidden for privacy, or never known."""
-    if REASON not in rows or rows[REASON].isna().all():
-        return "no figure"
-    hidden = rows[REASON].notna()
-    known = rows["visits_per_1000"].notna() | hidden
-    return "hidden: few records" if known.all() else "hidden, or no figure"
-
-
 def legend(
-    classes: Classes,
-    rates: npt.NDArray[np.float64],
-    outside: npt.NDArray[np.bool_],
-    results: Results,
-    missing: str,
+    measure: Measure, outside: npt.NDArray[np.bool_], results: Results, *, hidden: bool
 ) -> Html:
     """Colours with their bounds and number of zones, then the marks."""
-    places = classes.of(rates)
+    places, classes = measure.places, measure.classes
     entries = [
         (class_name(k, len(classes)), label, int((places == k).sum()))
         for k, label in enumerate(classes.labels())
     ]
     if (places == -1).any():
-        entries.insert(0, ("zero", "no visit recorded", int((places == -1).sum())))
+        entries.insert(0, ("zero", measure.zero, int((places == -1).sum())))
     if (places == -2).any():
-        entries.append(("none", missing, int((places == -2).sum())))
+        entries.append(("none", measure.missing, int((places == -2).sum())))
     if outside.any():
         entries.append(("over", "outside the market", int(outside.sum())))
     items = [
@@ -61,8 +46,15 @@ def legend(
         for class_, label, total in entries
     ]
     items += [tag("li", _swatch_mark(kind), words) for kind, words in _marks(results)]
-    title = tag("p", tag("b", "Visits per 1,000 people and year"), tag("small", " (zones)"))
-    return tag("div", title, tag("ul", *items), class_="legend")
+    title = tag("p", tag("b", measure.title.partition(":")[0]), tag("small", " (zones)"))
+    return tag(
+        "div",
+        title,
+        tag("ul", *items),
+        class_="legend",
+        data_measure=measure.column,
+        hidden="hidden" if hidden else None,
+    )
 
 
 def _swatch(class_: str) -> Html:

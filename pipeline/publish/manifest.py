@@ -46,7 +46,7 @@ def run_manifest(results: Results) -> dict[str, Any]:
 
 def manifest_text(manifest: dict[str, Any]) -> str:
     """The manifest as JSON; a figure that is not known is null."""
-    return json.dumps(_finite(manifest), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+    return json.dumps(finite(manifest), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
 
 
 def in_words(results: Results, headline: Headline) -> str:
@@ -60,12 +60,12 @@ def in_words(results: Results, headline: Headline) -> str:
     return f"{headline.site_name}: {currency} {value} a year ({sure} interval {ends})"
 
 
-def _finite(value: Any) -> Any:
+def finite(value: Any) -> Any:
     """JSON has no NaN and no infinity."""
     if isinstance(value, dict):
-        return {key: _finite(item) for key, item in value.items()}
+        return {key: finite(item) for key, item in value.items()}
     if isinstance(value, list | tuple):
-        return [_finite(item) for item in value]
+        return [finite(item) for item in value]
     if isinstance(value, float) and not math.isfinite(value):
         return None
     return value

@@ -1,4 +1,4 @@
-"""The map of visit rates: zones by class, roads and routes over them, sites by name."""
+"""The map of a site: zones by class, roads and routes over them, sites by name."""
 
 from __future__ import annotations
 
@@ -11,10 +11,10 @@ import pandas as pd
 import shapely
 
 from pipeline.publish import mapframe
-from pipeline.publish.classes import Classes, quantile_classes
 from pipeline.publish.labels import place_labels
-from pipeline.publish.legend import class_name, legend, marker, missing_words
+from pipeline.publish.legend import class_name, legend, marker
 from pipeline.publish.mapframe import MapFrame
+from pipeline.publish.mapmeasures import MapFigures, Measure
 from pipeline.publish.markup import Html, join, tag
 from pipeline.publish.results import Results
 from pipeline.publish.rows import rows_of
@@ -41,8 +41,7 @@ class BaseMap:
 
     frame: MapFrame
     defs: Html
-    zone_ids: tuple[str, ...]
-    zone_names: tuple[str, ...]
+    zone_names: dict[str, str]
     has_areas: bool
     has_roads: bool
     left_out: str
@@ -57,12 +56,11 @@ def base_map(results: Results) -> BaseMap | None:
     shapes, has_areas = _zone_shapes(zones, frame)
     roads, left_out = _road_shapes(results.road_lines, frame)
     names = zones["zone_name"].where(zones["zone_name"].notna(), zones["zone_id"])
-    defs = tag("defs", shapes, roads, _lines_across(), _dotted())
+    defs = tag("defs", shapes, roads, _lines_across(), _dotted(), tag("g", id="nowhere"))
     return BaseMap(
         frame=frame,
         defs=tag("svg", defs, class_="store", width=0, height=0, aria_hidden="true"),
-        zone_ids=tuple(zones["zone_id"].astype(str)),
-        zone_names=tuple(names.astype(str)),
+        zone_names=dict(zip(zones["zone_id"].astype(str), names.astype(str), strict=True)),
         has_areas=has_areas,
         has_roads=bool(roads),
         left_out=left_out,
@@ -132,60 +130,46 @@ def _dotted() -> Html:
 _TILE: dict[str, object] = {"width": 70, "height": 70, "patternUnits": "userSpaceOnUse"}
 
 
-def rate_map(results: Results, base: BaseMap, site_id: str, figures: pd.DataFrame) -> Html:
-    """Map of the visit rate to one site, with its legend.
-
-    Parameters
-    ----------
-    figures : the finished table's rows of the site.
-    """
-    rows = figures.set_index("zone_id").reindex(list(base.zone_ids))
-    rates = rows["visits_per_1000"].to_numpy(dtype=np.float64)
-    classes = quantile_classes(rates)
-    outside = _outside(rows)
+def draw_map(results: Results, base: BaseMap, figures: MapFigures) -> Html:
+    """Map of one site by its first measure, with the legends of all; a script switches them."""
+    first = figures.measures[0]
     picture = tag(
         "svg",
-        tag("title", f"Visits per 1,000 people, {results.site_name(site_id)}"),
+        tag("title", first.title),
         tag(
             "g",
-            _zones(base, rates, classes, outside),
+            _zones(base, first, figures.outside),
             tag("use", href="#road-lines", class_="casing") if base.has_roads else None,
             tag("use", href="#road-lines", class_="roads") if base.has_roads else None,
-            _routes(results, base, site_id),
+            _routes(results, base, figures.site_id),
+            tag("use", href="#nowhere", class_="pick"),
             transform="scale(.1)",
         ),
-        _sites(results, base, site_id),
+        _sites(results, base, figures.site_id),
         _scale(base.frame),
         viewBox=f"0 0 {base.frame.width:g} {base.frame.height:g}",
         role="img",
         class_="map",
     )
-    return join([picture, legend(classes, rates, outside, results, missing_words(rows))])
+    legends = [
+        legend(measure, figures.outside, results, hidden=place > 0)
+        for place, measure in enumerate(figures.measures)
+    ]
+    return join([picture, *legends])
 
 
-def _outside(rows: pd.DataFrame) -> npt.NDArray[np.bool_]:
-    if "in_market" not in rows:
-        return np.zeros(len(rows), dtype=bool)
-    left_out = ~rows["in_market"].astype("boolean")
-    return left_out.fillna(value=False).to_numpy(dtype=bool)
-
-
-def _zones(
-    base: BaseMap,
-    rates: npt.NDArray[np.float64],
-    classes: Classes,
-    outside: npt.NDArray[np.bool_],
-) -> Html:
-    places = classes.of(rates)
+def _zones(base: BaseMap, measure: Measure, outside: npt.NDArray[np.bool_]) -> Html:
+    named = len(outside) <= MOST_NAMED_ZONES
     used = []
-    for i, (name, rate, place) in enumerate(zip(base.zone_names, rates, places, strict=True)):
+    rows = zip(base.zone_names.values(), measure.values, measure.places, strict=True)
+    for i, (name, rate, place) in enumerate(rows):
         words = "no figure" if place == -2 else f"{number(rate)} visits per 1,000"
-        class_ = class_name(int(place), len(classes))
-        title = tag("title", f"{name}: {words}") if len(rates) <= MOST_NAMED_ZONES else None
+        class_ = class_name(int(place), len(measure.classes))
+        title = tag("title", f"{name}: {words}") if named else None
         used.append(tag("use", title, href=f"#z{i}", class_=class_))
         if outside[i]:
             used.append(tag("use", href=f"#z{i}", class_="over"))
-    return tag("g", *used, class_="zones" if base.has_areas else "zones dots")
+    return tag("g", *used, class_="zones shapes" if base.has_areas else "zones shapes dots")
 
 
 def _routes(results: Results, base: BaseMap, site_id: str) -> Html | None:

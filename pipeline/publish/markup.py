@@ -5,7 +5,7 @@ from __future__ import annotations
 import html
 from collections.abc import Iterable
 
-VOID = frozenset({"br", "col", "meta", "circle", "line", "path", "rect", "use"})
+VOID = frozenset({"br", "col", "meta", "circle", "input", "line", "path", "rect", "use"})
 
 
 class Html(str):
@@ -32,7 +32,7 @@ def tag(name: str, /, *children: object, **attributes: object) -> Html:
     opening = " ".join(words)
     inside = join(children)
     if name in VOID and not inside:
-        return Html(f"<{opening}>" if name in ("br", "col", "meta") else f"<{opening}/>")
+        return Html(f"<{opening}>" if name in ("br", "col", "input", "meta") else f"<{opening}/>")
     return Html(f"<{opening}>{inside}</{name}>")
 
 

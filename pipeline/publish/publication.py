@@ -14,6 +14,7 @@ from pipeline.provenance import Provenance
 from pipeline.publish.curve import fitted_curves
 from pipeline.publish.descriptor import data_package
 from pipeline.publish.effects import coarse
+from pipeline.publish.feecurve import fee_curves
 from pipeline.publish.geofiles import write_geojson, write_geoparquet
 from pipeline.publish.geopackage import About, write_geopackage
 from pipeline.publish.layers import build_layers
@@ -171,6 +172,7 @@ def publish(
         zone_surplus=zone_surplus if shown is None else hide_zone_surplus(zone_surplus, shown),
         sensitivity=coarse(sensitivity) if below else sensitivity,
         curves=fitted_curves(zone_table, trip_table, estimates, fit, study=study),
+        fees=fee_curves(zone_table, trip_table, estimates, fit, fee_schedule, study=study),
         headlines=headlines(fit, surplus, finished, sites),
     )
     return (_publication(results),)

@@ -11,44 +11,71 @@ from pipeline.publish.answer import masthead
 from pipeline.publish.assumptions import assumptions_table
 from pipeline.publish.closing import attribution, cautions, inputs_table, made_with
 from pipeline.publish.effects import effects_figure, has_effects
-from pipeline.publish.evidence import demand_figure, map_figure, site_heading
+from pipeline.publish.evidence import demand_figure, map_figure, site_heading, site_map
 from pipeline.publish.findings import fee_figure, models_tried, values_table
 from pipeline.publish.losses import losses, road_table
-from pipeline.publish.mapview import base_map
+from pipeline.publish.mapmeasures import MapFigures
+from pipeline.publish.mapview import BaseMap, base_map
 from pipeline.publish.markup import Html, join, tag
+from pipeline.publish.methods import methods, sources
+from pipeline.publish.pagedata import data_block
 from pipeline.publish.results import Headline, Results
 
 STYLE_FILE = Path(__file__).with_name("report.css")
+SCRIPT_FILE = Path(__file__).with_name("report.js")
+MOST_SHAPES = 60_000
+"""Zones times sites; beyond that only the first site's map is drawn."""
 
 
 def build_report(results: Results) -> str:
     """The whole page. It refers to nothing outside itself, and its policy forbids it to."""
     style = Html(STYLE_FILE.read_text(encoding="utf-8"))
+    script = Html(SCRIPT_FILE.read_text(encoding="utf-8"))
     head = tag(
         "head",
         tag("meta", charset="utf-8"),
-        tag("meta", http_equiv="Content-Security-Policy", content=_policy(style)),
+        tag("meta", http_equiv="Content-Security-Policy", content=_policy(style, script)),
         tag("meta", name="viewport", content="width=device-width, initial-scale=1"),
         tag("meta", name="color-scheme", content="light dark"),
         tag("title", results.study.study.title),
         tag("style", style),
     )
     base = base_map(results)
+    maps = _maps(results, base)
     body = tag(
         "body",
         tag("a", "Skip to the evidence", href="#map", class_="skip"),
         base.defs if base else None,
         masthead(results),
-        tag("main", *_sections(results, lambda h: map_figure(results, base, h))),
+        tag(
+            "main", *_sections(results, lambda h: map_figure(results, base, h, maps.get(h.site_id)))
+        ),
         tag("footer", attribution(results)),
+        data_block(results, list(maps.values())),
+        tag("script", script),
     )
     return f"<!doctype html>\n{tag('html', head, body, lang='en')}\n"
 
 
-def _policy(style: str) -> str:
-    """Content security policy: nothing may be loaded, only this style applies."""
-    digest = base64.b64encode(hashlib.sha256(style.encode()).digest()).decode()
-    return f"default-src 'none'; style-src 'sha256-{digest}'; base-uri 'none'; form-action 'none'"
+def _policy(style: str, script: str) -> str:
+    """Content security policy: nothing may be loaded; only this style and this script apply."""
+    return (
+        f"default-src 'none'; style-src '{_digest(style)}'; script-src '{_digest(script)}'; "
+        "base-uri 'none'; form-action 'none'"
+    )
+
+
+def _digest(text: str) -> str:
+    return f"sha256-{base64.b64encode(hashlib.sha256(text.encode()).digest()).decode()}"
+
+
+def _maps(results: Results, base: BaseMap | None) -> dict[str, MapFigures]:
+    """What the map of every site shows; of the first alone where all would be too many."""
+    shown = results.headlines
+    if base is not None and len(base.zone_names) * len(shown) > MOST_SHAPES:
+        shown = shown[:1]
+    found = {headline.site_id: site_map(results, base, headline) for headline in shown}
+    return {site_id: figures for site_id, figures in found.items() if figures is not None}
 
 
 def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Html]:
@@ -69,8 +96,10 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Ht
         _section("lost", "What was lost on the way", _LOST, *losses(results)),
         _section("models", "Models tried", _MODELS, each(models_tried)),
         _section("roads", "The road data", _ROADS, roads) if roads else Html(""),
+        _section("methods", "How it was worked out", _METHODS, *methods(results)),
         _section("care", "Cautions", "Read these before quoting a figure.", cautions()),
-        _section("sources", "Inputs", _SOURCES, inputs_table(results), made_with(results)),
+        _section("sources", "Sources", _SOURCES, sources(results)),
+        _section("inputs", "Inputs", _INPUTS, inputs_table(results), made_with(results)),
     ]
 
 
@@ -86,8 +115,8 @@ _EFFECTS = (
     "interval matters more than the sampling error does."
 )
 _MAP = (
-    "Visits per 1,000 residents of each zone in a year, with the roads that bring them and the "
-    "routes they take."
+    "Visits, cost and surplus of each zone, with the roads that bring visitors and the routes they "
+    "take."
 )
 _DEMAND = (
     "People who live further away pay more to come, and come less often. The fall of the curve "
@@ -108,7 +137,9 @@ _MODELS = (
     "overdispersion speaks against Poisson."
 )
 _ROADS = "A route is only as good as the roads it was found on."
-_SOURCES = "Whoever has these files, settings and this code can repeat the run."
+_METHODS = "The steps of this very run. The settings behind them are listed above."
+_SOURCES = "The published work that these methods come from."
+_INPUTS = "Whoever has these files, settings and this code can repeat the run."
 
 
 def _section(name: str, title: str, lead: str, *body: object) -> Html:

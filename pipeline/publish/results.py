@@ -9,6 +9,7 @@ import pandas as pd
 
 from pipeline.provenance import Provenance
 from pipeline.publish.curve import Curve
+from pipeline.publish.feecurve import FeeCurve
 from pipeline.publish.rows import rows_of
 from pipeline.study import Study
 
@@ -72,6 +73,7 @@ class Results:
     zone_surplus: pd.DataFrame
     sensitivity: pd.DataFrame
     curves: dict[str, Curve]
+    fees: dict[str, FeeCurve]
     headlines: tuple[Headline, ...]
 
     @property
