@@ -5,9 +5,12 @@ from __future__ import annotations
 import argparse
 import json
 import sys
+from collections.abc import Callable
 from pathlib import Path
+from typing import Any
 
-from pipeline.errors import PipelineError
+from pipeline.errors import PipelineError, StudyError
+from pipeline.progress import stage_progress
 from pipeline.stamps import nothing_to_do
 from pipeline.study import Study, load_study
 
@@ -29,6 +32,9 @@ examples
   python -m pipeline route config/demo.toml      as far as the routes
   python -m pipeline new lakeshore               a new study file with every key explained
   python -m pipeline all my/park.toml --output /tmp/park
+  python -m pipeline all my/park.toml --quiet    only the result, or the error
+  python -m pipeline all my/park.toml --json     the result for a program
+  python -m pipeline compare A/output B/output   two runs side by side: comparison.html
 
 stages, in their order
   geocode      a zone of origin for every visit record
@@ -42,7 +48,9 @@ stages, in their order
   publish      GIS layers, tables and the report
 
 What has not changed since the last run is not done again.
-exit codes: 0 done, 1 something in the study or its data is wrong, 2 a wrong command line
+A terminal shows a progress bar; a log gets plain lines without colours.
+exit codes: 0 done, 1 something in the study or its data is wrong, 2 a wrong command line,
+130 stopped by the keyboard (what was finished is kept)
 """
 
 
@@ -52,8 +60,12 @@ def main(arguments: list[str] | None = None) -> int:
     try:
         if options.command == "new":
             return _new(options.study_file)
+        if options.command == "compare":
+            return _compare(options)
         return _run(options)
     except PipelineError as error:
+        if options.json:
+            print(json.dumps({"status": "error", "error": str(error)}, ensure_ascii=False))
         print(f"error: {error}", file=sys.stderr)
         return 1
     except KeyboardInterrupt:
@@ -71,39 +83,72 @@ def _parser() -> argparse.ArgumentParser:
     parser.add_argument(
         "command",
         metavar="STAGE",
-        choices=("all", "new", *STAGE_NAMES),
-        help="'all', one stage (with those before it that are out of date), or 'new'",
+        choices=("all", "new", "compare", *STAGE_NAMES),
+        help="'all', one stage (with those before it that are out of date), 'new' or 'compare'",
     )
     parser.add_argument(
-        "study_file", metavar="STUDY_FILE", help="the study file; after 'new': the study's name"
+        "study_file",
+        metavar="STUDY_FILE",
+        help="the study file; after 'new': the study's name; after 'compare': the first run",
     )
+    parser.add_argument("second", metavar="B", nargs="?", help="after 'compare': the second run")
     parser.add_argument(
         "--output",
         metavar="DIR",
         type=Path,
-        help="put work/ and output/ there instead of into the study's own folder",
+        help="put work/ and output/ there instead of into the study's own folder "
+        "('compare': put comparison.html there)",
     )
     parser.add_argument(
         "--again", action="store_true", help="run the named stage even if nothing has changed"
     )
+    parser.add_argument("--quiet", action="store_true", help="no lines about stages")
+    parser.add_argument("--json", action="store_true", help="print one JSON object, nothing else")
     return parser
 
 
 def _run(options: argparse.Namespace) -> int:
     study = load_study(Path(options.study_file), output=options.output)
     whole = options.command == "all"
-    if whole and not options.again and nothing_to_do(study):
-        print(f"nothing to do: {study.study.name} is up to date")
-        _show_result(study)
-        return 0
-    # The flow pulls in the geographical and statistical libraries: only now.
-    from pipeline.runner import Run
+    lines: list[str] = []
+    fresh = not (whole and not options.again and nothing_to_do(study))
+    if fresh:
+        # The flow pulls in the geographical and statistical libraries: only now.
+        from pipeline.runner import Run
 
-    run = Run(study, lambda line: print(line, flush=True), again=options.again)
-    run.upto("publish" if whole else options.command)
+        silent = options.quiet or options.json
+        with stage_progress(shown=not silent) as (tell, begin):
+            run = Run(study, _both(lines.append, tell), again=options.again, begin=begin)
+            run.upto("publish" if whole else options.command)
+    if options.json:
+        status = "done" if fresh else "nothing to do"
+        print(json.dumps(_as_json(study, status, lines, whole=whole), ensure_ascii=False))
+        return 0
+    if not fresh and not options.quiet:
+        print(f"nothing to do: {study.study.name} is up to date")
     if whole:
         _show_result(study)
     return 0
+
+
+def _both(first: Callable[[str], None], second: Callable[[str], None]) -> Callable[[str], None]:
+    def tell(line: str) -> None:
+        first(line)
+        second(line)
+
+    return tell
+
+
+def _as_json(study: Study, status: str, lines: list[str], *, whole: bool) -> dict[str, Any]:
+    """What a program wants to know of a run."""
+    said: dict[str, Any] = {"status": status, "study": study.study.name}
+    said["stages"] = [dict(zip(("stage", "summary"), x.split(": ", 1), strict=True)) for x in lines]
+    if whole:
+        output = study.study.folder / "output"
+        manifest = json.loads((output / "run.json").read_text(encoding="utf-8"))
+        said["report"] = str(output / "report.html")
+        said["headline"] = manifest["headline"]
+    return said
 
 
 def _show_result(study: Study) -> None:
@@ -113,6 +158,20 @@ def _show_result(study: Study) -> None:
     print(f"\nreport: {output / 'report.html'}")
     for headline in manifest["headline"]:
         print(headline["words"])
+
+
+def _compare(options: argparse.Namespace) -> int:
+    if options.second is None:
+        raise StudyError("compare needs two runs: python -m pipeline compare A/output B/output")
+    from pipeline.compare import compare_runs, read_run
+    from pipeline.files import write_text
+
+    page = (options.output or Path()) / "comparison.html"
+    write_text(
+        compare_runs(read_run(Path(options.study_file)), read_run(Path(options.second))), page
+    )
+    print(f"wrote {page}")
+    return 0
 
 
 def _new(name: str) -> int:

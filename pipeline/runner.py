@@ -29,11 +29,16 @@ Tell = Callable[[str], None]
 
 @dataclass
 class Run:
-    """One run of a study's flow; remembers the inputs that it has read."""
+    """One run of a study's flow; remembers the inputs that it has read.
+
+    `tell` gets one line per stage when it is done; `begin` its name, place and the total number
+    of stages when it starts.
+    """
 
     study: Study
     tell: Tell
     again: bool = False
+    begin: Callable[[str, int, int], None] | None = None
     _inputs: dict[Kind, Any] = field(default_factory=dict)
 
     def upto(self, last: str) -> None:
@@ -52,7 +57,9 @@ class Run:
         last = stages[-1].name
         stale = {stage.name for stage in stages if not self._is_done(stage)}
         self._check_inputs([stage for stage in stages if stage.name in stale])
-        for stage in stages:
+        for place, stage in enumerate(stages):
+            if self.begin:
+                self.begin(stage.name, place, len(stages))
             if self._is_done(stage) and not (self.again and stage.name == last):
                 self.tell(f"{stage.name}: nothing has changed")
             else:

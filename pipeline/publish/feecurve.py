@@ -83,26 +83,34 @@ def fee_curves(
     for (site_id, _), model in fitted_models(estimates, fit[fit["chosen"]]).items():
         schedule = fee_schedule[fee_schedule["site_id"] == site_id]
         fees = np.sort(schedule["fee"].to_numpy(dtype=np.float64))
-        if len(fees) > 1 and model.price_coefficient < 0:
-            found[site_id] = _fee_curve(model, samples[site_id], fees, study)
+        if len(fees) > 1:
+            found[site_id] = _fee_curve(model, samples[site_id], schedule, study)
     return found
 
 
-def _fee_curve(model: FittedModel, sample: Sample, fees: Numbers, study: Study) -> FeeCurve:
+def _fee_curve(
+    model: FittedModel, sample: Sample, schedule: pd.DataFrame, study: Study
+) -> FeeCurve:
+    fees = np.sort(schedule["fee"].to_numpy(dtype=np.float64))
+    step, visits = slider_step(fees), sample.annual_visits
     draws = parameter_draws(model, draws=study.surplus.draws, seed=study.study.seed)
     grid = np.unique(np.concatenate([fees, np.linspace(0.0, fees[-1], STEPS + 1)]))
-    if isinstance(FAMILIES[model.model], SemiLogCurve):
+    if _is_semi_log(model.model):
         tails = [0.5 - study.surplus.confidence / 2, 0.5 + study.surplus.confidence / 2]
         slope = draws[:, model.terms.index(PRICE)]
         low, high = np.quantile(slope, tails, method="inverted_cdf")
         prices = (model.price_coefficient, float(low), float(high))
-        visits = sample.annual_visits
-        return FeeCurve(_semi_log(visits, prices, grid), visits, prices, slider_step(fees))
+        return FeeCurve(_semi_log(visits, prices, grid), visits, prices, step)
     if len(grid) * len(draws) * sample.nobs > MOST_WORK:
-        grid = fees
+        return FeeCurve(schedule.sort_values("fee").reset_index(drop=True), visits, None, step)
     settings = study.surplus.model_copy(update={"fees": tuple(float(fee) for fee in grid)})
-    table = fee_rows(model, sample, draws, settings=settings)
-    return FeeCurve(table, sample.annual_visits, None, slider_step(fees))
+    return FeeCurve(fee_rows(model, sample, draws, settings=settings), visits, None, step)
+
+
+def _is_semi_log(name: str) -> bool:
+    """Whether a family takes its totals from the semi-logarithmic curve as it stands."""
+    owner = next(kind for kind in type(FAMILIES[name]).__mro__ if "totals" in vars(kind))
+    return owner is SemiLogCurve
 
 
 def _semi_log(visits: float, prices: tuple[float, float, float], fees: Numbers) -> pd.DataFrame:

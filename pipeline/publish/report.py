@@ -29,17 +29,7 @@ MOST_SHAPES = 60_000
 
 def build_report(results: Results) -> str:
     """The whole page. It refers to nothing outside itself, and its policy forbids it to."""
-    style = Html(STYLE_FILE.read_text(encoding="utf-8"))
     script = Html(SCRIPT_FILE.read_text(encoding="utf-8"))
-    head = tag(
-        "head",
-        tag("meta", charset="utf-8"),
-        tag("meta", http_equiv="Content-Security-Policy", content=_policy(style, script)),
-        tag("meta", name="viewport", content="width=device-width, initial-scale=1"),
-        tag("meta", name="color-scheme", content="light dark"),
-        tag("title", results.study.study.title),
-        tag("style", style),
-    )
     base = base_map(results)
     maps = _maps(results, base)
     body = tag(
@@ -53,6 +43,25 @@ def build_report(results: Results) -> str:
         tag("footer", attribution(results)),
         data_block(results, list(maps.values())),
         tag("script", script),
+    )
+    return _page(results.study.study.title, body, script)
+
+
+def plain_page(title: str, body: Html) -> str:
+    """A page in the report's style, without script."""
+    return _page(title, tag("body", tag("main", body)), "")
+
+
+def _page(title: str, body: Html, script: str) -> str:
+    style = Html(STYLE_FILE.read_text(encoding="utf-8"))
+    head = tag(
+        "head",
+        tag("meta", charset="utf-8"),
+        tag("meta", http_equiv="Content-Security-Policy", content=_policy(style, script)),
+        tag("meta", name="viewport", content="width=device-width, initial-scale=1"),
+        tag("meta", name="color-scheme", content="light dark"),
+        tag("title", title),
+        tag("style", style),
     )
     return f"<!doctype html>\n{tag('html', head, body, lang='en')}\n"
 
