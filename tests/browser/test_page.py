@@ -14,7 +14,7 @@ from pipeline.publish import Publication
 from tests.publish.conftest import COST
 
 MEASURES = ("visits", "revenue", "consumer_surplus", "surplus_lost")
-SECTIONS = 12
+SECTIONS = 13
 
 
 def shown(page: Any) -> dict[str, tuple[str, ...]]:
