@@ -21,6 +21,7 @@ from pipeline.finished import join, summarise_join
 from pipeline.origins import geocode, summarise_geocode
 from pipeline.provenance import Provenance, trace
 from pipeline.publish import Publication, publish, summarise_publish
+from pipeline.road_settings import RoadsSettings, RoutesSettings
 from pipeline.roads import (
     RoadExtract,
     RoadGraph,
@@ -37,8 +38,6 @@ from pipeline.settings import (
     ComputeSettings,
     DemandSettings,
     MarketSettings,
-    RoadsSettings,
-    RoutesSettings,
     ScenarioSettings,
     SitesSettings,
     SurplusSettings,

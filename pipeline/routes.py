@@ -16,6 +16,7 @@ import numpy.typing as npt
 import pandas as pd
 
 from pipeline.errors import RouteError
+from pipeline.road_settings import RoutesSettings
 from pipeline.roads.arrays import Bool, Float64, Int64
 from pipeline.roads.graph import (
     DISTANCE_MASK,
@@ -27,7 +28,6 @@ from pipeline.roads.route_lines import Leg, draw_legs
 from pipeline.roads.snapping import TIED, TOO_FAR, Tied, tie_to_roads
 from pipeline.roads.trips import Trips, trips_to
 from pipeline.search import UNREACHED
-from pipeline.settings import RoutesSettings
 from pipeline.study import Study
 from pipeline.tables import REACHED_STATUSES, ROUTE_STATUSES
 

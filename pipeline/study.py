@@ -12,6 +12,7 @@ import hashlib
 import json
 import tomllib
 from collections.abc import Iterator
+from datetime import date
 from pathlib import Path
 from typing import Any, cast
 
@@ -21,6 +22,7 @@ from pydantic_core import ErrorDetails
 from pipeline.cost_settings import CostsSettings
 from pipeline.errors import StudyError
 from pipeline.presets import load_preset
+from pipeline.road_settings import RoadsSettings, RoutesSettings
 from pipeline.sections import Section, inner_section
 from pipeline.sensitivity_settings import SensitivitySettings
 from pipeline.settings import (
@@ -28,8 +30,6 @@ from pipeline.settings import (
     DemandSettings,
     MarketSettings,
     PublishSettings,
-    RoadsSettings,
-    RoutesSettings,
     ScenarioSettings,
     SitesSettings,
     StudySettings,
@@ -175,6 +175,8 @@ def _plain(value: Any) -> Any:
         return {key: _plain(item) for key, item in value.items()}
     if isinstance(value, tuple):
         return [_plain(item) for item in value]
+    if isinstance(value, date):
+        return value.isoformat()
     return value.name if isinstance(value, Path) else value
 
 

@@ -63,7 +63,8 @@ def _near(value: float) -> float:
 
 
 def _down(value: float) -> float:
-    return _clean(math.floor(value / _unit(value) + 1e-9), _unit(value))
+    down = _clean(math.floor(value / _unit(value) + 1e-9), _unit(value))
+    return down if down <= value else _clean(down / _unit(value) - 1, _unit(value))
 
 
 def _up(value: float) -> float:

@@ -10,8 +10,10 @@ import numpy.typing as npt
 import pandas as pd
 
 from pipeline.errors import RoadsError
+from pipeline.road_settings import RoadsSettings
 from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64
 from pipeline.roads.barriers import cut_at_barriers
+from pipeline.roads.conditions import calendar_of
 from pipeline.roads.contract import Chains, contract, reorder
 from pipeline.roads.copies import Copies, copy_junctions
 from pipeline.roads.extract import E7, RoadExtract
@@ -28,7 +30,6 @@ from pipeline.roads.rules import (
     way_traits,
 )
 from pipeline.roads.segments import Segments, segments_of
-from pipeline.settings import RoadsSettings
 from pipeline.study import Study
 
 COPIES = ("copy_of", "copy_kind", "head_edge", "head_node", "tail_edge", "tail_node")
@@ -58,15 +59,19 @@ def build_roads(
     """
     settings = study.roads
     rules = load_rules(settings)
-    traits = way_traits(extract, rules, settings)
+    southern = bool(len(extract.node_lat_e7)) and float(np.median(extract.node_lat_e7)) < 0
+    calendar = calendar_of(settings.travel_date, settings.season, southern=southern)
+    traits = way_traits(extract, rules, settings, calendar)
     segments, losses = segments_of(extract, traits, rules, settings)
     if not segments.count or traits.is_ferry[segments.way].all():
         raise RoadsError(
             f"none of the {extract.ways} ways of the road extract is a road open to cars. "
             "Give an extract with roads, or allow tracks by roads.tracks."
         )
-    extract, segments = cut_at_barriers(extract, segments, closed_barriers(extract, rules))
-    turns = read_restrictions(extract, segments, turn_values(extract, rules))
+    extract, segments = cut_at_barriers(
+        extract, segments, closed_barriers(extract, rules, settings)
+    )
+    turns = read_restrictions(extract, segments, turn_values(extract, rules, calendar))
     group = (traits.is_ferry * 1 + traits.is_limited * 2).astype(np.uint8)[segments.way]
     forced = np.array(turns.nodes, dtype=np.int64)
     chains = contract(segments, len(extract.node_lon_e7), group, forced)
@@ -74,7 +79,7 @@ def build_roads(
     chains = reorder(chains, np.lexsort((rank[chains.end], rank[chains.start])))
     runs = edge_runs(turns.runs, chains)
     graph, parts = _graph(extract, traits, segments, chains, nodes, rank, runs, settings)
-    table = quality(extract, traits, rules, segments, losses, graph, parts, turns)
+    table = quality(extract, traits, rules, segments, losses, graph, parts, turns, calendar)
     return graph, table, lines_by_class(extract, traits, rules, segments, chains)
 
 

@@ -9,6 +9,7 @@ import numpy as np
 import pandas as pd
 
 from pipeline.roads.arrays import Bool, Float64, Int64
+from pipeline.roads.conditions import Calendar
 from pipeline.roads.contract import Chains
 from pipeline.roads.extract import RoadExtract
 from pipeline.roads.graph import RoadGraph, unpack_distance_km
@@ -29,10 +30,12 @@ def quality(
     graph: RoadGraph,
     islands: int,
     turns: Restrictions,
+    calendar: Calendar,
 ) -> pd.DataFrame:
     """The table `road_quality`: lengths and tagged limits by class, then what was lost."""
     by_class = _by_class(traits, rules, segments)
-    whole = _whole(extract, traits, segments, losses, graph, islands) + _turns(turns)
+    whole = _whole(extract, traits, segments, losses, graph, islands)
+    whole += _turns(turns) + _unread(calendar)
     return pd.DataFrame(
         by_class + whole, columns=["measure", "road_class", "value", "unit", "note"]
     )
@@ -118,6 +121,19 @@ def _turns(turns: Restrictions) -> list[tuple[Any, ...]]:
         ("turn restrictions unread", len(turns.unread), f"not applied{example}"),
     ]
     return [(what, NO_CLASS, float(count), "relations", note) for what, count, note in rows]
+
+
+MOST_CONDITIONS = 30
+
+
+def _unread(calendar: Calendar) -> list[tuple[Any, ...]]:
+    """Conditions that could not be read, the most frequent ones by their words."""
+    total = sum(calendar.unread.values())
+    note = "left out of account; set roads.travel_date or roads.season if none is"
+    rows = [("conditions unread", NO_CLASS, float(total), "tags", note)]
+    for text, count in sorted(calendar.unread.items(), key=lambda item: (-item[1], item[0])):
+        rows.append((f"condition unread: {text}", NO_CLASS, float(count), "tags", "left out"))
+    return rows[: MOST_CONDITIONS + 1]
 
 
 def km_of_edges(graph: RoadGraph) -> Float64:

@@ -17,10 +17,11 @@ import numpy as np
 import pandas as pd
 
 from pipeline.errors import StudyError
+from pipeline.road_settings import RoadsSettings
 from pipeline.roads.arrays import Bool, Float64, Int8, Int32
+from pipeline.roads.conditions import Calendar
 from pipeline.roads.extract import RoadExtract
-from pipeline.roads.speeds import read_duration_min, read_limit_kmh
-from pipeline.settings import RoadsSettings
+from pipeline.roads.speeds import read_code_kmh, read_duration_min, read_limit_kmh
 
 RULES_FILE = Path(__file__).parents[2] / "config" / "roads.toml"
 FERRY = "ferry"
@@ -34,8 +35,8 @@ class RoadRules:
     ----------
     classes : road classes in order; a class's code is its position; ferries come last.
     class_kmh, class_oneway, class_unpaved : defaults of each class, in that order.
-    access, barriers, turns, oneway, speed, unpaved_kmh, ferry : sections of the table, as they
-        stand there.
+    access, barriers, turns, oneway, speed, unpaved_kmh, smoothness_kmh, tracktype_kmh, ferry :
+        sections of the table, as they stand there.
     """
 
     classes: tuple[str, ...]
@@ -46,8 +47,10 @@ class RoadRules:
     barriers: dict[str, Any]
     turns: dict[str, Any]
     oneway: dict[str, Any]
-    speed: dict[str, float]
+    speed: dict[str, Any]
     unpaved_kmh: dict[str, float]
+    smoothness_kmh: dict[str, float]
+    tracktype_kmh: dict[str, float]
     ferry: dict[str, float]
 
 
@@ -111,22 +114,29 @@ def load_rules(settings: RoadsSettings, file: Path = RULES_FILE) -> RoadRules:
         oneway=table["oneway"],
         speed=table["speed"],
         unpaved_kmh=table["unpaved_kmh"],
+        smoothness_kmh=table["smoothness_kmh"],
+        tracktype_kmh=table["tracktype_kmh"],
         ferry=table["ferry"],
     )
 
 
-def way_traits(extract: RoadExtract, rules: RoadRules, settings: RoadsSettings) -> WayTraits:
-    """Apply the rules to every way of an extract."""
+def way_traits(
+    extract: RoadExtract, rules: RoadRules, settings: RoadsSettings, calendar: Calendar
+) -> WayTraits:
+    """Apply the rules to every way of an extract, on the days of travel."""
     tags = extract.way_tags
     class_code = _class_codes(tags, rules, settings)
     is_ferry = class_code == len(rules.classes) - 1
     has_class = class_code >= 0
-    access = _access(tags, rules)
+    access = _access(tags, rules, calendar)
     closed = (access == 0) | _untagged_ferry(is_ferry, access, settings)
-    direction = _direction(tags, class_code, rules)
+    direction = _direction(tags, class_code, rules, calendar)
     surface_kmh = _by_value(tags["surface"], lambda v: rules.unpaved_kmh.get(v, np.inf), np.nan)
     default_unpaved = np.isnan(surface_kmh) & has_class & rules.class_unpaved[class_code]
-    forward_kmh, backward_kmh, unreadable = _speeds(tags, class_code, surface_kmh, rules)
+    is_unpaved = np.isfinite(surface_kmh) | default_unpaved
+    closed |= _out_of_season(tags, calendar) | _too_rough(tags, is_unpaved & ~is_ferry, settings)
+    cap_kmh = np.fmin(surface_kmh, _rough_cap(tags, rules))
+    forward_kmh, backward_kmh, unreadable = _speeds(tags, class_code, cap_kmh, rules, calendar)
     is_open = has_class & ~closed
     return WayTraits(
         class_code=class_code,
@@ -140,7 +150,7 @@ def way_traits(extract: RoadExtract, rules: RoadRules, settings: RoadsSettings) 
         is_limited=is_open & ((access == ENDS) | _last_stretch(class_code, rules, settings)),
         is_ferry=is_ferry,
         is_toll=_last_tagged(tags, ("toll", "toll:motorcar"), lambda v: float(v == "yes")) == 1,
-        is_unpaved=np.isfinite(surface_kmh) | default_unpaved,
+        is_unpaved=is_unpaved,
         ferry_min=np.where(is_ferry, _by_value(tags["duration"], read_duration_min), np.nan),
     )
 
@@ -160,11 +170,35 @@ def _class_codes(tags: pd.DataFrame, rules: RoadRules, settings: RoadsSettings) 
     return np.where(is_ferry, ferry, road).astype(np.int32)
 
 
-def _access(tags: pd.DataFrame, rules: RoadRules) -> Float64:
+def _access(tags: pd.DataFrame, rules: RoadRules, calendar: Calendar | None = None) -> Float64:
     """1 open, 0 closed, NaN untagged: the most specific key with a known value decides."""
     known = dict.fromkeys(rules.access["closed"], 0.0) | dict.fromkeys(rules.access["open"], 1.0)
     known |= dict.fromkeys(rules.access["ends"], ENDS)
-    return _last_tagged(tags, rules.access["keys"], lambda value: known.get(value, np.nan))
+    keys = rules.access["keys"]
+    return _last_tagged(tags, keys, lambda value: known.get(value, np.nan), calendar)
+
+
+def _out_of_season(tags: pd.DataFrame, calendar: Calendar) -> Bool:
+    """Ways that exist in another season only."""
+    return np.asarray(_by_value(tags["seasonal"], calendar.is_open(tags["seasonal"])) == 0)
+
+
+def _too_rough(tags: pd.DataFrame, is_unpaved: Bool, settings: RoadsSettings) -> Bool:
+    """Ways that the study's vehicle does not take: fords, rough tracks, unpaved roads."""
+    ford = _by_value(tags["ford"], lambda value: float(value != "no"), 0) == 1
+    rough = _by_value(tags["4wd_only"], lambda value: float(value == "yes"), 0) == 1
+    return np.asarray(
+        (ford & (settings.fords == "closed"))
+        | (rough & (not settings.four_wheel_drive))
+        | (is_unpaved & (settings.unpaved == "closed"))
+    )
+
+
+def _rough_cap(tags: pd.DataFrame, rules: RoadRules) -> Float64:
+    """Highest speed by smoothness and grade of track; NaN where neither caps it."""
+    smooth = _by_value(tags["smoothness"], lambda value: rules.smoothness_kmh.get(value, np.nan))
+    grade = _by_value(tags["tracktype"], lambda value: rules.tracktype_kmh.get(value, np.nan))
+    return np.asarray(np.fmin(smooth, grade))
 
 
 def _last_stretch(class_code: Int32, rules: RoadRules, settings: RoadsSettings) -> Bool:
@@ -173,24 +207,29 @@ def _last_stretch(class_code: Int32, rules: RoadRules, settings: RoadsSettings) 
     return np.asarray(is_track & (settings.tracks == "last_stretch"))
 
 
-def closed_barriers(extract: RoadExtract, rules: RoadRules) -> Bool:
-    """Of each tagged node, whether it is a barrier that cannot be passed."""
+def closed_barriers(extract: RoadExtract, rules: RoadRules, settings: RoadsSettings) -> Bool:
+    """Of each tagged node, whether it is a barrier (or ford) that cannot be passed."""
     tags = extract.tagged_nodes.tags
     closed = set(rules.barriers["closed"])
     by_kind = _by_value(tags["barrier"], lambda value: float(value in closed), 0) == 1
     access = _access(tags, rules)
     is_locked = _by_value(tags["locked"], lambda value: float(value == "yes"), 0) == 1
     is_barrier = tags["barrier"].notna().to_numpy()
-    return np.asarray(is_barrier & ((by_kind & ~(access > 0)) | (access == 0) | is_locked))
+    ford = _by_value(tags["ford"], lambda value: float(value != "no"), 0) == 1
+    closed_ford = ford & (settings.fords == "closed")
+    blocked = (by_kind & ~(access > 0)) | (access == 0) | is_locked
+    return np.asarray((is_barrier & blocked) | closed_ford)
 
 
-def turn_values(extract: RoadExtract, rules: RoadRules) -> pd.Series[str]:
+def turn_values(extract: RoadExtract, rules: RoadRules, calendar: Calendar) -> pd.Series[str]:
     """Of each turn restriction what it forbids; missing where it does not bind the vehicle."""
     tags = extract.turn_relations.tags
     values = tags["restriction"].astype(object)
     for key in rules.turns["keys"]:
         own = tags[key].astype(object)
         values = own.where(own.notna(), values)
+    in_season = calendar.read(tags["restriction:conditional"]).astype(object)
+    values = in_season.where(in_season.notna(), values)
     spared = set(rules.turns["excepted"])
     is_spared = _by_value(
         tags["except"], lambda value: float(bool(spared & set(re.split(r"[;, ]+", value)))), 0
@@ -203,13 +242,14 @@ def _untagged_ferry(is_ferry: Bool, access: Float64, settings: RoadsSettings) ->
     return np.asarray(is_ferry & (access != 1) & (settings.ferries == "car_tagged"))
 
 
-def _direction(tags: pd.DataFrame, class_code: Int32, rules: RoadRules) -> Int8:
+def _direction(tags: pd.DataFrame, class_code: Int32, rules: RoadRules, calendar: Calendar) -> Int8:
     """1 forward only, -1 backward only, 0 both, 2 neither."""
     known = dict.fromkeys(rules.oneway["forward"], 1.0)
     known |= dict.fromkeys(rules.oneway["backward"], -1.0)
     known |= dict.fromkeys(rules.oneway["both"], 0.0)
     known |= dict.fromkeys(rules.oneway["closed"], float(CLOSED))
-    tagged = _last_tagged(tags, rules.oneway["keys"], lambda value: known.get(value, np.nan))
+    keys = rules.oneway["keys"]
+    tagged = _last_tagged(tags, keys, lambda value: known.get(value, np.nan), calendar)
     around = rules.oneway["implied_by_junction"]
     implied = (_by_value(tags["junction"], lambda value: value in around, 0) == 1) | (
         (class_code >= 0) & rules.class_oneway[class_code]
@@ -218,7 +258,7 @@ def _direction(tags: pd.DataFrame, class_code: Int32, rules: RoadRules) -> Int8:
 
 
 def _speeds(
-    tags: pd.DataFrame, class_code: Int32, surface_kmh: Float64, rules: RoadRules
+    tags: pd.DataFrame, class_code: Int32, cap_kmh: Float64, rules: RoadRules, calendar: Calendar
 ) -> tuple[Float64, Float64, Bool]:
     """Speed along and against each way: the limit, else the class's, capped by the surface.
 
@@ -231,12 +271,20 @@ def _speeds(
     default = np.where(class_code >= 0, rules.class_kmh[class_code], np.nan)
     both = limit("maxspeed")
     unreadable = tags["maxspeed"].notna().to_numpy() & np.isnan(both)
+    for key in rules.speed["code_keys"]:
+        code = _by_value(tags[key], lambda value: read_code_kmh(value, rules.speed))
+        both = np.where(np.isnan(both), code, both)
+    in_season = _by_value(
+        calendar.read(tags["maxspeed:conditional"]),
+        lambda value: read_limit_kmh(value, rules.speed),
+    )
+    both = np.where(np.isnan(in_season), both, in_season)
     speeds = []
     for key in ("maxspeed:forward", "maxspeed:backward"):
         one = limit(key)
         unreadable |= tags[key].notna().to_numpy() & np.isnan(one)
         kmh = np.where(np.isnan(one), both, one)
-        speeds.append(np.fmin(np.where(np.isnan(kmh), default, kmh), surface_kmh))
+        speeds.append(np.fmin(np.where(np.isnan(kmh), default, kmh), cap_kmh))
     return speeds[0], speeds[1], unreadable
 
 
@@ -251,11 +299,20 @@ def _by_value(
 
 
 def _last_tagged(
-    tags: pd.DataFrame, keys: tuple[str, ...] | list[str], meaning: Callable[[str], float]
+    tags: pd.DataFrame,
+    keys: tuple[str, ...] | list[str],
+    meaning: Callable[[str], float],
+    calendar: Calendar | None = None,
 ) -> Float64:
-    """Meaning by the last of `keys` that has one; keys run from the general to the specific."""
+    """Meaning by the last of `keys` that has one; keys run from the general to the specific.
+
+    With a calendar a key's conditional values go before its plain ones.
+    """
     result = np.full(len(tags), np.nan)
     for key in keys:
         value = _by_value(tags[key], meaning)
+        if calendar is not None and f"{key}:conditional" in tags:
+            in_season = _by_value(calendar.read(tags[f"{key}:conditional"]), meaning)
+            value = np.where(np.isnan(in_season), value, in_season)
         result = np.where(np.isnan(value), result, value)
     return result

@@ -7,10 +7,10 @@ from dataclasses import dataclass
 import numpy as np
 from pyproj import Geod
 
+from pipeline.road_settings import RoadsSettings
 from pipeline.roads.arrays import Bool, Float64, Int32, Int64
 from pipeline.roads.extract import RoadExtract
 from pipeline.roads.rules import RoadRules, WayTraits
-from pipeline.settings import RoadsSettings
 
 WGS84 = Geod(ellps="WGS84")
 

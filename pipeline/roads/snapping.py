@@ -20,10 +20,10 @@ import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
+from pipeline.road_settings import RoutesSettings
 from pipeline.roads.arrays import Float64, Int64
 from pipeline.roads.graph import RoadGraph, pack
 from pipeline.roads.places import Nearest, Places, nearest_places, split_edges
-from pipeline.settings import RoutesSettings
 
 TIED, NO_PATH, TOO_FAR = "tied", "no_path", "too_far_from_road"
 

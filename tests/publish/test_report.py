@@ -12,7 +12,7 @@ import geopandas as gpd
 import numpy as np
 import pandas as pd
 import pytest
-from hypothesis import given, settings
+from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
 from pipeline.errors import PublishError
@@ -264,6 +264,7 @@ def test_figures_are_rounded_to_two_digits_of_their_interval(
     assert interval(low, high, value) == ends
 
 
+@example([249999999.9921875])
 @given(st.lists(st.floats(1e-6, 1e9), min_size=1, max_size=40))
 @settings(derandomize=True, max_examples=200)
 def test_map_classes_cover_the_data(values: list[float]) -> None:

@@ -190,7 +190,12 @@ def test_extract_without_open_roads_is_refused(tmp_path: Path) -> None:
 def test_limits_as_people_tag_them() -> None:
     assert read_limit_kmh("20 knots", SPEED) == pytest.approx(37.04)
     assert read_limit_kmh("50kmh", SPEED) == 50
-    for unreadable in ("", "fast", "50;70", "0", "999", "-50", "DE:urban", "50 mps"):
+    assert read_limit_kmh("70; 50", SPEED) == 50
+    assert read_limit_kmh("signals;60", SPEED) == 60
+    assert read_limit_kmh("DE:rural", SPEED) == 100
+    assert read_limit_kmh("DE:zone30", SPEED) == read_limit_kmh("de:zone:30", SPEED) == 30
+    assert read_limit_kmh("GB:zone20", SPEED) == pytest.approx(32.187, abs=1e-3)
+    for unreadable in ("", "fast", "fast;slow", "0", "999", "-50", "XX:urban", "50 mps"):
         assert math.isnan(read_limit_kmh(unreadable, SPEED)), unreadable
 
 

@@ -1,0 +1,153 @@
+"""Sections [roads] and [routes] of a study file: how ways become roads and points meet them."""
+
+from __future__ import annotations
+
+from datetime import date
+from typing import Annotated, ClassVar, Literal
+
+from pydantic import Field
+
+from pipeline.sections import InputPath, Section, setting
+
+
+class RoadsSettings(Section):
+    """The road extract, and how its ways become roads that a car can use."""
+
+    section_name: ClassVar[str] = "roads"
+    files: tuple[InputPath, ...] = setting(
+        "OSM PBF or OSM XML extracts (plain, .gz, .bz2); several are merged by OSM id.", ()
+    )
+    class_speed_kmh: dict[str, Annotated[float, Field(gt=0, le=200)]] = setting(
+        "Speed where no limit is tagged, by `highway` value; "
+        "the other classes keep the figure of config/roads.toml.",
+        {},
+        unit="km/h",
+        usual="as in config/roads.toml",
+    )
+    speed_factor: float = setting(
+        "Driven speed as a share of the limit or class speed; calibrate on known drive times.",
+        1.0,
+        unit="share",
+        usual="0.7 (towns) to 1.0 (open roads)",
+        gt=0.1,
+        le=1.5,
+    )
+    tracks: bool | Literal["last_stretch"] = setting(
+        "Whether ways of class `track` are roads to drive on; 'last_stretch': only in the first "
+        "and the last part of a trip, never as a way through.",
+        default=False,
+        usual="false; true or 'last_stretch' where sites lie on farm, forest or highland tracks",
+    )
+    travel_date: date | None = setting(
+        "Day of travel (year-month-day, unquoted): decides conditional access, directions, limits "
+        "and turns, and seasonal roads. It goes before `season`.",
+        None,
+        usual="a day in the middle of the visitors' season",
+    )
+    season: Literal["spring", "summer", "autumn", "winter"] | None = setting(
+        "Season of travel, in whole months (north: summer is June to August; the hemisphere "
+        "is that of the roads). A condition that holds in part of it is not read.",
+        None,
+        usual="summer",
+    )
+    four_wheel_drive: bool = setting(
+        "Whether the vehicle takes roads that are tagged for four-wheel drive only.",
+        default=False,
+        usual="false",
+    )
+    fords: Literal["open", "closed"] = setting(
+        "Whether fords are driven through. Fords can kill: ask the road authority.",
+        "open",
+        usual="open on minor roads of the lowlands, closed for cars in mountains",
+    )
+    unpaved: Literal["open", "closed"] = setting(
+        "Whether unpaved roads are driven on (some hire contracts forbid it).",
+        "open",
+        usual="open",
+    )
+    ferries: Literal["all", "car_tagged", "none"] = setting(
+        "Ferries to use: 'all' that are not closed to cars, only those tagged open to cars, none.",
+        "all",
+        usual="all",
+    )
+    ferry_speed_kmh: float = setting(
+        "Speed of a ferry that has no readable duration.",
+        20.0,
+        unit="km/h",
+        usual="15 to 35 (8 to 19 knots)",
+        gt=0,
+        le=90,
+    )
+    ferry_wait_min: float = setting(
+        "Waiting and boarding, once for each ferry taken.",
+        20.0,
+        unit="min",
+        usual="5 (shuttle) to 45 (sea crossing)",
+        ge=0,
+    )
+    main_network_km: float = setting(
+        "Besides the largest road network, one with at least this much road on which every "
+        "place can be reached and left is routed on too (a second island).",
+        100.0,
+        unit="km",
+        usual="50 to 500",
+        gt=0,
+    )
+
+
+class RoutesSettings(Section):
+    """How origins and sites are tied to the roads."""
+
+    section_name: ClassVar[str] = "routes"
+    table: InputPath | None = setting(
+        "A ready routes table (CSV or Parquet); then no road extract is needed.", None
+    )
+    max_snap_km: float = setting(
+        "A point further from its road is too_far_from_road.",
+        5.0,
+        unit="km",
+        usual="2 to 10",
+        gt=0,
+    )
+    zone_gap_speed_kmh: float = setting(
+        "Speed on the straight gap between a zone's point and its road, charged as travelled.",
+        20.0,
+        unit="km/h",
+        usual="20 (unmapped lanes) to 30",
+        gt=0,
+    )
+    site_gap_speed_kmh: float = setting(
+        "Speed on the straight gap between an access point and its road, charged as travelled.",
+        20.0,
+        unit="km/h",
+        usual="5 (on foot) to 20 (unmapped lanes)",
+        gt=0,
+    )
+    detached_road_km: float = setting(
+        "Roads that join the main network nowhere and are at least this long in all count as "
+        "an island: a point beside them is not moved to the main network.",
+        0.5,
+        unit="km",
+        usual="0.2 to 2",
+        ge=0,
+    )
+    detached_jump_km: float = setting(
+        "A point beside such an island is moved to the main network all the same if that is no "
+        "more than this much further than the island's road; else it has no_path.",
+        0.3,
+        unit="km",
+        usual="0.1 to 0.5: less than a stretch of water without a bridge",
+        ge=0,
+    )
+    max_lines: int = setting(
+        "Route lines to keep; if there are more routed pairs, sites go before substitutes, "
+        "then the shortest drives.",
+        5000,
+        ge=0,
+    )
+    line_tolerance_m: float = setting(
+        "Route lines are thinned for maps by at most this much; distances are not touched.",
+        20.0,
+        unit="m",
+        ge=0,
+    )
