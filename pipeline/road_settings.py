@@ -32,6 +32,22 @@ class RoadsSettings(Section):
         gt=0.1,
         le=1.5,
     )
+    calibration_factor: float = setting(
+        "Multiplies all times on roads, delays included; from measured or reported times "
+        "(`pipeline.roads.delays.fit_calibration`).",
+        1.0,
+        unit="share",
+        usual="1.0 (as modelled) to 1.5 (towns)",
+        gt=0.2,
+        le=5,
+    )
+    delay_s: dict[str, Annotated[float, Field(ge=0, le=600)]] = setting(
+        "Delays at traffic_signals, stop, give_way, crossing, toll_booth, ford and on turning into "
+        "a smaller_road (sharp_deg: the least angle); the others keep config/roads.toml.",
+        {},
+        unit="s",
+        usual="as in config/roads.toml",
+    )
     tracks: bool | Literal["last_stretch"] = setting(
         "Whether ways of class `track` are roads to drive on; 'last_stretch': only in the first "
         "and the last part of a trip, never as a way through.",

@@ -31,7 +31,7 @@ from pipeline.search import UNREACHED
 from pipeline.study import Study
 from pipeline.tables import REACHED_STATUSES, ROUTE_STATUSES
 
-ALONG = ("ferry_km", "ferry_min", "toll_km", "unpaved_km")
+ALONG = ("ferry_km", "ferry_min", "toll_km", "unpaved_km", "delay_min")
 
 
 @dataclass(frozen=True)

@@ -169,6 +169,7 @@ def sums_along(
     edge_is_ferry: Bool,
     edge_toll_m: Float32,
     edge_unpaved_m: Float32,
+    edge_delay_s: Float32,
     seed_m: Float64,
 ) -> Float64:
     """What the routes between some junctions and the tree's place run on.
@@ -179,11 +180,13 @@ def sums_along(
     nodes : (k,) junctions that the tree reaches.
     arc_edge, arc_cost : of the arcs that were searched.
     edge_is_ferry, edge_toll_m, edge_unpaved_m : of the edges.
-    seed_m : (seeds, 2) toll and unpaved metres between each seed and the place.
+    edge_delay_s : of the directed edges.
+    seed_m : (seeds, 3) toll and unpaved metres and seconds of delay between each seed and the
+        place.
 
     Returns
     -------
-    (k, 4): ferry km, ferry minutes, toll km, unpaved km.
+    (k, 5): ferry km, ferry minutes, toll km, unpaved km, minutes of delay.
     """
     sums = _sums(
         tree.parent,
@@ -194,9 +197,10 @@ def sums_along(
         edge_is_ferry,
         edge_toll_m,
         edge_unpaved_m,
+        edge_delay_s,
         seed_m,
     )
-    return np.asarray(sums / np.array([1e6, 6000.0, 1000.0, 1000.0]))
+    return np.asarray(sums / np.array([1e6, 6000.0, 1000.0, 1000.0, 60.0]))
 
 
 @compiled
@@ -209,13 +213,14 @@ def _sums(
     edge_is_ferry: Bool,
     edge_toll_m: Float32,
     edge_unpaved_m: Float32,
+    edge_delay_s: Float32,
     seed_m: Float64,
 ) -> Float64:
     """Climb from each node until a node with known sums, then hand them down again."""
     known = np.zeros(len(parent), dtype=np.bool_)
-    sums = np.empty((len(parent), 4), dtype=np.float64)
+    sums = np.empty((len(parent), 5), dtype=np.float64)
     climbed = np.empty(len(parent), dtype=np.int32)
-    result = np.empty((len(nodes), 4), dtype=np.float64)
+    result = np.empty((len(nodes), 5), dtype=np.float64)
     for k in range(len(nodes)):
         here = np.int64(nodes[k])
         height = 0
@@ -238,6 +243,7 @@ def _sums(
                 sums[below, 1] += arc_cost[arc] >> BITS
             sums[below, 2] += edge_toll_m[edge]
             sums[below, 3] += edge_unpaved_m[edge]
+            sums[below, 4] += edge_delay_s[arc_edge[arc]]
             known[below] = True
             here = np.int64(below)
         result[k] = sums[nodes[k]]

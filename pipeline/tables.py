@@ -254,6 +254,12 @@ class Routes(Table):
     unpaved_km: Series[float] = column(
         "on unpaved roads, of distance_km", unit="km", ge=0, nullable=True
     )
+    delay_min: Series[float] | None = column(
+        "delays at signals, signs, crossings, booths, fords and turns, of drive_time_min",
+        unit="min",
+        ge=0,
+        nullable=True,
+    )
     zone_snap_m: Series[float] = column(
         "gap between the zone's centroid and its road", unit="m", ge=0, nullable=True
     )

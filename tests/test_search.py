@@ -130,10 +130,11 @@ def test_sums_along_a_route() -> None:
         np.array([False, True, False]),
         np.array([1000, 0, 0], dtype=np.float32),
         np.array([0, 0, 3000], dtype=np.float32),
-        np.array([[40.0, 0.0]]),
+        np.array([60, 0, 0, 0, 120, 0], dtype=np.float32),
+        np.array([[40.0, 0.0, 30.0]]),
     )
-    assert sums[0].tolist() == [2.0, 1.0, 1.04, 3.0]
-    assert sums[1].tolist() == [0.0, 0.0, 0.04, 0.0]
+    assert sums[0].tolist() == [2.0, 1.0, 1.04, 3.0, 3.5]
+    assert sums[1].tolist() == [0.0, 0.0, 0.04, 0.0, 0.5]
 
 
 def test_graph_without_arcs() -> None:

@@ -16,6 +16,7 @@ from pipeline.roads.barriers import cut_at_barriers
 from pipeline.roads.conditions import calendar_of
 from pipeline.roads.contract import Chains, contract, reorder
 from pipeline.roads.copies import Copies, copy_junctions
+from pipeline.roads.delays import turns_off
 from pipeline.roads.extract import E7, RoadExtract
 from pipeline.roads.graph import CLOSED, RoadGraph, best_arcs, flag_bits, pack
 from pipeline.roads.limited import through_roads
@@ -23,13 +24,14 @@ from pipeline.roads.networks import detached_km, main_networks
 from pipeline.roads.quality import lines_by_class, quality
 from pipeline.roads.restrictions import Run, edge_runs, read_restrictions
 from pipeline.roads.rules import (
+    RoadRules,
     WayTraits,
     closed_barriers,
     load_rules,
     turn_values,
     way_traits,
 )
-from pipeline.roads.segments import Segments, segments_of
+from pipeline.roads.segments import WGS84, Segments, segments_of
 from pipeline.study import Study
 
 COPIES = ("copy_of", "copy_kind", "head_edge", "head_node", "tail_edge", "tail_node")
@@ -78,7 +80,7 @@ def build_roads(
     nodes, rank = _hilbert_order(extract, chains)
     chains = reorder(chains, np.lexsort((rank[chains.end], rank[chains.start])))
     runs = edge_runs(turns.runs, chains)
-    graph, parts = _graph(extract, traits, segments, chains, nodes, rank, runs, settings)
+    graph, parts = _graph(extract, traits, segments, chains, nodes, rank, runs, rules, settings)
     table = quality(extract, traits, rules, segments, losses, graph, parts, turns, calendar)
     return graph, table, lines_by_class(extract, traits, rules, segments, chains)
 
@@ -111,13 +113,15 @@ def _graph(
     nodes: Int64,
     rank: Int32,
     runs: list[Run],
+    rules: RoadRules,
     settings: RoadsSettings,
 ) -> tuple[RoadGraph, int]:
     """The graph, and how many parts of it join no main network."""
     start, end = rank[chains.start], rank[chains.end]
     way = segments.way[chains.segment[chains.first[:-1]]]
     is_ferry, is_limited = traits.is_ferry[way], traits.is_limited[way]
-    forward, backward = _costs(segments, chains, is_ferry, settings)
+    turn_s = _turn_delays(extract, traits, segments, chains, is_ferry, rules)
+    forward, backward = _costs(segments, chains, is_ferry, turn_s, settings)
     number = np.arange(len(start), dtype=np.int32)
     is_open = np.concatenate([forward != CLOSED, backward != CLOSED])
     tail = np.concatenate([start, end])[is_open]
@@ -144,6 +148,7 @@ def _graph(
         edge_toll_m=_flagged_m(traits.is_toll, segments, chains),
         edge_unpaved_m=_flagged_m(traits.is_unpaved & ~traits.is_ferry, segments, chains),
         edge_detached_km=island_km,
+        **_delays_of_edges(segments, chains, turn_s),
         **_geometry(extract, traits, segments, chains),
         **_named("arc", arcs),
         **_named("in", arcs_in),
@@ -176,7 +181,11 @@ def _named(prefix: str, arcs: tuple[Int64, Int32, Int64, Int32]) -> dict[str, np
 
 
 def _costs(
-    segments: Segments, chains: Chains, is_ferry: Bool, settings: RoadsSettings
+    segments: Segments,
+    chains: Chains,
+    is_ferry: Bool,
+    turn_s: tuple[Float64, Float64],
+    settings: RoadsSettings,
 ) -> tuple[Int64, Int64]:
     """Packed costs of each edge forward and backward.
 
@@ -190,10 +199,50 @@ def _costs(
     on_land[chains.end[~is_ferry]] = True
     wait_s = settings.ferry_wait_min * 60
     costs = []
-    for time_s, tail in zip(times, (chains.start, chains.end), strict=True):
-        time = np.add.reduceat(time_s, chains.first[:-1])
+    delays = _directed(segments.forward_delay_s, segments.backward_delay_s, chains)
+    tails = (chains.start, chains.end)
+    for time_s, delay_s, turn, tail in zip(times, delays, turn_s, tails, strict=True):
+        time = np.add.reduceat(time_s + delay_s, chains.first[:-1]) + turn
         costs.append(pack(time + np.where(is_ferry & on_land[tail], wait_s, 0), length))
     return costs[0], costs[1]
+
+
+def _turn_delays(
+    extract: RoadExtract,
+    traits: WayTraits,
+    segments: Segments,
+    chains: Chains,
+    is_ferry: Bool,
+    rules: RoadRules,
+) -> tuple[Float64, Float64]:
+    """Delay of turning off into each edge at its start, and at its end."""
+    tail = np.where(chains.against, segments.b[chains.segment], segments.a[chains.segment])
+    head = np.where(chains.against, segments.a[chains.segment], segments.b[chains.segment])
+    first, last = chains.first[:-1], chains.first[1:] - 1
+    here, there = (
+        np.concatenate([tail[first], head[last]]),
+        np.concatenate([head[first], tail[last]]),
+    )
+    bearing = WGS84.inv(*extract.degrees(here), *extract.degrees(there))[0]
+    rank = traits.class_code[segments.way[chains.segment[np.concatenate([first, last])]]]
+    is_road = np.concatenate([~is_ferry, ~is_ferry])
+    sharp_deg = rules.delays_s["sharp_deg"]
+    off = turns_off(here.astype(np.int64), np.asarray(bearing), rank, is_road, sharp_deg)
+    seconds = np.where(off, rules.delays_s["smaller_road"], 0.0)
+    return seconds[: len(first)], seconds[len(first) :]
+
+
+def _delays_of_edges(
+    segments: Segments, chains: Chains, turn_s: tuple[Float64, Float64]
+) -> dict[str, npt.NDArray[Any]]:
+    """Delays of the directed edges, forward and backward by turns."""
+    delays = _directed(segments.forward_delay_s, segments.backward_delay_s, chains)
+    sums = [np.add.reduceat(delay, chains.first[:-1]) for delay in delays]
+    both = [one + turn for one, turn in zip(sums, turn_s, strict=True)]
+    return {
+        "edge_turn_s": np.column_stack(turn_s).ravel().astype(np.float32),
+        "edge_delay_s": np.column_stack(both).ravel().astype(np.float32),
+    }
 
 
 def _directed(ab: Float64, ba: Float64, chains: Chains) -> tuple[Float64, Float64]:
@@ -233,6 +282,7 @@ def _geometry(
 
     way = segments.way[chains.segment]
     kmh = _directed(*_speeds(segments), chains)
+    delay = _directed(segments.forward_delay_s, segments.backward_delay_s, chains)
     flags = flag_bits(traits.is_toll[way], traits.is_unpaved[way])
     return {
         "edge_first": edge_first,
@@ -240,6 +290,8 @@ def _geometry(
         "vertex_lat_e7": extract.node_lat_e7[vertex],
         "vertex_forward_kmh": on_stretches(kmh[0].astype(np.float32)),
         "vertex_backward_kmh": on_stretches(kmh[1].astype(np.float32)),
+        "vertex_forward_delay_s": on_stretches(delay[0].astype(np.float32)),
+        "vertex_backward_delay_s": on_stretches(delay[1].astype(np.float32)),
         "vertex_flags": on_stretches(flags),
     }
 

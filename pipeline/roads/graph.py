@@ -43,12 +43,17 @@ class RoadGraph:
     edge_forward_cost, edge_backward_cost : (e,) packed time and distance; -1: closed.
     edge_is_ferry : (e,) whether it is a ferry.
     edge_toll_m, edge_unpaved_m : (e,) how much of its length.
+    edge_turn_s : (2e,) delay of turning off into each directed edge (twice the edge's number,
+        plus one backwards).
+    edge_delay_s : (2e,) all delays on each directed edge, of its time.
     edge_detached_km : (e,) all roads of the part that joins no main network at all (an
         island); 0 for edges of any other part.
     edge_first : (e + 1,) vertices ``edge_first[i]:edge_first[i + 1]`` are the edge's geometry.
     vertex_lon_e7, vertex_lat_e7 : (v,) geometry.
     vertex_forward_kmh, vertex_backward_kmh : (v,) speed on the stretch from this vertex to the
         next one of the edge; 0: closed (and on the last vertex).
+    vertex_forward_delay_s, vertex_backward_delay_s : (v,) delay at the far end of that stretch,
+        driven forward, and backward.
     vertex_flags : (v,) of that stretch: 1 toll, 2 unpaved.
     arc_first, arc_node, arc_cost, arc_edge : arcs by the node that they leave:
         ``arc_first[i]:arc_first[i + 1]``, with the node they enter, packed cost, and twice
@@ -75,12 +80,16 @@ class RoadGraph:
     edge_is_ferry: Bool
     edge_toll_m: Float32
     edge_unpaved_m: Float32
+    edge_turn_s: Float32
+    edge_delay_s: Float32
     edge_detached_km: Float32
     edge_first: Int64
     vertex_lon_e7: Int32
     vertex_lat_e7: Int32
     vertex_forward_kmh: Float32
     vertex_backward_kmh: Float32
+    vertex_forward_delay_s: Float32
+    vertex_backward_delay_s: Float32
     vertex_flags: Uint8
     arc_first: Int64
     arc_node: Int32

@@ -51,6 +51,7 @@ class Places:
     edge : edge that each place is on; -1: the point is tied to no road.
     to_start, to_end, from_start, from_end : packed costs between the place and the ends of its
         edge; -1 where that direction is closed.
+    to_start_delay_s, to_end_delay_s, from_start_delay_s, from_end_delay_s : delays in those costs.
     start_toll_m, end_toll_m, start_unpaved_m, end_unpaved_m : on either side of the place.
     nearest : where the place is.
     """
@@ -60,6 +61,10 @@ class Places:
     to_end: Int64
     from_start: Int64
     from_end: Int64
+    to_start_delay_s: Float64
+    to_end_delay_s: Float64
+    from_start_delay_s: Float64
+    from_end_delay_s: Float64
     start_toll_m: Float64
     end_toll_m: Float64
     start_unpaved_m: Float64
@@ -224,15 +229,16 @@ def split_edges(graph: RoadGraph, nearest: Nearest, usable: Bool) -> Places:
     at = np.flatnonzero(edge >= 0)
     sides = _sides(graph, edge[at], nearest.vertex[at], nearest.share[at])
     (start_m, start_along, start_back, start_toll, start_unpaved), end = sides
+    delays = _side_delays(graph, edge[at], nearest.vertex[at])
     end_m, end_along, end_back, end_toll, end_unpaved = end
     forward_open = graph.edge_forward_cost[edge[at]] != CLOSED
     backward_open = graph.edge_backward_cost[edge[at]] != CLOSED
 
-    def cost(time_s: Float64, length_m: Float64, is_open: Bool) -> Int64:
+    def cost(drive_s: Float64, delay_s: Float64, length_m: Float64, is_open: Bool) -> Int64:
         result = np.full(len(edge), CLOSED, dtype=np.int64)
         # Who stands at a junction can take any road there, not just the one tied to.
         is_there = length_m < HERE_M
-        time_s = np.where(is_there, 0, np.where(is_open, time_s, np.nan))
+        time_s = np.where(is_there, 0, np.where(is_open, drive_s + delay_s, np.nan))
         result[at] = pack(time_s, np.where(is_there, 0, length_m))
         return result
 
@@ -243,10 +249,14 @@ def split_edges(graph: RoadGraph, nearest: Nearest, usable: Bool) -> Places:
 
     return Places(
         edge=edge,
-        to_start=cost(start_back, start_m, backward_open),
-        to_end=cost(end_along, end_m, forward_open),
-        from_start=cost(start_along, start_m, forward_open),
-        from_end=cost(end_back, end_m, backward_open),
+        to_start=cost(start_back, delays[0], start_m, backward_open),
+        to_end=cost(end_along, delays[1], end_m, forward_open),
+        from_start=cost(start_along, delays[2], start_m, forward_open),
+        from_end=cost(end_back, delays[3], end_m, backward_open),
+        to_start_delay_s=spread(np.where(start_m < HERE_M, 0, delays[0])),
+        to_end_delay_s=spread(np.where(end_m < HERE_M, 0, delays[1])),
+        from_start_delay_s=spread(np.where(start_m < HERE_M, 0, delays[2])),
+        from_end_delay_s=spread(np.where(end_m < HERE_M, 0, delays[3])),
         start_toll_m=spread(start_toll),
         end_toll_m=spread(end_toll),
         start_unpaved_m=spread(start_unpaved),
@@ -282,6 +292,29 @@ def _sides(
     return (
         [np.add.reduceat(value * before, starts) for value in values],
         [np.add.reduceat(value * (1 - before), starts) for value in values],
+    )
+
+
+def _side_delays(graph: RoadGraph, edge: Int64, vertex: Int64) -> tuple[Float64, ...]:
+    """Delays from each place to the start and the end of its edge, and from these to it.
+
+    The delay of a stretch waits at its far end: who stops on the stretch does not pay it.
+    """
+    if not len(edge):
+        return (np.zeros(0),) * 4
+    counts = (np.diff(graph.edge_first)[edge] - 1).astype(np.int64)
+    v = ranges(graph.edge_first[:-1][edge].astype(np.int64), counts)
+    here, starts = np.repeat(vertex, counts), offsets(counts)[:-1]
+    forward, backward = graph.vertex_forward_delay_s[v], graph.vertex_backward_delay_s[v]
+
+    def total(delay_s: Float32, paid: Bool) -> Float64:
+        return np.asarray(np.add.reduceat(delay_s * paid.astype(np.float64), starts))
+
+    return (
+        total(backward, v <= here),
+        total(forward, v >= here),
+        total(forward, v < here) + graph.edge_turn_s[2 * edge],
+        total(backward, v > here) + graph.edge_turn_s[2 * edge + 1],
     )
 
 

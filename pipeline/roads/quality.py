@@ -12,7 +12,7 @@ from pipeline.roads.arrays import Bool, Float64, Int64
 from pipeline.roads.conditions import Calendar
 from pipeline.roads.contract import Chains
 from pipeline.roads.extract import RoadExtract
-from pipeline.roads.graph import RoadGraph, unpack_distance_km
+from pipeline.roads.graph import RoadGraph, unpack_distance_km, unpack_time_min
 from pipeline.roads.lines import line_strings
 from pipeline.roads.restrictions import Restrictions
 from pipeline.roads.rules import FERRY, RoadRules, WayTraits
@@ -102,6 +102,12 @@ def _whole(
             "km",
             "by surface, or by class where none is tagged",
         ),
+        (
+            "share of the time that is delay",
+            _delay_share(graph),
+            "share",
+            "every road driven once in each open direction; that of a route is its delay_min",
+        ),
         ("junctions", graph.nodes, "junctions", "nodes of the graph"),
         ("edges", graph.edges, "edges", "stretches between junctions"),
         ("arcs", graph.arcs, "arcs", "directed; of parallel ones the best, loops left out"),
@@ -140,6 +146,14 @@ def km_of_edges(graph: RoadGraph) -> Float64:
     """Length of each edge, km."""
     cost = np.where(graph.edge_forward_cost >= 0, graph.edge_forward_cost, graph.edge_backward_cost)
     return unpack_distance_km(cost)
+
+
+def _delay_share(graph: RoadGraph) -> float:
+    """Delays as a share of the time of all open directions of the roads."""
+    costs = np.column_stack([graph.edge_forward_cost, graph.edge_backward_cost])
+    is_open = (costs >= 0) & ~graph.edge_is_ferry[:, np.newaxis]
+    delay_s = float(graph.edge_delay_s.reshape(-1, 2)[is_open].sum())
+    return delay_s / max(60 * float(unpack_time_min(costs[is_open]).sum()), 0.01)
 
 
 def _one_way_km(segments: Segments, road: Bool) -> float:

@@ -35,8 +35,10 @@ class RoadRules:
     ----------
     classes : road classes in order; a class's code is its position; ferries come last.
     class_kmh, class_oneway, class_unpaved : defaults of each class, in that order.
-    access, barriers, turns, oneway, speed, unpaved_kmh, smoothness_kmh, tracktype_kmh, ferry :
-        sections of the table, as they stand there.
+    access, barriers, turns, oneway, speed, unpaved_kmh, smoothness_kmh, tracktype_kmh : sections
+        of the table, as they stand there.
+    ferry : likewise.
+    delays_s : delays with what the study replaces, times its calibration factor.
     """
 
     classes: tuple[str, ...]
@@ -51,6 +53,7 @@ class RoadRules:
     unpaved_kmh: dict[str, float]
     smoothness_kmh: dict[str, float]
     tracktype_kmh: dict[str, float]
+    delays_s: dict[str, float]
     ferry: dict[str, float]
 
 
@@ -116,8 +119,19 @@ def load_rules(settings: RoadsSettings, file: Path = RULES_FILE) -> RoadRules:
         unpaved_kmh=table["unpaved_kmh"],
         smoothness_kmh=table["smoothness_kmh"],
         tracktype_kmh=table["tracktype_kmh"],
+        delays_s=_delays(table["delays_s"], settings),
         ferry=table["ferry"],
     )
+
+
+def _delays(table: dict[str, float], settings: RoadsSettings) -> dict[str, float]:
+    """Delays with what the study replaces in them, times its calibration."""
+    strange = sorted(set(settings.delay_s) - set(table))
+    if strange:
+        raise StudyError(f"roads.delay_s: {strange[0]!r} is no delay; known: {', '.join(table)}.")
+    factor = settings.calibration_factor
+    delays = table | settings.delay_s
+    return {name: s if name == "sharp_deg" else s * factor for name, s in delays.items()}
 
 
 def way_traits(
@@ -143,8 +157,8 @@ def way_traits(
         closed=closed & has_class,
         forward=is_open & (direction >= 0) & (direction != CLOSED),
         backward=is_open & (direction <= 0),
-        forward_kmh=forward_kmh * settings.speed_factor,
-        backward_kmh=backward_kmh * settings.speed_factor,
+        forward_kmh=forward_kmh * settings.speed_factor / settings.calibration_factor,
+        backward_kmh=backward_kmh * settings.speed_factor / settings.calibration_factor,
         limit_tagged=tags["maxspeed"].notna().to_numpy(),
         limit_unreadable=unreadable,
         is_limited=is_open & ((access == ENDS) | _last_stretch(class_code, rules, settings)),

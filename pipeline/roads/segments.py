@@ -9,6 +9,7 @@ from pyproj import Geod
 
 from pipeline.road_settings import RoadsSettings
 from pipeline.roads.arrays import Bool, Float64, Int32, Int64
+from pipeline.roads.delays import node_delays_s
 from pipeline.roads.extract import RoadExtract
 from pipeline.roads.rules import RoadRules, WayTraits
 
@@ -24,7 +25,8 @@ class Segments:
     a, b : nodes of the extract at its ends, in the order of the way.
     way : way of the extract that it belongs to.
     length_m : geodesic length.
-    forward_s, backward_s : time from a to b and from b to a; NaN where that way is closed.
+    forward_s, backward_s : driving time from a to b and from b to a; NaN where that way is closed.
+    forward_delay_s, backward_delay_s : delay on coming to b from a, and to a from b.
     """
 
     a: Int32
@@ -33,6 +35,8 @@ class Segments:
     length_m: Float64
     forward_s: Float64
     backward_s: Float64
+    forward_delay_s: Float64
+    backward_delay_s: Float64
 
     @property
     def count(self) -> int:
@@ -65,6 +69,8 @@ def segments_of(
     forward_kmh, backward_kmh, fallbacks = _with_ferries(
         traits, way, length_m, cut, rules, settings
     )
+    along_s, against_s = node_delays_s(extract, rules.delays_s)
+    is_road = ~traits.is_ferry[way]
     segments = Segments(
         a=a,
         b=b,
@@ -72,6 +78,8 @@ def segments_of(
         length_m=length_m,
         forward_s=_seconds(length_m, forward_kmh[way], traits.forward[way]),
         backward_s=_seconds(length_m, backward_kmh[way], traits.backward[way]),
+        forward_delay_s=along_s[b] * is_road,
+        backward_delay_s=against_s[a] * is_road,
     )
     return segments, Losses(len(cut), int((~located).sum()), fallbacks)
 

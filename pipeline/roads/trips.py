@@ -26,7 +26,8 @@ class Trips:
     shortest : the same of the shortest distance there, in millimetres.
     leave : how the route there leaves the zone's place: by the end of its edge (0), by the
         start (1), or along the edge to an access point on the same edge (2).
-    along : (z, 4) of the route there: ferry km, ferry minutes, toll km, unpaved km.
+    along : (z, 5) of the route there: ferry km, ferry minutes, toll km, unpaved km, minutes of
+        delay.
     tree : the search behind `there`.
     seed_end : of each seed of the tree the end of the access point's edge: 0 start, 1 end.
     """
@@ -169,17 +170,23 @@ def _along(
     seed_end: Int64,
     leave: Int64,
 ) -> Float64:
-    """Ferry km, ferry minutes, toll km and unpaved km of each route there."""
-    along = np.full((len(leave), 4), np.nan)
+    """Ferry km, ferry minutes, toll km, unpaved km and delay of each route there."""
+    along = np.full((len(leave), 5), np.nan)
     seed_m = np.array(
         [
-            [doors.start_toll_m[door], doors.start_unpaved_m[door]],
-            [doors.end_toll_m[door], doors.end_unpaved_m[door]],
+            [doors.start_toll_m[door], doors.start_unpaved_m[door], doors.from_start_delay_s[door]],
+            [doors.end_toll_m[door], doors.end_unpaved_m[door], doors.from_end_delay_s[door]],
         ]
     )[seed_end]
-    for option, spent, toll_m, unpaved_m in (
-        (BY_END, homes.to_end, homes.end_toll_m, homes.end_unpaved_m),
-        (BY_START, homes.to_start, homes.start_toll_m, homes.start_unpaved_m),
+    for option, spent, toll_m, unpaved_m, delay_s in (
+        (BY_END, homes.to_end, homes.end_toll_m, homes.end_unpaved_m, homes.to_end_delay_s),
+        (
+            BY_START,
+            homes.to_start,
+            homes.start_toll_m,
+            homes.start_unpaved_m,
+            homes.to_start_delay_s,
+        ),
     ):
         at = np.flatnonzero(leave == option)
         node = left_to(graph, homes.edge[at], spent[at] == 0, by_end=option == BY_END)
@@ -191,12 +198,18 @@ def _along(
             graph.edge_is_ferry,
             graph.edge_toll_m,
             graph.edge_unpaved_m,
+            graph.edge_delay_s,
             seed_m,
         )
         along[at, 2] += toll_m[at] / 1000
         along[at, 3] += unpaved_m[at] / 1000
+        along[at, 4] += delay_s[at] / 60
     at = np.flatnonzero(leave == DIRECT)
     along[at, :2] = 0
     along[at, 2] = np.abs(doors.start_toll_m[door] - homes.start_toll_m[at]) / 1000
     along[at, 3] = np.abs(doors.start_unpaved_m[door] - homes.start_unpaved_m[at]) / 1000
+    ahead = _position(doors)[door] >= _position(homes)[at]
+    forward = doors.from_start_delay_s[door] - homes.from_start_delay_s[at]
+    backward = homes.to_start_delay_s[at] - doors.to_start_delay_s[door]
+    along[at, 4] = np.maximum(np.where(ahead, forward, backward), 0) / 60
     return along
