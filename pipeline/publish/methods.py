@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+from pipeline.cost_settings import CostsSettings
 from pipeline.publish.markup import Html, tag
 from pipeline.publish.results import Results
 from pipeline.publish.words import count, level, model_words, number, percent, words_of
@@ -95,12 +96,28 @@ def _price(results: Results) -> str:
     costs, money = results.study.costs, results.currency
     people = costs.party_size
     party = "the records' mean party" if people == "records" else f"{people:g} people"
+    shared = {
+        "everyone": f"shared by {party}",
+        "adults": f"borne by the adults of {party}",
+        "nobody": "not shared",
+    }[costs.shared_by]
+    wage = f"household income over {costs.hours_per_year:,.0f} hours"
+    if costs.hourly_wage is not None:
+        wage = f"{money} {costs.hourly_wage:g}"
     return (
-        f"The round trip is priced per person: {money} {costs.vehicle_cost_per_km:g} per km and "
-        f"what tolls and ferries cost, shared by {party}, and {percent(costs.wage_fraction)} of "
-        f"the hourly wage for each hour, the wage being household income over "
-        f"{costs.hours_per_year:,.0f} hours; entrance fees and other costs are added."
+        f"The round trip is priced per person: {_driving(costs, money)} and what tolls and "
+        f"ferries cost, {shared}, and {percent(costs.wage_fraction)} of the hourly wage for each "
+        f"hour, the wage being {wage}; entrance fees and other costs are added."
     )
+
+
+def _driving(costs: CostsSettings, money: str) -> str:
+    """The price of driving, in whichever way the study gives it."""
+    if costs.vehicle_cost_per_km is not None:
+        return f"{money} {costs.vehicle_cost_per_km:g} per km"
+    if costs.vehicle_cost_per_mile is not None:
+        return f"{money} {costs.vehicle_cost_per_mile:g} per mile"
+    return f"what a km costs by class of vehicle ({', '.join(costs.vehicles)})"
 
 
 def _market(results: Results) -> str:
