@@ -2,18 +2,6 @@
 
 The flow, one way, each stage a pure function from tables to tables:
 
-stage      module                            writes
-=========  ================================  =================================================
-geocode    ``origins``                       ``origins``, ``origin_summary``
-roads      ``roads``                         road graph, ``road_quality``, ``road_lines``
-route      ``routes`` (``search``)           ``routes``, ``route_lines``
-cost       ``costs``                         ``costs``, ``reported_check``
-join       ``finished``                      ``zone_table``, ``trip_table``
-demand     ``demand``                        ``estimates``, ``fit``, ``diagnostics``
-surplus    ``surplus``                       ``surplus``, ``fee_schedule``, ``zone_surplus``
-publish    ``publish``                       GeoPackage, GeoJSON, Parquet, CSV, report, run.json
-=========  ================================  =================================================
-=======
 ===========  ================================  =================================================
 stage        module                            writes
 ===========  ================================  =================================================
@@ -21,7 +9,7 @@ geocode      ``origins``                       ``origins``, ``origin_summary``
 roads        ``roads``                         road graph, ``road_quality``, ``road_lines``
 route        ``routes`` (``search``)           ``routes``, ``route_lines``
 cost         ``costs``                         ``costs``, ``reported_check``
-join         ``finished``                      ``zone_table``
+join         ``finished``                      ``zone_table``, ``trip_table``
 demand       ``demand``                        ``estimates``, ``fit``, ``diagnostics``
 surplus      ``surplus``                       ``surplus``, ``fee_schedule``, ``zone_surplus``
 sensitivity  ``sensitivity`` (``variants``)    ``sensitivity``
