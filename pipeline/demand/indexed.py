@@ -59,12 +59,12 @@ class IndexedFamily(LikelihoodFamily):
         """Value, gradient and Hessian from one pass over the rows."""
         local = self.at(theta, rows)
         gradient = np.concatenate(
-            [m.T @ (rows.weight * local.first[:, j]) for j, m in enumerate(self._matrices(rows))]
+            [m.T @ (rows.weight * local.first[j]) for j, m in enumerate(self._matrices(rows))]
         )
         return float(rows.weight @ local.value), gradient, self._hessian(local, rows)
 
     def _scores(self, local: Local, rows: Rows) -> FloatArray:
-        parts = [local.first[:, [j]] * m for j, m in enumerate(self._matrices(rows))]
+        parts = [local.first[j][:, None] * m for j, m in enumerate(self._matrices(rows))]
         return np.concatenate(parts, axis=1)
 
     def _hessian(self, local: Local, rows: Rows) -> FloatArray:
@@ -72,7 +72,7 @@ class IndexedFamily(LikelihoodFamily):
         return np.block(
             [
                 [
-                    (one.T * (rows.weight * local.second[:, i, j])) @ other
+                    (one.T * (rows.weight * local.second[i, j])) @ other
                     for j, other in enumerate(matrices)
                 ]
                 for i, one in enumerate(matrices)
@@ -81,14 +81,14 @@ class IndexedFamily(LikelihoodFamily):
 
     def information(self, theta: FloatArray, rows: Rows) -> FloatArray:
         """Observed information about η, never below zero."""
-        return np.maximum(-self.at(theta, rows).second[:, 0, 0], 0)
+        return np.maximum(-self.at(theta, rows).second[0, 0], 0)
 
     def leverage(self, theta: FloatArray, rows: Rows) -> FloatArray:
         """Pull on the count, and on the part about zeros where there is one."""
         second = self.at(theta, rows).second
         found = np.zeros(len(rows.counts))
         for j, matrix in enumerate(self._matrices(rows)[: 2 if self.has_zero_part else 1]):
-            found += leverages(matrix, rows.weight * np.maximum(-second[:, j, j], 0))
+            found += leverages(matrix, rows.weight * np.maximum(-second[j, j], 0))
         return found
 
     def natural(self, theta: FloatArray, size: int) -> tuple[FloatArray, FloatArray]:

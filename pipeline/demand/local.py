@@ -18,7 +18,7 @@ from pipeline.demand.sample import BoolArray, FloatArray
 
 @dataclass(frozen=True)
 class Local:
-    """A function of q indices at n rows: value (n,), first (n, q), second (n, q, q)."""
+    """A function of q indices at n rows: value (n,), first (q, n), second (q, q, n)."""
 
     value: FloatArray
     first: FloatArray
@@ -35,19 +35,15 @@ class Local:
 
     def through(self, value: FloatArray, slope: FloatArray, bend: FloatArray) -> Local:
         """f(self), given f, f' and f'' at self's value."""
-        outer = self.first[:, :, None] * self.first[:, None, :]
-        return Local(
-            value,
-            slope[:, None] * self.first,
-            slope[:, None, None] * self.second + bend[:, None, None] * outer,
-        )
+        outer = (bend * self.first)[:, None] * self.first[None]
+        return Local(value, slope * self.first, slope * self.second + outer)
 
     def at(self, places: tuple[int, ...], size: int) -> Local:
         """The same function where its indices are some of `size`."""
-        first = np.zeros((len(self.value), size))
-        second = np.zeros((len(self.value), size, size))
-        first[:, places] = self.first
-        second[np.ix_(range(len(self.value)), places, places)] = self.second
+        first = np.zeros((size, len(self.value)))
+        second = np.zeros((size, size, len(self.value)))
+        first[list(places)] = self.first
+        second[np.ix_(places, places)] = self.second
         return Local(self.value, first, second)
 
 
@@ -55,15 +51,15 @@ def where(mask: BoolArray, one: Local, other: Local) -> Local:
     """Rows of `one` where the mask holds, of `other` elsewhere."""
     return Local(
         np.where(mask, one.value, other.value),
-        np.where(mask[:, None], one.first, other.first),
-        np.where(mask[:, None, None], one.second, other.second),
+        np.where(mask, one.first, other.first),
+        np.where(mask, one.second, other.second),
     )
 
 
 def identity(values: FloatArray) -> Local:
     """An index itself."""
     size = len(values)
-    return Local(values, np.ones((size, 1)), np.zeros((size, 1, 1)))
+    return Local(values, np.ones((1, size)), np.zeros((1, 1, size)))
 
 
 def softplus(x: Local) -> Local:
@@ -83,8 +79,8 @@ def poisson(counts: FloatArray, eta: FloatArray) -> Local:
     mean = np.exp(eta)
     return Local(
         counts * eta - mean - gammaln(counts + 1),
-        (counts - mean)[:, None],
-        -mean[:, None, None],
+        (counts - mean)[None],
+        -mean[None, None],
     )
 
 
@@ -99,11 +95,11 @@ def negative_binomial(counts: FloatArray, eta: FloatArray, log_alpha: float) -> 
     in_size = psi - np.log1p(mean / size) + (mean - counts) / total
     size_size = bend + 1 / size - 1 / total - (mean - counts) / total**2
     value = of_count - gammaln(counts + 1) + counts * eta - (counts + size) * np.log1p(mean / size)
-    second = np.empty((len(counts), 2, 2))
-    second[:, 0, 0] = -size * mean * (size + counts) / total**2
-    second[:, 0, 1] = second[:, 1, 0] = -size * (counts - mean) * mean / total**2
-    second[:, 1, 1] = size**2 * size_size + size * in_size
-    first = np.column_stack([size * (counts - mean) / total, -size * in_size])
+    second = np.empty((2, 2, len(counts)))
+    second[0, 0] = -size * mean * (size + counts) / total**2
+    second[0, 1] = second[1, 0] = -size * (counts - mean) * mean / total**2
+    second[1, 1] = size**2 * size_size + size * in_size
+    first = np.stack([size * (counts - mean) / total, -size * in_size])
     return Local(value, first, second)
 
 
@@ -121,9 +117,9 @@ def negative_binomial_1(counts: FloatArray, eta: FloatArray, log_delta: float) -
         + counts * log_delta
         - (counts + size) * np.log1p(delta)
     )
-    second = np.empty((len(counts), 2, 2))
-    second[:, 0, 0] = both
-    second[:, 0, 1] = second[:, 1, 0] = -both - size * share
-    second[:, 1, 1] = both + 2 * size * share - (counts + size) * share * (1 - share)
-    first = np.column_stack([size * in_size, -size * in_size + counts - (counts + size) * share])
+    second = np.empty((2, 2, len(counts)))
+    second[0, 0] = both
+    second[0, 1] = second[1, 0] = -both - size * share
+    second[1, 1] = both + 2 * size * share - (counts + size) * share * (1 - share)
+    first = np.stack([size * in_size, -size * in_size + counts - (counts + size) * share])
     return Local(value, first, second)

@@ -23,7 +23,7 @@ from pipeline.demand.counts import (
 )
 from pipeline.demand.curves import price_column
 from pipeline.demand.family import ALPHA, FittedModel
-from pipeline.demand.indexed import IndexedFamily, with_dispersion
+from pipeline.demand.indexed import IndexedFamily
 from pipeline.demand.likelihood import LikelihoodFamily, Rows, climb
 from pipeline.demand.local import Local
 from pipeline.demand.maximum import Maximum
@@ -151,9 +151,8 @@ class ZeroInflatedNegativeBinomial(ZeroInflatedPoisson):
         return without_overdispersion(simple, self.name, label, "alpha", ALPHA)
 
     def start(self, rows: Rows) -> FloatArray:
-        """The better of two: the zero-inflated Poisson's maximum, and the NB2's."""
-        simple = climb(ZeroInflatedPoisson(), rows)
-        one = with_dispersion(self, simple.theta, simple.value, 1.0, rows)
+        """The better of two: counts from the rows with visits alone, and the NB2's maximum."""
+        one = np.append(super().start(rows), 0.0)
         plain = climb(NegativeBinomial(), rows).theta
         share = np.zeros(rows.zero.shape[1])
         share[0] = logit(0.1)
