@@ -81,7 +81,7 @@ class IndexedFamily(LikelihoodFamily):
 
     def information(self, theta: FloatArray, rows: Rows) -> FloatArray:
         """Observed information about η, never below zero."""
-        return np.maximum(-self.at(theta, rows).second[0, 0], 0)
+        return np.asarray(np.maximum(-self.at(theta, rows).second[0, 0], 0), dtype=float)
 
     def leverage(self, theta: FloatArray, rows: Rows) -> FloatArray:
         """Pull on the count, and on the part about zeros where there is one."""

@@ -133,7 +133,7 @@ def test_physician_visits(
 
 
 def test_physician_visits_coefficients(physicians: Sample, record_check: RecordCheck) -> None:
-    """To three digits: constant, school, hospital, poor, excellent, chronic, male, insured."""
+    """Constant, school, hospital, poor, excellent, chronic, male, insured; to three digits."""
     printed = {
         POISSON: [1.029, 0.026, 0.165, 0.248, -0.362, 0.147, -0.112, 0.202],
         NB2: [0.929, 0.027, 0.218, 0.305, -0.342, 0.175, -0.126, 0.224],
