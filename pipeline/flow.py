@@ -214,7 +214,7 @@ FLOW: tuple[Stage, ...] = (
         surplus,
         reads=(Estimates, Fit, FINISHED),
         writes=(Surplus, FeeSchedule, ZoneSurplus),
-        sections=(DemandSettings, SurplusSettings),
+        sections=(DemandSettings, SurplusSettings, ComputeSettings),
         summarise=summarise_surplus,
     ),
     Stage(
@@ -263,6 +263,7 @@ FLOW: tuple[Stage, ...] = (
             FeeSchedule,
             ZoneSurplus,
             Sensitivity,
+            Maybe(Diagnostics),
         ),
         writes=(Publication,),
         sections=(*SECTIONS[1:], ScenarioSettings),

@@ -130,6 +130,7 @@ def publish(
     fee_schedule: pd.DataFrame,
     zone_surplus: pd.DataFrame,
     sensitivity: pd.DataFrame,
+    diagnostics: pd.DataFrame | None = None,
     *,
     study: Study,
 ) -> tuple[Publication]:
@@ -138,7 +139,7 @@ def publish(
     Parameters
     ----------
     provenance : what the run was made from.
-    origin_summary, ..., sensitivity : the tables of the flow; those that the study neither
+    origin_summary, ..., diagnostics : the tables of the flow; those that the study neither
         built nor brought are None, and the report says what is missing for it.
 
     Raises
@@ -174,6 +175,7 @@ def publish(
         fee_schedule=fee_schedule,
         zone_surplus=zone_surplus if shown is None else hide_zone_surplus(zone_surplus, shown),
         sensitivity=coarse(sensitivity) if below else sensitivity,
+        diagnostics=diagnostics,
         curves=fitted_curves(zone_table, trip_table, estimates, fit, study=study),
         fees=fee_curves(zone_table, trip_table, estimates, fit, fee_schedule, study=study),
         headlines=headlines(fit, surplus, finished, sites),

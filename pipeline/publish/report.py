@@ -19,6 +19,7 @@ from pipeline.publish.mapview import BaseMap, base_map
 from pipeline.publish.markup import Html, join, tag
 from pipeline.publish.methods import methods, sources
 from pipeline.publish.pagedata import data_block
+from pipeline.publish.referee import referee_report
 from pipeline.publish.reported import reported_table
 from pipeline.publish.results import Headline, Results
 
@@ -106,6 +107,7 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Ht
         _section("lost", "What was lost on the way", _LOST, *losses(results)),
         *_reported(results),
         _section("models", "Models tried", _MODELS, each(models_tried)),
+        *_referee(results, each),
         _section("roads", "The road data", _ROADS, roads) if roads else Html(""),
         _section("methods", "How it was worked out", _METHODS, *methods(results)),
         _section("care", "Cautions", "Read these before quoting a figure.", cautions()),
@@ -130,6 +132,19 @@ def _reported(results: Results) -> list[Html]:
 _REPORTED = (
     "What visitors say of their way, against the way that was routed for them. A bias that grows "
     "with distance speaks of the roads' speeds, or of trips with other stops."
+)
+
+
+def _referee(results: Results, each: Callable[..., Html]) -> list[Html]:
+    """The section for a referee, where the demand stage made diagnostics."""
+    if results.diagnostics is None:
+        return []
+    return [_section("referee", "For a referee", _REFEREE, each(referee_report))]
+
+
+_REFEREE = (
+    "Tests, residuals and rows left out; the zones that move the answer most; and the answer by "
+    "every model and kind of interval."
 )
 _EFFECTS = (
     "The same data under other assumptions, the strongest first. A bar that leaves the shaded "

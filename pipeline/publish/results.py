@@ -76,6 +76,7 @@ class Results:
     curves: dict[str, Curve]
     fees: dict[str, FeeCurve]
     headlines: tuple[Headline, ...]
+    diagnostics: pd.DataFrame | None = None
 
     @property
     def currency(self) -> str:

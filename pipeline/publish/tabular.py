@@ -10,6 +10,7 @@ import pandas as pd
 from pipeline.publish.privacy import HIDDEN_COLUMNS, REASON
 from pipeline.tables import (
     Costs,
+    Diagnostics,
     Estimates,
     FeeSchedule,
     Fit,
@@ -37,6 +38,7 @@ PUBLISHED = (
     ZoneTable,
     Estimates,
     Fit,
+    Diagnostics,
     Surplus,
     FeeSchedule,
     ZoneSurplus,

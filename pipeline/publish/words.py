@@ -11,6 +11,16 @@ MODEL_WORDS = {
     "negative_binomial": "negative binomial (NB2)",
     "log_linear": "log-linear least squares",
     "linear": "linear least squares",
+    "negative_binomial_1": "negative binomial (NB1)",
+    "quasi_poisson": "quasi-Poisson",
+    "zero_inflated_poisson": "zero-inflated Poisson",
+    "zero_inflated_negative_binomial": "zero-inflated negative binomial",
+    "truncated_poisson": "zero-truncated Poisson",
+    "truncated_negative_binomial": "zero-truncated negative binomial",
+    "on_site_poisson": "on-site Poisson",
+    "on_site_negative_binomial": "on-site negative binomial",
+    "weighted_log_linear": "weighted log-linear least squares",
+    "weighted_linear": "weighted linear least squares",
 }
 UNKNOWN = "not known"
 NO_WIDTH = 1e-6

@@ -14,6 +14,7 @@ from pipeline.demand.mixed_curve import MixedCurve
 from pipeline.demand.registry import FAMILIES
 from pipeline.demand.sample import FloatArray
 from pipeline.errors import SurplusError
+from pipeline.executor import make_executor
 from pipeline.study import Study
 from pipeline.surplus.draws import parameter_draws
 from pipeline.surplus.fees import fee_rows, fee_steps
@@ -120,7 +121,8 @@ def _value_rows(
         rows += fieller_rows(model, valued, confidence)
         rows += simulated_rows(model, valued, draws, confidence, seed=seed)
         if replicated and study.surplus.bootstrap:
-            rows += bootstrap_rows(model, valued, study)
+            with make_executor(study.compute.workers) as executor:
+                rows += bootstrap_rows(model, valued, study, executor)
     units = measure_units(study.study.currency)
     frame = pd.DataFrame(rows)
     return frame.assign(
@@ -140,7 +142,7 @@ def _valuation(model: FittedModel, sample: Sample, study: Study) -> Valuation:
 
 
 def bootstrap_rows(
-    model: FittedModel, valued: Valuation, study: Study, executor: Executor | None = None
+    model: FittedModel, valued: Valuation, study: Study, executor: Executor
 ) -> list[dict[str, Any]]:
     """Intervals of every measure from refits to drawn rows; the visits stay as observed."""
     drawn = replicates(
