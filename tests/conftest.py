@@ -88,8 +88,17 @@ def pytest_addoption(parser: pytest.Parser) -> None:
     parser.addoption("--validation-to", metavar="FOLDER", help="write validation.json and .md")
 
 
+@pytest.hookimpl(tryfirst=True)
+def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
+    """Mark every test that records a check, so that `make validate` runs the quick ones, too."""
+    for item in items:
+        if "record_check" in getattr(item, "fixturenames", ()):
+            item.add_marker("outside")
+
+
 def pytest_configure(config: pytest.Config) -> None:
     """Gather checks where a folder is given; workers leave it to the main process."""
+    config.addinivalue_line("markers", "outside: records a check against something outside")
     folder = config.getoption("--validation-to")
     if folder and not hasattr(config, "workerinput"):
         config.pluginmanager.register(Checks(Path(str(folder))), "checks")
