@@ -110,10 +110,18 @@ def inside_points(shapes: gpd.GeoSeries) -> gpd.GeoSeries:
 
 
 def equal_area_crs(shapes: gpd.GeoSeries) -> CRS:
-    """Lambert azimuthal equal-area projection (WGS 84, metres) about the middle of `shapes`.
+    """Lambert azimuthal equal-area projection (WGS 84, metres) about the middle of `shapes`."""
+    lon, lat = middle(shapes)
+    return CRS.from_dict(
+        {"proj": "laea", "lon_0": lon, "lat_0": lat, "datum": "WGS84", "units": "m"}
+    )
 
-    The middle is the mean direction of the shapes' bounding-box centres, so that shapes on both
-    sides of the 180th meridian have theirs between them.
+
+def middle(shapes: gpd.GeoSeries) -> tuple[float, float]:
+    """Longitude and latitude of the middle of shapes in EPSG:4326.
+
+    It is the mean direction of the shapes' bounding-box centres, so that shapes on both sides of
+    the 180th meridian have theirs between them.
     """
     bounds = shapes.bounds
     lon = np.radians((bounds["minx"] + bounds["maxx"]).to_numpy() / 2)
@@ -121,6 +129,4 @@ def equal_area_crs(shapes: gpd.GeoSeries) -> CRS:
     x, y, z = np.cos(lat) * np.cos(lon), np.cos(lat) * np.sin(lon), np.sin(lat)
     middle_lon = np.degrees(np.arctan2(y.mean(), x.mean()))
     middle_lat = np.degrees(np.arctan2(z.mean(), np.hypot(x.mean(), y.mean())))
-    return CRS.from_dict(
-        {"proj": "laea", "lon_0": middle_lon, "lat_0": middle_lat, "datum": "WGS84", "units": "m"}
-    )
+    return float(middle_lon), float(middle_lat)

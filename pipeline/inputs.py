@@ -13,12 +13,13 @@ import geopandas as gpd
 import numpy as np
 import pandas as pd
 
+from pipeline.census import census_figures, read_finer_points, weighted_points
 from pipeline.centroids import locate
 from pipeline.errors import InputError, StudyError, TableError
 from pipeline.mapped import Mapped, as_truth, read_section
 from pipeline.schema import Table
 from pipeline.study import Study
-from pipeline.tables import Crosswalk, Sites, Zones
+from pipeline.tables import Crosswalk, Sites, ZonePoints, Zones
 from pipeline.userfiles import PARQUET, TEXT, UserTable, read_user_table
 
 
@@ -26,8 +27,10 @@ def read_zones(study: Study) -> gpd.GeoDataFrame:
     """Read the zones of origin, with polygons where the file has them.
 
     Absent columns: `postal_code` and `zone_name` are the identifier; `household_income` is
-    missing; `lon` and `lat` are a point inside the polygon. The columns that [zones] covariates
-    names are carried along under their own names.
+    missing; `lon` and `lat` are a point inside the polygon, or where finer points are known
+    ([zones.points]) the mean place of their people. People and income may come from census
+    units instead ([zones.census]). The columns that [zones] covariates names are carried along
+    under their own names.
 
     Returns
     -------
@@ -50,15 +53,66 @@ def read_zones(study: Study) -> gpd.GeoDataFrame:
             "zone_id": zone_id,
             "postal_code": mapped.texts("postal_code", zone_id),
             "zone_name": mapped.texts("zone_name", zone_id),
-            "population": mapped.numbers("population"),
-            "household_income": mapped.numbers("household_income", np.nan),
         }
     )
     place = locate(table, lon=columns.lon, lat=columns.lat)
-    located = pd.concat([frame, place, _covariates(study, table)], axis=1)
+    points = read_finer_points(study)
+    shapes = gpd.GeoSeries(place.geometry)
+    if points is not None:
+        place = _weighted_centroids(place, weighted_points(shapes, points))
+    people = _people(study, mapped, shapes, points)
+    # A figure of the census takes the place of a column of the same name.
+    own = _covariates(study, table, {*people.columns})
+    located = pd.concat([frame, people, place, own], axis=1)
     zones = gpd.GeoDataFrame(located, geometry="geometry", crs=place.crs)
     checked = Zones.checked(zones, source=table.source(columns.model_dump()))
     return cast("gpd.GeoDataFrame", checked.reset_index(drop=True))
+
+
+def read_zone_points(study: Study) -> pd.DataFrame | None:
+    """Read several weighted points per zone; None where the study asks for one only.
+
+    Returns
+    -------
+    The `zone_points` table. A zone without finer points has its centroid alone.
+    """
+    number = study.zones.points.per_zone
+    points = read_finer_points(study)
+    if points is None or number == 1:
+        return None
+    zones = read_zones(study)
+    found = weighted_points(gpd.GeoSeries(zones.geometry), points, per_zone=number)
+    zone_id = zones["zone_id"].to_numpy(dtype=object)
+    several = found.assign(zone_id=zone_id[found["zone"].to_numpy()]).drop(columns="zone")
+    alone = zones.loc[~zones["zone_id"].isin(several["zone_id"]), ["zone_id", "lon", "lat"]]
+    table = pd.concat([several, pd.DataFrame(alone).assign(weight=1.0)])
+    table = table.sort_values("zone_id", kind="stable", ignore_index=True)
+    table["point_id"] = (table.groupby("zone_id").cumcount() + 1).astype("str")
+    return ZonePoints.checked(table)
+
+
+def _weighted_centroids(place: gpd.GeoDataFrame, centroids: pd.DataFrame) -> gpd.GeoDataFrame:
+    """Places with the mean place of the people where finer points are known."""
+    moved = place.copy()
+    rows = moved.index[centroids["zone"].to_numpy()]
+    moved.loc[rows, "lon"] = centroids["lon"].to_numpy()
+    moved.loc[rows, "lat"] = centroids["lat"].to_numpy()
+    moved.loc[rows, "centroid_source"] = "population_weighted"
+    return moved
+
+
+def _people(
+    study: Study, mapped: Mapped, shapes: gpd.GeoSeries, points: gpd.GeoDataFrame | None
+) -> pd.DataFrame:
+    """Population and income of the zones' own file, or of the census."""
+    income = mapped.numbers("household_income", np.nan)
+    if study.zones.census.file is None:
+        population = mapped.numbers("population")
+        return pd.DataFrame({"population": population, "household_income": income})
+    figures = census_figures(study, shapes, points)
+    if "household_income" not in figures:
+        figures["household_income"] = income
+    return figures
 
 
 def read_crosswalk(study: Study) -> pd.DataFrame | None:
@@ -141,14 +195,16 @@ def read_brought(table_class: type[Table], path: Path) -> pd.DataFrame:
     return table_class.checked(frame, source=table.source({})).reset_index(drop=True)
 
 
-def _covariates(study: Study, table: UserTable) -> pd.DataFrame:
-    """Further columns of the zones, as numbers."""
+def _covariates(study: Study, table: UserTable, known: set[str]) -> pd.DataFrame:
+    """Further columns of the zones, as numbers; those that are `known` are not read again."""
     fixed = {*Zones.columns(), "site_id", "visits", "travel_cost", "geometry"}
     for name in study.zones.covariates:
         if name in fixed:
             raise StudyError(f"[zones] covariates: {name!r} is a column of our own; remove it.")
-        table.need(name, "named in [zones] covariates")
-    columns = {name: table.numbers(name) for name in study.zones.covariates}
+        if name not in known:
+            table.need(name, "named in [zones] covariates")
+    names = [name for name in study.zones.covariates if name not in known]
+    columns = {name: table.numbers(name) for name in names}
     return pd.DataFrame(columns, index=table.frame.index)
 
 

@@ -118,9 +118,27 @@ class Zones(Table):
     lon: Series[float] = column("longitude of the zone's centroid", unit="degree", ge=-180, le=180)
     lat: Series[float] = column("latitude of the zone's centroid", unit="degree", ge=-90, le=90)
     centroid_source: Series[str] = column("where the centroid comes from", isin=CENTROID_SOURCES)
+    census_cover_share: Series[float] | None = column(
+        "share of the zone's area that the census units cover", unit="share", ge=0, le=1
+    )
 
     class Config:
         unique = ["zone_id"]
+
+
+class ZonePoints(Table):
+    """Several places per zone, each with its share of the zone's people."""
+
+    zone_id: Series[str] = column("zone of origin")
+    point_id: Series[str] = column("number of the place within its zone")
+    lon: Series[float] = column("longitude", unit="degree", ge=-180, le=180)
+    lat: Series[float] = column("latitude", unit="degree", ge=-90, le=90)
+    weight: Series[float] = column(
+        "share of the zone's people; a zone's add up to 1", unit="share", gt=0, le=1 + 1e-9
+    )
+
+    class Config:
+        unique = ["zone_id", "point_id"]
 
 
 class Crosswalk(Table):
@@ -706,6 +724,7 @@ class Sensitivity(Table):
 TABLES: tuple[type[Table], ...] = (
     VisitRecords,
     Zones,
+    ZonePoints,
     Crosswalk,
     Sites,
     Origins,

@@ -37,13 +37,65 @@ class ZoneColumns(Section):
     zone_id: str = setting("Zone's identifier.", "zone_id")
     postal_code: str = setting("Postal code of the zone; absent: the identifier.", "postal_code")
     zone_name: str = setting("Name to show; may be absent.", "zone_name")
-    population: str = setting("People who live there.", "population")
+    population: str = setting("People who live there; absent with [zones.census].", "population")
     household_income: str = setting(
-        "Household income per year; absent: [costs] fallback_household_income.",
+        "Household income per year; absent: that of [zones.census], or [costs] "
+        "fallback_household_income.",
         "household_income",
     )
     lon: str = setting("Longitude of the centroid, WGS 84; may be absent with polygons.", "lon")
     lat: str = setting("Latitude of the centroid, WGS 84; may be absent with polygons.", "lat")
+
+
+class CensusSettings(FileSection):
+    """Units of a census that are not the zones: their people are carried over to the zones."""
+
+    section_name: ClassVar[str] = "zones.census"
+    file: InputPath | None = setting("GIS layer of the census units' polygons.", None)
+    unit_id: str = setting("Column of the unit's identifier.", "unit_id")
+    population: str = setting("Column of the people who live there.", "population")
+    household_income: str | None = setting(
+        "Column of the household income per year; averaged over the people carried over.", None
+    )
+    counts: tuple[str, ...] = setting(
+        "Further columns of counts, carried over as the people are; name them in covariates.", ()
+    )
+    averages: tuple[str, ...] = setting(
+        "Further columns of averages per person; name them in covariates.", ()
+    )
+    method: Literal["area", "points"] = setting(
+        "How a unit's people lie in it: evenly over its 'area', or as the people of the finer "
+        "'points' of [zones.points] do.",
+        "area",
+        usual="points where blocks, a grid or addresses are at hand",
+    )
+    max_outside_share: Share = setting(
+        "The run stops when a larger share of the census' people lives outside every zone.",
+        0.01,
+        unit="share",
+        usual="0 to 0.02; more where the census covers more than the zones",
+    )
+
+
+class PointsSettings(FileSection):
+    """Finer units than the zones (blocks, a grid, addresses), as weighted points."""
+
+    section_name: ClassVar[str] = "zones.points"
+    file: InputPath | None = setting(
+        "CSV, Excel, Parquet or GIS layer of points or small polygons; then the zones' centroids "
+        "are weighted by their people.",
+        None,
+    )
+    people: str = setting("Column of the people at the point; absent: one each.", "population")
+    lon: str = setting("Longitude, WGS 84; may be absent in a GIS layer.", "lon")
+    lat: str = setting("Latitude, WGS 84; may be absent in a GIS layer.", "lat")
+    per_zone: int = setting(
+        "Places per zone, each with its share of the people, for the table zone_points.",
+        1,
+        usual="1; 3 to 10 where zones are large",
+        ge=1,
+        le=100,
+    )
 
 
 class ZonesSettings(FileSection):
@@ -54,6 +106,8 @@ class ZonesSettings(FileSection):
         "CSV, Excel or Parquet with centroids, or a GIS layer with polygons.", None
     )
     columns: ZoneColumns = setting("Column names in that file.", ZoneColumns())
+    census: CensusSettings = setting("Census units in place of own figures.", CensusSettings())
+    points: PointsSettings = setting("Finer units for centroids and census.", PointsSettings())
     covariates: tuple[str, ...] = setting(
         "Further columns of the zones file (numbers) to carry into the finished table.", ()
     )
