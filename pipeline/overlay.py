@@ -65,9 +65,11 @@ def unit_shares(
     whole = units.to_crs(crs).area.to_numpy()
     inside = areas.reindex(range(len(units)), fill_value=0.0).to_numpy()
     _refuse_overlap(inside / whole, "zones", "census unit")
-    covered = pieces["area"].groupby(pieces["zone"]).sum()
-    covered = covered.reindex(range(len(zones)), fill_value=0.0).to_numpy()
-    covered = covered / zones.to_crs(crs).area.to_numpy()
+    in_zone = pieces["area"].groupby(pieces["zone"]).sum()
+    covered = (
+        in_zone.reindex(range(len(zones)), fill_value=0.0).to_numpy()
+        / zones.to_crs(crs).area.to_numpy()
+    )
     _refuse_overlap(covered, "census units", "zone")
     even = pieces.assign(share=pieces["area"] / whole[pieces["unit"].to_numpy()])
     by_area = np.ones(len(units), dtype=bool)
@@ -118,7 +120,8 @@ def _point_shares(
     frame = frame[(frame["unit"] >= 0) & (frame["people"] > 0)]
     sums = frame.groupby(["unit", "zone"], as_index=False)["people"].sum()
     total = sums.groupby("unit")["people"].transform("sum")
-    return sums.assign(share=sums["people"] / total)
+    shares: pd.DataFrame = sums.assign(share=sums["people"] / total)
+    return shares
 
 
 def first_holding(
@@ -138,7 +141,10 @@ def carried_counts(
     """A count of the units by zone."""
     table = shares.table
     parts = counts[table["unit"].to_numpy()] * table["share"].to_numpy()
-    return np.bincount(table["zone"].to_numpy(), weights=parts, minlength=zones)
+    sums: npt.NDArray[np.float64] = np.bincount(
+        table["zone"].to_numpy(), weights=parts, minlength=zones
+    ).astype(np.float64)
+    return sums
 
 
 def carried_averages(
@@ -152,4 +158,6 @@ def carried_averages(
     weights = np.where(known, people, 0.0)
     total = carried_counts(np.where(known, averages, 0.0) * weights, shares, zones)
     by = carried_counts(weights, shares, zones)
-    return np.divide(total, by, out=np.full(zones, np.nan), where=by > 0)
+    means = np.full(zones, np.nan)
+    np.divide(total, by, out=means, where=by > 0)
+    return means

@@ -97,7 +97,8 @@ def test_people_by_finer_points(tmp_path: Path) -> None:
 
 def test_people_outside_every_zone_stop_the_run(tmp_path: Path) -> None:
     units = three_units()
-    units.loc[2, "geometry"] = shapely.box(10.15, 50, 10.25, 50.1)  # half of it lies outside
+    strips = [*units.geometry[:2], shapely.box(10.15, 50, 10.25, 50.1)]  # half of c lies outside
+    units = units.set_geometry(gpd.GeoSeries(strips, crs=WGS84))
     with pytest.raises(InputError, match=r"20 of 200 people \(10.0%\) .* in unit c \(20\)"):
         read_zones(census_study(tmp_path, units))
     zones = read_zones(census_study(tmp_path, units, max_outside_share=0.2))
@@ -152,7 +153,8 @@ def test_the_same_as_the_tobler_library() -> None:
     shares = unit_shares(units, ZONES)
     crs = measuring_crs(ZONES)
     source = gpd.GeoDataFrame({"people": people}, geometry=units).to_crs(crs)
-    theirs = area_interpolate(source, ZONES.to_frame("geometry").to_crs(crs), ["people"])
+    targets = gpd.GeoDataFrame(geometry=ZONES).to_crs(crs)
+    theirs = area_interpolate(source, targets, ["people"])
     ours = carried_counts(people, shares, 2)
     assert ours == pytest.approx(theirs["people"].to_numpy(), rel=1e-6)
 
