@@ -17,7 +17,7 @@ needs = $(RUN) -c 'import functools, sys, tomllib; \
   -c config/constraints.txt -r $(VENV)/needs.txt
 
 .DEFAULT_GOAL := help
-.PHONY: all new test check bench validate iceland docs clean help $(STAGES)
+.PHONY: all new test check bench validate iceland docs pdf compare clean help $(STAGES)
 
 all: $(VENV)/ready  ## the whole flow for STUDY, ending with the report
 	@$(RUN) -m pipeline all "$(STUDY_FILE)"
@@ -48,6 +48,12 @@ validate: $(VENV)/ready-test  ## the slow checks against outside sources
 
 docs: $(VENV)/ready  ## the reference documents that are made from the code
 	@$(RUN) -m pipeline.template
+
+pdf: $(VENV)/ready  ## the report as a tagged PDF (needs Chromium)
+	@$(RUN) -m pipeline.publish.pdf $(STUDY_FILE)
+
+compare: $(VENV)/ready  ## two runs side by side: make compare A=data/demo B=data/other
+	@$(RUN) -m pipeline compare $(A) $(B)
 
 clean:  ## remove what the flow made for STUDY (inputs stay)
 	rm -rf data/$(STUDY)/work data/$(STUDY)/output

@@ -12,6 +12,7 @@ import pandas as pd
 from pipeline.publish.geopackage import describe_layer
 
 TYPES = {"number": "number", "integer": "integer", "boolean": "boolean"}
+FIGURE_KINDS = {"png": "image/png", "svg": "image/svg+xml", "pdf": "application/pdf"}
 ROLES = {
     "report.html": ("report", "html", "text/html", "The report: one page, no network needed"),
     "run.json": ("run", "json", "application/json", "What the run was made from, and its values"),
@@ -26,6 +27,7 @@ def data_package(
     dictionary: pd.DataFrame,
     layers: dict[str, gpd.GeoDataFrame],
     attribution: str,
+    figures: tuple[str, ...] = (),
 ) -> dict[str, Any]:
     """Describe the files in `folder`: title, sources, and one resource each with its SHA-256."""
     about = manifest["study"]
@@ -43,6 +45,11 @@ def data_package(
         path = f"geoparquet/{name}.parquet"
         kind = "application/vnd.apache.parquet"
         resources.append(_resource(folder, path, f"{name}-geoparquet", "parquet", kind, words))
+    resources += [
+        _resource(folder, f"figures/{name}.{kind}", f"{name}-{kind}", kind, media, f"Figure {name}")
+        for name in figures
+        for kind, media in FIGURE_KINDS.items()
+    ]
     for name, table in tables.items():
         rows = dictionary[dictionary["table"] == name]
         resources += _table_resources(folder, name, table, rows)

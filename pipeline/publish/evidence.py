@@ -139,7 +139,7 @@ def _zone_names(results: Results) -> dict[str, str]:
 
 def demand_figure(results: Results, headline: Headline) -> Html:
     """The demand curve on its points."""
-    points = _points(results, headline)
+    points = demand_points(results, headline)
     if points.empty:
         return tag("p", "There is no point to draw.")
     curve = results.curves.get(headline.site_id)
@@ -180,7 +180,7 @@ def _curve_words(results: Results, headline: Headline, curve: Curve | None) -> s
     )
 
 
-def _points(results: Results, headline: Headline) -> pd.DataFrame:
+def demand_points(results: Results, headline: Headline) -> pd.DataFrame:
     """Points of the demand chart: `cost, rate, size, label, outside`."""
     rows = results.site_zones(headline.site_id)
     if rows is None:

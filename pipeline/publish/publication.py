@@ -8,6 +8,7 @@ from typing import Any
 
 import geopandas as gpd
 import pandas as pd
+from matplotlib.figure import Figure as Canvas
 
 from pipeline.errors import PublishError
 from pipeline.provenance import Provenance
@@ -15,6 +16,7 @@ from pipeline.publish.curve import fitted_curves
 from pipeline.publish.descriptor import data_package
 from pipeline.publish.effects import coarse
 from pipeline.publish.feecurve import fee_curves
+from pipeline.publish.figures import draw_figures, write_figures
 from pipeline.publish.geofiles import write_geojson, write_geoparquet
 from pipeline.publish.geopackage import About, write_geopackage
 from pipeline.publish.layers import build_layers
@@ -42,6 +44,7 @@ class Publication:
     report : the report, one HTML page without any outside reference.
     manifest : content of run.json.
     attribution : whose road data it is, and under which licence.
+    figures : figures for papers, by file name without its ending.
     headlines : what every site is worth.
     """
 
@@ -53,6 +56,7 @@ class Publication:
     report: str
     manifest: dict[str, Any]
     attribution: str
+    figures: dict[str, Canvas]
     headlines: tuple[Headline, ...]
 
     def write(self, folder: Path) -> None:
@@ -61,6 +65,9 @@ class Publication:
         _write_text(manifest_text(self.manifest), folder / "run.json")
         if self.layers:
             self._write_layers(folder)
+        if self.figures:
+            (folder / "figures").mkdir()
+            write_figures(self.figures, folder / "figures")
         (folder / "tables").mkdir()
         for name, table in self.tables.items():
             write_table_files(table, folder / "tables", name)
@@ -72,6 +79,7 @@ class Publication:
             dictionary=self.dictionary,
             layers=self.layers,
             attribution=self.attribution,
+            figures=tuple(self.figures),
         )
         _write_text(manifest_text(package), folder / "datapackage.json")
 
@@ -221,5 +229,6 @@ def _publication(results: Results) -> Publication:
         report=build_report(results),
         manifest=run_manifest(results),
         attribution=results.study.publish.attribution,
+        figures=draw_figures(results),
         headlines=results.headlines,
     )

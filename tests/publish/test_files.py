@@ -38,7 +38,7 @@ def read_json(path: Path) -> Any:
 def test_the_same_run_gives_the_same_bytes_in_another_folder(folder: Path, tmp_path: Path) -> None:
     make_publication().write(tmp_path)
     assert digests(tmp_path) == digests(folder)
-    assert len(digests(folder)) == 1 + 3 + 2 * len(LAYERS) + 2 * 13 + 1
+    assert len(digests(folder)) == 1 + 3 + 6 + 2 * len(LAYERS) + 2 * 13 + 1
 
 
 def test_geopackage_header_says_1_2(folder: Path) -> None:
