@@ -8,6 +8,7 @@ from pathlib import Path
 import numpy as np
 
 from pipeline.errors import RoadsError
+from pipeline.road_settings import RoadsSettings
 from pipeline.roads.extract import RoadExtract
 from pipeline.roads.graphml import read_graphml
 from pipeline.roads.layers import LAYERS, read_layers
@@ -16,7 +17,6 @@ from pipeline.roads.osm import read_osm
 from pipeline.roads.pbf import read_pbf
 from pipeline.roads.pbf_frame import OddFileError
 from pipeline.roads.rules import load_rules
-from pipeline.road_settings import RoadsSettings
 
 # A clean cut leaves roads without nodes along its edge only; more than this share, and this
 # many, and the file has lost nodes.

@@ -19,10 +19,10 @@ import pyogrio
 import shapely
 
 from pipeline.errors import RoadsError
+from pipeline.road_settings import RoadColumns, RoadsSettings
 from pipeline.roads.arrays import Int64, offsets
 from pipeline.roads.merge import FileRoads, TagColumn
 from pipeline.roads.noding import at_crossings, node_numbers
-from pipeline.road_settings import RoadColumns, RoadsSettings
 
 PARQUET = (".parquet", ".geoparquet")
 LAYERS = (".gpkg", ".shp", ".fgb", ".geojson", ".json", *PARQUET)

@@ -18,9 +18,9 @@ from shapely import LineString, MultiLineString, Point
 from shapely.geometry.base import BaseGeometry
 
 from pipeline.errors import RoadsError
+from pipeline.road_settings import RoadsSettings
 from pipeline.roads import RoadExtract, build_roads, read_extract
 from pipeline.routes import route
-from pipeline.road_settings import RoadsSettings
 from tests.roads.worlds import ROAD, Places, Ways, a_study, osm_xml, sites_at, zones_at
 
 # Three streets north, three east, a bend between b2 and c2, and one-way roads both ways:
@@ -65,7 +65,7 @@ def routes_of(extract: RoadExtract) -> pd.DataFrame:
     return route(zones_at(ZONES), sites_at(SITES), graph, study=study)[0]
 
 
-def osmnx_graph(file: Path, *, simplify: bool = False) -> osmnx.graph.nx.MultiDiGraph[int]:
+def osmnx_graph(file: Path, *, simplify: bool = False) -> nx.MultiDiGraph[int]:
     """As osmnx reads the file, with the tags that the rules of the road need."""
     before = list(osmnx.settings.useful_tags_way)
     osmnx.settings.useful_tags_way = [*before, "route", "duration", "toll", "surface"]
@@ -230,9 +230,9 @@ def test_miles_and_reference_systems(tmp_path: Path) -> None:
     ],
 )
 def test_values_that_are_not_known_are_refused(
-    tmp_path: Path, columns: dict[str, object], geometry: object, message: str
+    tmp_path: Path, columns: dict[str, Any], geometry: BaseGeometry | None, message: str
 ) -> None:
-    line: BaseGeometry = geometry or LineString([(0, 0), (1, 0)])
+    line = LineString([(0, 0), (1, 0)]) if geometry is None else geometry
     with pytest.raises(RoadsError, match=message):
         read_extract((layer(tmp_path, [line], **columns),))
 
