@@ -133,7 +133,7 @@ class Input:
 
 
 def _extract(study: Study) -> RoadExtract:
-    return read_extract(study.roads.files)
+    return read_extract(study.roads.files, study.roads)
 
 
 INPUTS: dict[Kind, Input] = {

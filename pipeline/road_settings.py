@@ -10,12 +10,49 @@ from pydantic import Field
 from pipeline.sections import InputPath, Section, setting
 
 
+class RoadColumns(Section):
+    """The study's own column names in layers of lines."""
+
+    road_class: str = setting("Road class; needed.", "highway")
+    speed: str = setting("Speed limit; absent: the default of the class.", "maxspeed")
+    oneway: str = setting("Direction along the line: yes, no or -1; absent: both.", "oneway")
+    toll: str = setting("Whether a toll is due; absent: none.", "toll")
+    surface: str = setting("Surface, as OSM names it; absent: by the class.", "surface")
+    access: str = setting("Access, as OSM names it; absent: open.", "access")
+    level: str = setting("Level; lines of two levels do not meet where they cross.", "level")
+
+
 class RoadsSettings(Section):
     """The road extract, and how its ways become roads that a car can use."""
 
     section_name: ClassVar[str] = "roads"
     files: tuple[InputPath, ...] = setting(
-        "OSM PBF or OSM XML extracts (plain, .gz, .bz2); several are merged by OSM id.", ()
+        "OSM PBF, OSM XML (plain, .gz, .bz2) or GraphML as osmnx saves it, merged by OSM id; or "
+        "layers of lines (GeoPackage, Shapefile, FlatGeobuf, GeoJSON, GeoParquet), joined where "
+        "they meet.",
+        (),
+    )
+    columns: RoadColumns = setting("Column names in layers of lines.", RoadColumns())
+    layer: str | None = setting("Layer, where a file of lines has several.", None)
+    class_values: dict[str, str] = setting(
+        "What the layer's own class values mean: a class of config/roads.toml, or 'ferry'.", {}
+    )
+    oneway_values: dict[str, Literal["yes", "no", "-1"]] = setting(
+        "What the layer's own values of direction mean; '-1': against the line.", {}
+    )
+    speed_unit: Literal["km/h", "mph"] = setting("Unit of speeds in layers of lines.", "km/h")
+    node_tolerance_m: float = setting(
+        "In layers of lines an end joins the ends and vertices of others that are no further.",
+        0.1,
+        unit="m",
+        usual="0.01 to 5: less than the shortest road, and than a gap that is meant",
+        ge=0,
+        le=100,
+    )
+    node_at_crossings: bool = setting(
+        "Whether lines of one level are also joined where they only cross.",
+        default=False,
+        usual="false; true where the lines were not split at junctions",
     )
     class_speed_kmh: dict[str, Annotated[float, Field(gt=0, le=200)]] = setting(
         "Speed where no limit is tagged, by `highway` value; "

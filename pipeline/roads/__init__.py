@@ -3,7 +3,9 @@
 The way of the data, one module per step:
 
 ``formats``   reads files of any format into the internal form (``extract``): ways over
-              located nodes; ``osm`` reads OSM files, ``merge`` makes one extract of several
+              located nodes: ``pbf`` (with ``pbf_frame``, ``pbf_blocks``, ``pbf_wire``) OSM
+              PBF, ``osm`` any OSM file by libosmium, ``graphml`` osmnx's graphs, ``layers``
+              lines with names of their own (``noding``); ``merge`` makes them one extract
 ``rules``     what each way allows, by config/roads.toml; ``speeds`` reads tagged values
 ``segments``  stretches between neighbouring nodes, with geodesic lengths and times
 ``contract``  chains of stretches between junctions become edges

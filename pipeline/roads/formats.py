@@ -8,23 +8,28 @@ from pathlib import Path
 import numpy as np
 
 from pipeline.errors import RoadsError
+from pipeline.road_settings import RoadsSettings
 from pipeline.roads.extract import RoadExtract
+from pipeline.roads.graphml import read_graphml
+from pipeline.roads.layers import LAYERS, read_layers
 from pipeline.roads.merge import FileRoads, merge
 from pipeline.roads.osm import read_osm
 from pipeline.roads.pbf import read_pbf
 from pipeline.roads.pbf_frame import OddFileError
+from pipeline.roads.rules import load_rules
 
 # A clean cut leaves roads without nodes along its edge only; more than this share, and this
 # many, and the file has lost nodes.
 MOST_CUT, FEWEST_CUT = 0.3, 5
 
 
-def read_extract(paths: tuple[Path, ...]) -> RoadExtract:
+def read_extract(paths: tuple[Path, ...], settings: RoadsSettings | None = None) -> RoadExtract:
     """Read road extracts and merge them by OSM id.
 
     Parameters
     ----------
-    paths : OSM PBF or OSM XML files (plain, .gz or .bz2), in any order of their objects.
+    paths : OSM PBF, OSM XML (plain, .gz or .bz2) and GraphML files; or layers of lines.
+    settings : how layers of lines are to be read; default: as OSM names things.
 
     Raises
     ------
@@ -34,6 +39,15 @@ def read_extract(paths: tuple[Path, ...]) -> RoadExtract:
     """
     if not paths:
         raise RoadsError("no road extract is given; set roads.files in the study file.")
+    layers = tuple(path for path in paths if path.suffix.lower() in LAYERS)
+    if layers and len(layers) < len(paths):
+        raise RoadsError(
+            f"roads.files: {layers[0].name} is a layer of lines, and the others are not; they "
+            "have no ids in common to be joined by. Give files of one kind."
+        )
+    if layers:
+        settings = settings or RoadsSettings()
+        return merge([read_layers(layers, settings, set(load_rules(settings).classes))])
     files = [_read_file(path) for path in paths]
     if not any(len(file.way_id) for file in files):
         names = ", ".join(path.name for path in paths)
@@ -50,6 +64,8 @@ def read_extract(paths: tuple[Path, ...]) -> RoadExtract:
 
 def _read_file(path: Path) -> FileRoads:
     """Read by compiled code where the file lets that be, else by libosmium."""
+    if path.suffix.lower() == ".graphml":
+        return read_graphml(path)
     try:
         return read_pbf(path) if path.suffix == ".pbf" else read_osm(path)
     except (OddFileError, OSError):
