@@ -40,6 +40,9 @@ check: $(VENV)/ready-test  ## ruff and mypy --strict
 	$(VENV)/bin/ruff format --check .
 	$(VENV)/bin/mypy
 
+bench: $(VENV)/ready-test  ## speed of reading and searching roads, as ratios, into docs/bench.md
+	$(RUN) -m tests.bench.run
+
 validate: $(VENV)/ready-test  ## the slow checks against outside sources
 	@command -v Rscript > /dev/null && Rscript -e 'for (p in c("pscl", "VGAM", "MASS")) library(p, character.only = TRUE)' > /dev/null 2>&1 || \
 	  apt-get install --yes --no-install-recommends r-base-core r-cran-pscl r-cran-vgam r-cran-mass || \
