@@ -57,6 +57,8 @@ def write_pbf(file: Path, side: int, inner: int, seed: int = 1) -> Path:
             for column in range(side):
                 for k in range(1 + 2 * inner):
                     number += 1
+                    if (k and k <= inner and column == side - 1) or (k > inner and row == side - 1):
+                        continue  # no street goes on beyond the last crossing
                     along = (k + inner - 1) % max(inner, 1) + 1 if k else 0
                     east = along / (inner + 1) * step * (1 <= k <= inner)
                     north = along / (inner + 1) * step * (k > inner)
