@@ -45,7 +45,7 @@ def planar_arcs(arcs: int, seed: int = 1) -> Arcs:
 def write_pbf(file: Path, side: int, inner: int, seed: int = 1) -> Path:
     """A PBF of side × side crossings, with `inner` nodes between each and the next.
 
-    Every block of houses has a way on two sides; 1,290 and 1 give about 4 M nodes in 830 k
+    Every block of houses has a way on two sides; 1,290 and 1 give about 5 M nodes in 830 k
     ways of several nodes each.
     """
     rng = np.random.default_rng(seed)
