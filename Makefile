@@ -12,7 +12,7 @@ STAGES := geocode roads route cost join demand surplus sensitivity publish
 # What pyproject.toml says is needed, in the versions of config/constraints.txt.
 needs = $(RUN) -c 'import functools, sys, tomllib; \
   project = tomllib.load(open("pyproject.toml", "rb"))["project"]; \
-  print(*functools.reduce(dict.get, sys.argv[1:], project), sep="\n")' $(1) $(2) > $(VENV)/needs.txt && \
+  print(*functools.reduce(dict.get, sys.argv[1:], project), sep="\n")' $(1) > $(VENV)/needs.txt && \
   $(RUN) -m pip install --quiet --disable-pip-version-check --no-warn-script-location \
   -c config/constraints.txt -r $(VENV)/needs.txt
 
@@ -43,7 +43,7 @@ check: $(VENV)/ready-test  ## ruff and mypy --strict
 bench: $(VENV)/ready-test  ## speed of reading and searching roads, as ratios, into docs/bench.md
 	$(RUN) -m tests.bench.run
 
-validate: $(VENV)/ready-test  ## the slow checks against outside sources
+validate: $(VENV)/ready-validate  ## the slow checks against outside sources
 	@command -v Rscript > /dev/null && Rscript -e 'for (p in c("pscl", "VGAM", "MASS")) library(p, character.only = TRUE)' > /dev/null 2>&1 || \
 	  apt-get install --yes --no-install-recommends r-base-core r-cran-pscl r-cran-vgam r-cran-mass || \
 	  echo "no R packages: the comparisons with R are skipped"
@@ -78,5 +78,9 @@ $(VENV)/ready: pyproject.toml config/constraints.txt
 	@touch $@
 
 $(VENV)/ready-test: $(VENV)/ready
-	@$(call needs,optional-dependencies,test)
+	@$(call needs,optional-dependencies test)
+	@touch $@
+
+$(VENV)/ready-validate: $(VENV)/ready-test
+	@$(call needs,optional-dependencies validate)
 	@touch $@

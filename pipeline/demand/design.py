@@ -13,7 +13,7 @@ import numpy as np
 import numpy.typing as npt
 from scipy.optimize import linprog
 
-from pipeline.demand.sample import CONST, FloatArray, Sample
+from pipeline.demand.sample import CONST, PRICE, FloatArray, Sample
 from pipeline.errors import DemandError
 
 _SINGULAR = 1e-8
@@ -95,8 +95,16 @@ def collinear_terms(design: FloatArray, terms: tuple[str, ...]) -> tuple[str, ..
 
 
 def _collinear_words(terms: tuple[str, ...]) -> str:
+    if terms == (PRICE,):
+        return (
+            f"{PRICE!r} is the same in every row, so there is no demand curve to see; "
+            "look at the costs, or widen the market."
+        )
     if len(terms) == 1:
-        return f"{terms[0]!r} has the same value in every row, so it explains nothing; drop it."
+        return (
+            f"{terms[0]!r} has the same value in every row, so it explains nothing; "
+            "drop it from demand.covariates."
+        )
     return (
         f"{', '.join(map(repr, terms))} are collinear (each is a sum of multiples of the others), "
         "so their effects cannot be told apart; drop one of them from demand.covariates."

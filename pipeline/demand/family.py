@@ -85,7 +85,7 @@ class FittedModel:
     @property
     def bic(self) -> float:
         """Bayesian information criterion."""
-        return float(np.log(self.nobs)) * self.parameters - 2 * self.log_likelihood
+        return float(np.log(max(self.nobs, 1))) * self.parameters - 2 * self.log_likelihood
 
     def quantile(self, confidence: float) -> float:
         """Half-width of a two-sided interval, in standard errors."""
