@@ -12,6 +12,7 @@ from pipeline.presets import load_preset
 from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Results
 
+DEFAULT = "default"
 NOT_ASSUMPTIONS = ("study", "sites", "publish", "compute")
 
 
@@ -33,15 +34,15 @@ def assumption_rows(results: Results) -> list[tuple[object, ...]]:
 
 
 def _preset_words(results: Results, key: str) -> object:
-    """The preset and the source of its figure; 'default' where no preset gave it."""
+    """The preset and the source of its figure; DEFAULT where no preset gave it."""
     costs = results.study.costs
     section, _, name = key.partition(".")
     if section != "costs" or costs is None or costs.preset is None:
-        return "default"
+        return DEFAULT
     preset = load_preset(costs.preset)
     source = preset.source(name)
     if not source:
-        return "default"
+        return DEFAULT
     label = f"preset {preset.name} ({preset.country}, prices of {preset.year}): "
     return join([tag("b", label), source])
 
@@ -99,12 +100,17 @@ def _shown(value: object) -> object:
 
 
 def assumptions_table(results: Results) -> Html:
-    """The table of assumptions."""
+    """What the study chose first, then what was left at its default."""
     head = ("What it is", "Value", "Unit", "Usual value", "Set by")
-    rows = table(
-        head,
-        assumption_rows(results),
-        caption="Settings that move the answer",
-        class_="prose",
-    )
-    return join([_preset_caution(results), rows])
+    rows = assumption_rows(results)
+    chosen = [row for row in rows if row[-1] != DEFAULT]
+    left = [row for row in rows if row[-1] == DEFAULT]
+    tables = [
+        table(head, part, caption=caption, class_="prose")
+        for part, caption in (
+            (chosen, "Settings that move the answer, as the study chose them"),
+            (left, "Settings that move the answer, left at their defaults"),
+        )
+        if part
+    ]
+    return join([_preset_caution(results), *tables])

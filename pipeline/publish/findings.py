@@ -165,6 +165,7 @@ MEASURE_WORDS = {
     "annual_visits_predicted": "Visits predicted",
     "choke_cost": "Cost that ends all visits",
 }
+KIND_WORDS = {"fieller": "Fieller"}
 POINT_METHODS = ("delta", "observed")
 
 
@@ -181,11 +182,12 @@ def values_table(results: Results, headline: Headline) -> Html:
         for measure in measures
     ]
     sure = level(results.study.surplus.confidence)
-    head = ("Measure", "Estimate", *(f"{sure} interval, {kind}" for kind in kinds), "Unit")
+    names = [KIND_WORDS.get(kind, kind) for kind in kinds]
+    head = ("Measure", "Estimate", *(f"{sure} interval, {name}" for name in names), "Unit")
     grid = table(
         head, body, caption="Values from the chosen model", numbers=range(1, len(head) - 1)
     )
-    remarks = [tag("li", tag("b", "Simulated: "), words) for words in _remarks(rows)]
+    remarks = [tag("li", tag("b", f"{kind}: "), words) for kind, words in _remarks(rows)]
     return join([grid, tag("ul", *remarks, class_="care") if remarks else None])
 
 
@@ -197,7 +199,7 @@ def _measure_row(
     point = next((by_kind[kind] for kind in POINT_METHODS if kind in by_kind), None)
     first = point if point is not None else next(iter(by_kind.values()))
     note = "" if pd.isna(first.note) else str(first.note)
-    name = MEASURE_WORDS.get(measure, words_of(measure))
+    name = MEASURE_WORDS.get(measure, words_of(measure).capitalize())
     ends = [
         interval(by_kind[kind].ci_low, by_kind[kind].ci_high, by_kind[kind].value)
         if kind in by_kind
@@ -210,11 +212,12 @@ def _measure_row(
     return (join([name, about]), shown, *ends, unit)
 
 
-def _remarks(rows: pd.DataFrame) -> list[str]:
-    """What the notes of the other kinds of interval add, each sentence once."""
-    said: dict[str, None] = {}
+def _remarks(rows: pd.DataFrame) -> list[tuple[str, str]]:
+    """What the notes of the other kinds of interval add: the kind, and each sentence once."""
+    said: dict[tuple[str, str], None] = {}
     for _, group in rows.groupby("measure", sort=False):
-        notes = [str(note) for note in group["note"].dropna()]
-        for note in notes[1:]:
-            said[note.removeprefix(notes[0]).strip()] = None
-    return [words for words in said if words]
+        notes = [(str(row.method), str(row.note)) for row in rows_of(group.dropna(subset="note"))]
+        for method, note in notes[1:]:
+            kind = KIND_WORDS.get(method, method.capitalize())
+            said[kind, note.removeprefix(notes[0][1]).strip()] = None
+    return [(kind, words) for kind, words in said if words]
