@@ -219,5 +219,6 @@ def _remarks(rows: pd.DataFrame) -> list[tuple[str, str]]:
         notes = [(str(row.method), str(row.note)) for row in rows_of(group.dropna(subset="note"))]
         for method, note in notes[1:]:
             kind = KIND_WORDS.get(method, method.capitalize())
-            said[kind, note.removeprefix(notes[0][1]).strip()] = None
+            words = note.removeprefix(notes[0][1]).strip().removeprefix(f"{kind}: ")
+            said[kind, words] = None
     return [(kind, words) for kind, words in said if words]
