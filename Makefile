@@ -47,7 +47,7 @@ validate: $(VENV)/ready-validate  ## the slow checks against outside sources
 	@command -v Rscript > /dev/null && Rscript -e 'for (p in c("pscl", "VGAM", "MASS")) library(p, character.only = TRUE)' > /dev/null 2>&1 || \
 	  apt-get install --yes --no-install-recommends r-base-core r-cran-pscl r-cran-vgam r-cran-mass || \
 	  echo "no R packages: the comparisons with R are skipped"
-	$(RUN) -m pytest -m "slow or outside" --validation-to docs
+	$(RUN) -m pytest -m "slow or outside" --validation-to=docs tests
 
 docs: $(VENV)/ready  ## the reference documents that are made from the code
 	@$(RUN) -m pipeline.template
