@@ -170,7 +170,7 @@ class Flow:
 
 def _about(variant: Variant | None, study: Study) -> Row:
     if variant is None:
-        return {"variant": BASE, "changed": "", "from_value": "", "to_value": ""}
+        return {"variant": BASE, "changed": None, "from_value": None, "to_value": None}
     changed, before, after = changed_values(study, variant)
     return {
         "variant": variant.name,

@@ -698,9 +698,11 @@ class Sensitivity(Table):
 
     site_id: Series[str] = column("site that is valued")
     variant: Series[str] = column("the alternative, or 'the study'")
-    changed: Series[str] = column("keys of the study file that it changes; empty: none")
-    from_value: Series[str] = column("what they are in the study")
-    to_value: Series[str] = column("what they are in the alternative")
+    changed: Series[str] = column(
+        "keys of the study file that it changes; missing: the study itself", nullable=True
+    )
+    from_value: Series[str] = column("what they are in the study", nullable=True)
+    to_value: Series[str] = column("what they are in the alternative", nullable=True)
     model: Series[str] = column("model that the figures come from", nullable=True)
     surplus_per_trip: Series[float] = column(
         "surplus per person-visit", unit="currency/visit", nullable=True

@@ -43,13 +43,13 @@ def coarse(sensitivity: pd.DataFrame) -> pd.DataFrame:
 
 def has_effects(results: Results) -> bool:
     """Whether any alternative was run."""
-    return bool((results.sensitivity["changed"] != "").any())
+    return bool(results.sensitivity["changed"].notna().any())
 
 
 def effects_figure(results: Results, headline: Headline) -> Html:
     """The figure of one site, what it shows in words, and the table behind it."""
     rows = results.sensitivity[results.sensitivity["site_id"] == headline.site_id]
-    study, others = rows[rows["changed"] == ""], rows[rows["changed"] != ""]
+    study, others = rows[rows["changed"].isna()], rows[rows["changed"].notna()]
     if study.empty or others.empty:
         return tag("p", "No alternative was run for this site.")
     base = study.iloc[0]
@@ -63,7 +63,14 @@ def effects_figure(results: Results, headline: Headline) -> Html:
     drawn = known.head(MOST_BARS)
     chart = effects_chart(drawn, base, currency=results.currency, name=headline.site_name)
     words = _words(results, base, known, len(ordered))
-    wide = tag("div", chart, class_="wide effects")
+    wide = tag(
+        "div",
+        chart,
+        class_="wide effects",
+        tabindex="0",
+        role="region",
+        aria_label="Annual surplus",
+    )
     return join([tag("figure", wide, tag("figcaption", words)), grid])
 
 

@@ -332,9 +332,9 @@ def make_sensitivity(visits: float, site_id: str = SITE) -> pd.DataFrame:
         {
             "site_id": site_id,
             "variant": ["the study", "time at no cost", "nobody shares the vehicle", "model: odd"],
-            "changed": ["", "costs.wage_fraction", "costs.shared_by", "demand.choose"],
-            "from_value": ["", "0.33", "everyone", "test"],
-            "to_value": ["", "0", "nobody", "odd"],
+            "changed": [None, "costs.wage_fraction", "costs.shared_by", "demand.choose"],
+            "from_value": [None, "0.33", "everyone", "test"],
+            "to_value": [None, "0", "nobody", "odd"],
             "model": ["negative_binomial"] * 3 + [None],
             "surplus_per_trip": per_trip,
             "ci_low": np.array(per_trip) * spread,
