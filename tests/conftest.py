@@ -68,7 +68,7 @@ class Checks:
         lines = [
             "# Checks against something outside",
             "",
-            f"Written by `make validate`: {good} of {len(checks)} checks hold.",
+            f"Recorded by the checks that `make validate` runs: {good} of {len(checks)} hold.",
             "",
             "| check | value | expected | tolerance | source | holds |",
             "|---|---:|---:|---:|---|---|",
