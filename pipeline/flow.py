@@ -182,7 +182,7 @@ FLOW: tuple[Stage, ...] = (
     Stage(
         "route",
         route,
-        reads=(Zones, Sites, RoadGraph),
+        reads=(Zones, Sites, RoadGraph, Maybe(ZonePoints)),
         writes=(Routes, RouteLines),
         sections=(RoutesSettings, ComputeSettings),
         summarise=summarise_route,

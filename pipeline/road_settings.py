@@ -176,6 +176,23 @@ class RoutesSettings(Section):
         usual="5 (on foot) to 20 (unmapped lanes)",
         gt=0,
     )
+    local_circuity: float = setting(
+        "Road distance as a multiple of the straight one, for trips inside a zone that has a "
+        "single point.",
+        1.3,
+        unit="ratio",
+        usual="1.2 to 1.4 (Ballou, Rahardja and Sakai 2002, countries' means, from memory)",
+        ge=1,
+        le=5,
+    )
+    local_speed_kmh: float = setting(
+        "Speed of such trips, door to site.",
+        30.0,
+        unit="km/h",
+        usual="20 (towns) to 50 (country)",
+        gt=0,
+        le=130,
+    )
     detached_road_km: float = setting(
         "Roads that join the main network nowhere and are at least this long in all count as "
         "an island: a point beside them is not moved to the main network.",

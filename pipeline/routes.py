@@ -16,6 +16,7 @@ import numpy.typing as npt
 import pandas as pd
 
 from pipeline.errors import RouteError
+from pipeline.homes import MEANS, Homes, by_zone, homes_of
 from pipeline.road_settings import RoutesSettings
 from pipeline.roads.arrays import Bool, Float64, Int64
 from pipeline.roads.graph import (
@@ -25,11 +26,12 @@ from pipeline.roads.graph import (
     unpack_time_min,
 )
 from pipeline.roads.route_lines import Leg, draw_legs
-from pipeline.roads.snapping import TIED, TOO_FAR, Tied, tie_to_roads
+from pipeline.roads.snapping import NO_PATH, TIED, TOO_FAR, Tied, tie_to_roads
 from pipeline.roads.trips import Trips, trips_to
 from pipeline.search import UNREACHED
 from pipeline.study import Study
 from pipeline.tables import REACHED_STATUSES, ROUTE_STATUSES
+from pipeline.within_zone import Discs, charge_within
 
 ALONG = ("ferry_km", "ferry_min", "toll_km", "unpaved_km", "delay_min")
 
@@ -38,12 +40,17 @@ ALONG = ("ferry_km", "ferry_min", "toll_km", "unpaved_km", "delay_min")
 class Ends:
     """The points at the two ends of all trips, tied to the roads."""
 
-    homes: Tied  # one per zone
+    homes: Tied  # one per zone, or several
     doors: Tied  # one per access point
 
 
 def route(
-    zones: pd.DataFrame, sites: pd.DataFrame, graph: RoadGraph, *, study: Study
+    zones: pd.DataFrame,
+    sites: pd.DataFrame,
+    graph: RoadGraph,
+    zone_points: pd.DataFrame | None = None,
+    *,
+    study: Study,
 ) -> tuple[pd.DataFrame, gpd.GeoDataFrame]:
     """Route every zone to every site and back.
 
@@ -51,6 +58,7 @@ def route(
     ----------
     zones, sites : tables of these names; a site has one row per access point.
     graph : the road graph.
+    zone_points : several weighted points per zone; without them trips start at the centroid.
     study : sections [routes] and [compute].
 
     Returns
@@ -59,7 +67,9 @@ def route(
     Distances and times run from door to site: the straight gaps between the points and
     their roads are charged at the speeds that the study states. A site is reached by the
     access point with the fastest route there, and left by the same one;
-    `shortest_distance_km` is to whichever access point is nearest by road.
+    `shortest_distance_km` is to whichever access point is nearest by road. Figures of a zone
+    with several points are means over its people; a trip inside its own zone is never nothing
+    (see ``within_zone``).
 
     Raises
     ------
@@ -67,16 +77,20 @@ def route(
         A site has no access point near a road, or no zone reaches any site.
     """
     settings = study.routes
+    homes = homes_of(zones, zone_points)
     ends = Ends(
-        homes=tie_to_roads(graph, zones, settings, gap_kmh=settings.zone_gap_speed_kmh),
+        homes=tie_to_roads(graph, homes.points, settings, gap_kmh=settings.zone_gap_speed_kmh),
         doors=tie_to_roads(graph, sites, settings, gap_kmh=settings.site_gap_speed_kmh),
     )
     _refuse_sites_off_the_roads(sites, ends.doors, settings)
+    discs = Discs.of(zones, sites)
     tables, legs = [], []
     for rows, trips in _site_by_site(sites, ends, graph, study.compute.workers):
-        site, door = _site_routes(zones, sites, ends, rows, trips)
+        from_points, door = _site_routes(zones, homes, sites, ends, rows, trips)
+        site, lead = by_zone(from_points, door, homes, (*MEANS, *ALONG))
+        site = charge_within(site, discs, rows, homes.counts, sites, settings)
         tables.append(site)
-        legs += _legs(graph, ends, site, door, trips, settings.max_lines)
+        legs += _legs(graph, ends, site, np.where(lead >= 0, door[lead], -1), lead, trips, settings)
     routes = _zone_by_zone(tables)
     if not routes["route_status"].isin(REACHED_STATUSES).any():
         raise RouteError(_nothing_routed(routes))
@@ -119,16 +133,20 @@ def _site_by_site(
 
 
 def _site_routes(
-    zones: pd.DataFrame, sites: pd.DataFrame, ends: Ends, rows: Int64, trips: dict[int, Trips]
+    zones: pd.DataFrame,
+    homes: Homes,
+    sites: pd.DataFrame,
+    ends: Ends,
+    rows: Int64,
+    trips: dict[int, Trips],
 ) -> tuple[pd.DataFrame, Int64]:
-    """The routes of all zones to one site, and the row of the access point that each takes."""
-    door, shortest = _choose_doors(len(zones), ends, trips)
-    there, home, along = _of_doors(len(zones), door, trips)
+    """The routes of all points to one site, and the row of the access point that each takes."""
+    door, shortest = _choose_doors(len(homes.zone), ends, trips)
+    there, home, along = _of_doors(len(homes.zone), door, trips)
     gaps = ends.homes.gap_cost + np.where(door >= 0, ends.doors.gap_cost[door], 0)
     reached = there < UNREACHED
-    status = _status(ends.homes.status, there)
     columns: dict[str, npt.NDArray[np.generic] | str] = {
-        "zone_id": zones["zone_id"].to_numpy(),
+        "zone_id": zones["zone_id"].to_numpy()[homes.zone],
         "site_id": sites["site_id"].iloc[rows[0]],
         "access_id": pd.Series(sites["access_id"].to_numpy()[door]).where(reached).to_numpy(),
         "distance_km": _where(reached, unpack_distance_km(there + gaps)),
@@ -141,8 +159,8 @@ def _site_routes(
     columns["zone_snap_m"] = _where(np.isfinite(ends.homes.gap_m), ends.homes.gap_m)
     nearest = rows[np.argmin(ends.doors.gap_m[rows])]
     columns["site_snap_m"] = ends.doors.gap_m[np.where(door >= 0, door, nearest)]
-    columns["route_status"] = status
-    return pd.DataFrame(columns), np.where(status == "routed", door, -1)
+    columns["route_status"] = _status(ends.homes.status, reached)
+    return pd.DataFrame(columns), door
 
 
 def _choose_doors(count: int, ends: Ends, trips: dict[int, Trips]) -> tuple[Int64, Int64]:
@@ -175,11 +193,10 @@ def _of_doors(count: int, door: Int64, trips: dict[int, Trips]) -> tuple[Int64, 
     return there, home, along
 
 
-def _status(zone_status: npt.NDArray[np.object_], there: Int64) -> npt.NDArray[np.object_]:
-    """Status of each pair; a trip of no length on the road lies within the zone."""
-    reached = np.where((there & DISTANCE_MASK) == 0, "within_zone", "routed")
-    status = np.where(there < UNREACHED, reached, "no_path").astype(object)
-    return np.where(zone_status == TOO_FAR, TOO_FAR, status)
+def _status(tied: npt.NDArray[np.object_], reached: Bool) -> npt.NDArray[np.object_]:
+    """What became of each point's route."""
+    status = np.where(reached, "routed", NO_PATH).astype(object)
+    return np.where(tied == TOO_FAR, TOO_FAR, status)
 
 
 def _where(condition: Bool, values: Float64) -> Float64:
@@ -200,19 +217,23 @@ def _legs(
     ends: Ends,
     site: pd.DataFrame,
     door: Int64,
+    lead: Int64,
     trips: dict[int, Trips],
-    most: int,
+    settings: RoutesSettings,
 ) -> list[Leg]:
-    """Ways through the graph of a site's routed pairs, the shortest drives first."""
-    routed = np.flatnonzero(door >= 0)
+    """Ways through the graph of a site's routed pairs, the shortest drives first.
+
+    `lead` is the point of each zone whose way is drawn, and `door` the access point it takes.
+    """
+    routed = np.flatnonzero(site["route_status"].to_numpy() == "routed")
     minutes = site["drive_time_min"].to_numpy()
-    order = routed[np.argsort(minutes[routed], kind="stable")][:most]
+    order = routed[np.argsort(minutes[routed], kind="stable")][: settings.max_lines]
     return [
         Leg.of(
             graph,
             ends.homes.places,
             trips[int(door[zone])],
-            zone=int(zone),
+            zone=int(lead[zone]),
             door=int(door[zone]),
             names=(str(site["zone_id"].iloc[zone]), str(site["site_id"].iloc[zone])),
             drive_time_min=float(minutes[zone]),

@@ -284,7 +284,16 @@ class Routes(Table):
     site_snap_m: Series[float] = column(
         "gap between the access point and its road", unit="m", ge=0, nullable=True
     )
-    route_status: Series[str] = column("whether a route was found", isin=ROUTE_STATUSES)
+    routed_share: Series[float] | None = column(
+        "share of the zone's people at points with a route; the means are over them",
+        unit="share",
+        ge=0,
+        le=1 + 1e-9,
+        nullable=True,
+    )
+    route_status: Series[str] = column(
+        "whether a route was found; within_zone: the site lies in the zone", isin=ROUTE_STATUSES
+    )
 
     class Config:
         unique = ["zone_id", "site_id"]
