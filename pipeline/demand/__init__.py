@@ -4,6 +4,7 @@
 module              what it holds
 ==================  ==========================================================================
 ``sample``          the rows of one site: counts, exposure, regressors
+``build``           samples of the finished table; covariates checked, unusable rows named
 ``design``          standardising; collinearity and separation, named
 ``family``          the interface of a model, and a fitted one
 ``curves``          semi-log and linear demand curves: visits and areas at an added fee
@@ -27,8 +28,9 @@ module              what it holds
 ==================  ==========================================================================
 """
 
+from pipeline.demand.build import build_samples, study_samples
 from pipeline.demand.rows import fitted_models
-from pipeline.demand.sample import Sample, build_samples, study_samples
+from pipeline.demand.sample import Sample
 from pipeline.demand.stage import demand, demand_with_diagnostics, summarise_demand
 
 __all__ = [

@@ -7,12 +7,13 @@ from dataclasses import replace
 import pandas as pd
 
 from pipeline.demand.bootstrap import bootstrap_covariance
+from pipeline.demand.build import study_samples
 from pipeline.demand.choice import Choice, choose, p_words
 from pipeline.demand.diagnostics import diagnose, placed
 from pipeline.demand.family import FittedModel
 from pipeline.demand.registry import FAMILIES
 from pipeline.demand.rows import estimate_rows, fit_row, fitted_models
-from pipeline.demand.sample import PRICE, Sample, stacked, study_samples
+from pipeline.demand.sample import PRICE, Sample, stacked
 from pipeline.errors import DemandError
 from pipeline.settings import TEST_PAIRS, DemandSettings
 from pipeline.study import Study

@@ -8,9 +8,9 @@ import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
+from pipeline.demand.build import study_samples
 from pipeline.demand.registry import FAMILIES
 from pipeline.demand.rows import fitted_models
-from pipeline.demand.sample import study_samples
 from pipeline.study import Study
 from pipeline.surplus.draws import parameter_draws
 

@@ -17,11 +17,12 @@ import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
+from pipeline.demand.build import build_samples
 from pipeline.demand.curves import SemiLogCurve
 from pipeline.demand.family import FittedModel
 from pipeline.demand.registry import FAMILIES
 from pipeline.demand.rows import fitted_models
-from pipeline.demand.sample import PRICE, Sample, build_samples
+from pipeline.demand.sample import PRICE, Sample
 from pipeline.study import Study
 from pipeline.surplus.draws import parameter_draws
 from pipeline.surplus.fees import fee_rows

@@ -7,7 +7,8 @@ from dataclasses import replace
 import numpy as np
 import pandas as pd
 
-from pipeline.demand.sample import FloatArray, Sample, build_samples
+from pipeline.demand.build import build_samples
+from pipeline.demand.sample import FloatArray, Sample
 
 #: Trips = exp(1.2 − 0.06 × cost + 0.3 × age), age standard normal, cost 2 to 60.
 TRUE = {"const": 1.2, "travel_cost": -0.06, "age": 0.3}

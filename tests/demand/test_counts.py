@@ -7,11 +7,12 @@ import pandas as pd
 import pytest
 import statsmodels.api as sm
 
+from pipeline.demand.build import build_samples
 from pipeline.demand.counts import NegativeBinomial, Poisson
 from pipeline.demand.covariance import covariance, leverages
 from pipeline.demand.design import standardise
 from pipeline.demand.likelihood import LikelihoodFamily, Rows
-from pipeline.demand.sample import FloatArray, Sample, build_samples
+from pipeline.demand.sample import FloatArray, Sample
 from tests.demand.worlds import a_sample, bare_sample, zones
 
 FAMILIES = [Poisson(), NegativeBinomial()]

@@ -6,7 +6,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from pipeline.demand.sample import build_samples
+from pipeline.demand.build import build_samples
 from pipeline.errors import DemandError
 from tests.demand.worlds import a_sample, zones
 

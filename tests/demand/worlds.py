@@ -10,7 +10,8 @@ import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
-from pipeline.demand.sample import FloatArray, Sample, build_samples
+from pipeline.demand.build import build_samples
+from pipeline.demand.sample import FloatArray, Sample
 from pipeline.study import Study, study_from
 
 

@@ -12,8 +12,8 @@ import pandas as pd
 import pytest
 
 from pipeline.demand import demand, fitted_models
+from pipeline.demand.build import build_samples
 from pipeline.demand.choice import overdispersion_test
-from pipeline.demand.sample import build_samples
 from pipeline.surplus import surplus
 from tests.demand.worlds import a_study, number
 from tests.published.boating import COVARIATES, boating_trips

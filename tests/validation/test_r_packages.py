@@ -23,8 +23,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from pipeline.demand.build import build_samples
 from pipeline.demand.registry import FAMILIES
-from pipeline.demand.sample import build_samples
 from pipeline.errors import DemandError
 from tests.conftest import RecordCheck
 from tests.published.boating import COVARIATES, boating_trips
