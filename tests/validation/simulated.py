@@ -25,32 +25,34 @@ LINE = {"const": 60.0, "travel_cost": -0.5, "other": 3.0}
 ALPHA, DELTA, NEVER = 0.5, 1.5, -0.6
 ZONES = 200
 
-Draw = Callable[[np.random.Generator, FloatArray], FloatArray]
-
-
-def _never(random: np.random.Generator, counts: FloatArray) -> FloatArray:
-    """Some of the zones stay empty, whatever their cost."""
-    comes = random.random(len(counts)) > 1 / (1 + np.exp(-NEVER))
-    return np.where(comes, counts, 0.0)
-
-
-#: Counts of zones with a given expected count, by the family that is right for them. The
-#: quasi-Poisson's variance is in proportion to the mean, so its counts are an NB1's.
-COUNTS: dict[str, Draw] = {
-    "poisson": lambda random, mean: random.poisson(mean).astype(float),
-    "quasi_poisson": lambda random, mean: random.poisson(random.gamma(mean / DELTA, DELTA)) * 1.0,
-    "negative_binomial": lambda random, mean: persons.nb2(random, mean, ALPHA),
-    "negative_binomial_1": lambda random, mean: (
-        random.poisson(random.gamma(mean / DELTA, DELTA)) * 1.0
-    ),
-    "zero_inflated_poisson": lambda random, mean: _never(random, random.poisson(mean) * 1.0),
-    "zero_inflated_negative_binomial": lambda random, mean: _never(
-        random, persons.nb2(random, mean, ALPHA)
-    ),
-    "truncated_poisson": lambda random, mean: persons.above_zero(random, mean, 0.0),
-    "truncated_negative_binomial": lambda random, mean: persons.above_zero(random, mean, ALPHA),
-}
+COUNTED = (
+    "poisson",
+    "quasi_poisson",
+    "negative_binomial",
+    "negative_binomial_1",
+    "zero_inflated_poisson",
+    "zero_inflated_negative_binomial",
+    "truncated_poisson",
+    "truncated_negative_binomial",
+)
 LEAST_SQUARES = ("linear", "weighted_linear", "log_linear", "weighted_log_linear")
+
+
+def counts(name: str, random: np.random.Generator, mean: FloatArray) -> FloatArray:
+    """Counts with a given expected count that a family is right for.
+
+    The quasi-Poisson's variance is in proportion to the mean, so its counts are an NB1's.
+    """
+    if name.startswith("truncated"):
+        return persons.above_zero(random, mean, ALPHA if "negative" in name else 0.0)
+    if name in ("quasi_poisson", "negative_binomial_1"):
+        mean = random.gamma(mean / DELTA, DELTA)
+    elif "negative" in name:
+        mean = mean * random.gamma(1 / ALPHA, ALPHA, len(mean))
+    drawn = random.poisson(mean)
+    if name.startswith("zero_inflated"):
+        drawn = np.where(random.random(len(mean)) > 1 / (1 + np.exp(-NEVER)), drawn, 0)
+    return np.asarray(drawn, dtype=float)
 
 
 def zones(name: str, seed: int, count: int = ZONES, *, uneven: bool = False) -> Sample:
@@ -63,9 +65,9 @@ def zones(name: str, seed: int, count: int = ZONES, *, uneven: bool = False) -> 
     random = np.random.default_rng([seed, count])
     cost, other = random.uniform(2, 60, count), random.normal(size=count)
     people = random.lognormal(7.5, 0.8, count).round()
-    if name in COUNTS:
+    if name in COUNTED:
         mean = people * np.exp(ZONAL["const"] - 0.06 * cost + 0.2 * other)
-        return bare_sample(COUNTS[name](random, mean), cost, people, other=other)
+        return bare_sample(counts(name, random, mean), cost, people, other=other)
     noise = random.normal(size=count)
     if name.startswith("weighted"):
         noise = noise * np.sqrt(people.mean() / people)
