@@ -44,16 +44,14 @@ bench: $(VENV)/ready-test  ## speed of reading and searching roads, as ratios, i
 	$(RUN) -m tests.bench.run
 
 validate: $(VENV)/ready-validate  ## the slow checks against outside sources
-	@command -v Rscript > /dev/null && Rscript -e 'for (p in c("pscl", "VGAM", "MASS")) library(p, character.only = TRUE)' > /dev/null 2>&1 || \
-	  apt-get install --yes --no-install-recommends r-base-core r-cran-pscl r-cran-vgam r-cran-mass || \
-	  echo "no R packages: the comparisons with R are skipped"
+	@sh tests/validation/debian.sh
 	$(RUN) -m pytest -m "slow or outside" --validation-to=docs tests
 
 docs: $(VENV)/ready  ## the reference documents that are made from the code
 	@$(RUN) -m pipeline.template
 
-pdf: $(VENV)/ready  ## the report as a tagged PDF (needs Chromium)
-	@$(RUN) -m pipeline.publish.pdf $(STUDY_FILE)
+pdf: $(VENV)/ready  ## the report as a tagged PDF (needs Chromium); PAPER=letter for that size
+	@$(RUN) -m pipeline.publish.pdf "$(STUDY_FILE)" $(PAPER)
 
 compare: $(VENV)/ready  ## two runs side by side: make compare A=data/demo B=data/other
 	@$(RUN) -m pipeline compare $(A) $(B)

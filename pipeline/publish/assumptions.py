@@ -106,7 +106,7 @@ def assumptions_table(results: Results) -> Html:
     chosen = [row for row in rows if row[-1] != DEFAULT]
     left = [row for row in rows if row[-1] == DEFAULT]
     tables = [
-        table(head, part, caption=caption, class_="prose")
+        table(head, part, caption=caption, class_="prose cards")
         for part, caption in (
             (chosen, "Settings that move the answer, as the study chose them"),
             (left, "Settings that move the answer, left at their defaults"),

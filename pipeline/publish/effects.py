@@ -199,8 +199,8 @@ def _cells(row: Any) -> tuple[object, ...]:
     valued = is_known(row.annual_surplus)
     return (
         row.variant,
-        row.from_value,
-        row.to_value,
+        "" if pd.isna(row.from_value) else row.from_value,
+        "" if pd.isna(row.to_value) else row.to_value,
         per_trip if valued else "–",
         annual if valued else "–",
         f"{row.change_percent:+.1f}".replace("-", "−") if is_known(row.change_percent) else "–",

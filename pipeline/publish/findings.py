@@ -185,7 +185,11 @@ def values_table(results: Results, headline: Headline) -> Html:
     names = [KIND_WORDS.get(kind, kind) for kind in kinds]
     head = ("Measure", "Estimate", *(f"{sure} interval, {name}" for name in names), "Unit")
     grid = table(
-        head, body, caption="Values from the chosen model", numbers=range(1, len(head) - 1)
+        head,
+        body,
+        caption="Values from the chosen model",
+        numbers=range(1, len(head) - 1),
+        class_="cards",
     )
     remarks = [tag("li", tag("b", f"{kind}: "), words) for kind, words in _remarks(rows)]
     return join([grid, tag("ul", *remarks, class_="care") if remarks else None])
@@ -214,11 +218,12 @@ def _measure_row(
 
 def _remarks(rows: pd.DataFrame) -> list[tuple[str, str]]:
     """What the notes of the other kinds of interval add: the kind, and each sentence once."""
-    said: dict[tuple[str, str], None] = {}
+    said: dict[str, dict[str, None]] = {}
     for _, group in rows.groupby("measure", sort=False):
         notes = [(str(row.method), str(row.note)) for row in rows_of(group.dropna(subset="note"))]
         for method, note in notes[1:]:
             kind = KIND_WORDS.get(method, method.capitalize())
             words = note.removeprefix(notes[0][1]).strip().removeprefix(f"{kind}: ")
-            said[kind, words] = None
-    return [(kind, words) for kind, words in said if words]
+            sentences = (part.strip(" .") for part in words.split(". "))
+            said.setdefault(kind, {}).update(dict.fromkeys(filter(None, sentences)))
+    return [(kind, ". ".join(words) + ".") for kind, words in said.items() if words]

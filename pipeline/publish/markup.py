@@ -51,13 +51,15 @@ def table(
 ) -> Html:
     """A table with a caption, one header row and row headers in the first column.
 
-    A column that is empty in every row is left out.
+    A column that is empty in every row is left out. With the class `cards` each row becomes a
+    card on a narrow screen; its cells carry the column's name with them, and say what they are,
+    since a table that is not laid out as one is not read out as one either.
 
     Parameters
     ----------
     numbers : positions of the columns that are set flush right.
     """
-    right = frozenset(numbers)
+    right, cards = frozenset(numbers), "cards" in (class_ or "").split()
     names, cells = list(head), [list(row) for row in rows]
     filled = {i for row in cells for i, cell in enumerate(row) if i == 0 or cell != ""}
     kept = sorted(filled) if cells else list(range(len(names)))
@@ -65,23 +67,25 @@ def table(
     def side(position: int) -> str | None:
         return "n" if position in right else None
 
-    header = tag(
-        "tr", *(tag("th", cell, scope="col", class_=side(i)) for i, cell in _at(names, kept))
-    )
+    def role(name: str) -> str | None:
+        return name if cards else None
+
+    def cell_of(position: int, cell: object) -> Html:
+        if position == 0:
+            how = {"scope": "row", "role": role("rowheader")}
+            return tag("th", cell, class_=side(position), **how)
+        label = names[position] if cards else None
+        return tag("td", cell, class_=side(position), role=role("cell"), data_head=label)
+
+    def heading(position: int, name: object) -> Html:
+        return tag("th", name, scope="col", class_=side(position), role=role("columnheader"))
+
+    header = tag("tr", *(heading(i, name) for i, name in _at(names, kept)), role=role("row"))
     body = [
-        tag(
-            "tr",
-            *(
-                tag("th", cell, scope="row", class_=side(i))
-                if i == 0
-                else tag("td", cell, class_=side(i))
-                for i, cell in _at(row, kept)
-            ),
-        )
-        for row in cells
+        tag("tr", *(cell_of(i, c) for i, c in _at(row, kept)), role=role("row")) for row in cells
     ]
     inner = (tag("caption", tag("span", caption)), tag("thead", header), tag("tbody", *body))
-    grid = tag("table", *inner, class_=class_)
+    grid = tag("table", *inner, class_=class_, role=role("table"))
     return tag("div", grid, class_="wide", tabindex="0", role="region", aria_label=caption)
 
 

@@ -153,3 +153,18 @@ for (const figure of all(document, "[data-map]")) {
   }
   for (const part of all(figure, ".map-tool")) part.hidden = false;
 }
+
+// --- print -----------------------------------------------------------------------------------
+
+// Paper unfolds nothing: what is folded is opened for the print and folded again after it, but
+// for a table of so many rows that nobody would read it on paper.
+const MOST_ROWS = 200;
+let unfolded = [];
+window.addEventListener("beforeprint", () => {
+  unfolded = all(document, "details:not([open])")
+    .filter((part) => part.querySelectorAll("tr").length <= MOST_ROWS);
+  for (const part of unfolded) part.open = true;
+});
+window.addEventListener("afterprint", () => {
+  for (const part of unfolded) part.open = false;
+});

@@ -6,6 +6,7 @@ import base64
 import hashlib
 from collections.abc import Callable
 from pathlib import Path
+from typing import NamedTuple
 
 from pipeline.publish.answer import masthead
 from pipeline.publish.assumptions import assumptions_table
@@ -34,14 +35,14 @@ def build_report(results: Results) -> str:
     script = Html(SCRIPT_FILE.read_text(encoding="utf-8"))
     base = base_map(results)
     maps = _maps(results, base)
+    parts = _sections(results, lambda h: map_figure(results, base, h, maps.get(h.site_id)))
     body = tag(
         "body",
         tag("a", "Skip to the evidence", href="#map", class_="skip"),
         base.defs if base else None,
         masthead(results),
-        tag(
-            "main", *_sections(results, lambda h: map_figure(results, base, h, maps.get(h.site_id)))
-        ),
+        _contents(parts),
+        tag("main", *(part.markup for part in parts)),
         tag("footer", attribution(results)),
         data_block(results, list(maps.values())),
         tag("script", script),
@@ -52,6 +53,16 @@ def build_report(results: Results) -> str:
 def plain_page(title: str, body: Html) -> str:
     """A page in the report's style, without script."""
     return _page(title, tag("body", tag("main", body)), "")
+
+
+def on_paper(page: str, paper: str) -> str:
+    """A report whose print has a stated paper size (a CSS page size) and not the printer's own.
+
+    Its security policy names the digest of the style; that changes with the style.
+    """
+    style = STYLE_FILE.read_text(encoding="utf-8")
+    sized = style.replace("size: auto;", f"size: {paper};")
+    return page.replace(style, sized).replace(_digest(style), _digest(sized))
 
 
 def _page(title: str, body: Html, script: str) -> str:
@@ -89,7 +100,7 @@ def _maps(results: Results, base: BaseMap | None) -> dict[str, MapFigures]:
     return {site_id: figures for site_id, figures in found.items() if figures is not None}
 
 
-def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Html]:
+def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Section]:
     def each(draw: Callable[[Results, Headline], Html]) -> Html:
         return join(
             join([site_heading(results, headline), draw(results, headline)])
@@ -108,7 +119,7 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Ht
         *_reported(results),
         _section("models", "Models tried", _MODELS, each(models_tried)),
         *_referee(results, each),
-        _section("roads", "The road data", _ROADS, roads) if roads else Html(""),
+        *([_section("roads", "The road data", _ROADS, roads)] if roads else []),
         _section("methods", "How it was worked out", _METHODS, *methods(results)),
         _section("care", "Cautions", "Read these before quoting a figure.", cautions()),
         _section("sources", "Sources", _SOURCES, sources(results)),
@@ -116,14 +127,14 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Ht
     ]
 
 
-def _effects(results: Results, each: Callable[..., Html]) -> list[Html]:
+def _effects(results: Results, each: Callable[..., Html]) -> list[Section]:
     """The section on other assumptions, where some were run."""
     if not has_effects(results):
         return []
     return [_section("effects", "What the assumptions do", _EFFECTS, each(effects_figure))]
 
 
-def _reported(results: Results) -> list[Html]:
+def _reported(results: Results) -> list[Section]:
     """The section on what the records report, where they do."""
     body = reported_table(results)
     return [] if body is None else [_section("reported", "Reported and routed", _REPORTED, body)]
@@ -135,7 +146,7 @@ _REPORTED = (
 )
 
 
-def _referee(results: Results, each: Callable[..., Html]) -> list[Html]:
+def _referee(results: Results, each: Callable[..., Html]) -> list[Section]:
     """The section for a referee, where the demand stage made diagnostics."""
     if results.diagnostics is None:
         return []
@@ -178,8 +189,23 @@ _SOURCES = "The published work that these methods come from."
 _INPUTS = "Whoever has these files, settings and this code can repeat the run."
 
 
-def _section(name: str, title: str, lead: str, *body: object) -> Html:
+class Section(NamedTuple):
+    """A part of the page: where links find it, what it is called, and its elements."""
+
+    name: str
+    title: str
+    markup: Html
+
+
+def _section(name: str, title: str, lead: str, *body: object) -> Section:
     """A section: title and lead in the rail, the matter beside it."""
     rail = tag("div", tag("h2", title, id=f"{name}-title"), tag("p", lead), class_="rail")
     matter = tag("div", *body, class_="matter")
-    return tag("section", rail, matter, id=name, aria_labelledby=f"{name}-title")
+    markup = tag("section", rail, matter, id=name, aria_labelledby=f"{name}-title")
+    return Section(name, title, markup)
+
+
+def _contents(sections: list[Section]) -> Html:
+    """What follows, each a link."""
+    entries = [tag("li", tag("a", part.title, href=f"#{part.name}")) for part in sections]
+    return tag("nav", tag("ol", *entries), aria_label="Contents", class_="contents")

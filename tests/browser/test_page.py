@@ -10,7 +10,9 @@ from typing import Any
 
 import pytest
 
+from pipeline.errors import PublishError
 from pipeline.publish import Publication
+from pipeline.publish.pdf import print_report
 from tests.publish.conftest import COST
 
 MEASURES = ("visits", "revenue", "consumer_surplus", "surplus_lost")
@@ -148,12 +150,16 @@ def test_without_script_the_page_still_says_everything(browser: Any, report: Pat
     context.close()
 
 
-@pytest.mark.parametrize("paper", ["A4", "Letter"])
-def test_print_has_every_section_and_is_tagged(page: Any, tmp_path: Path, paper: str) -> None:
+@pytest.mark.parametrize(("paper", "box"), [("A4", "595 842"), ("letter", "612 792")])
+def test_print_has_every_section_and_is_tagged(
+    page: Any, report: Path, tmp_path: Path, paper: str, box: str
+) -> None:
     path = tmp_path / "report.pdf"
-    page.pdf(path=str(path), format=paper, tagged=True, print_background=True)
+    print_report(report, path, paper=paper)
     content = path.read_bytes()
-    assert len(re.findall(rb"/Type\s*/Page\b", content)) >= 5
+    boxes = re.findall(rb"/MediaBox\s*\[\s*0 0 ([\d.]+) ([\d.]+)", content)
+    assert len(boxes) >= 5
+    assert {" ".join(f"{float(side):.0f}" for side in sides) for sides in boxes} == {box}
     assert b"/StructTreeRoot" in content
     titles = page.locator("h2").all_inner_texts()
     assert len(titles) == SECTIONS
@@ -161,7 +167,34 @@ def test_print_has_every_section_and_is_tagged(page: Any, tmp_path: Path, paper:
         pytest.skip("the text needs Debian's package poppler-utils: apt-get install poppler-utils")
     command = ("pdftotext", str(path), "-")
     text = subprocess.run(command, capture_output=True, text=True, check=True).stdout
-    assert [title for title in titles if title not in text] == []
+    # Once in the contents and once over the section, and never alone at the foot of a page.
+    assert [title for title in titles if text.count(title) < 2] == []
+    feet = [leaf.strip().splitlines()[-1] for leaf in text.split("\f") if leaf.strip()]
+    assert set(feet) & set(titles) == set()
+    # The folded table of zones is unfolded on paper.
+    assert "Parish 007" in text
+
+
+def test_an_unknown_paper_is_refused(report: Path, tmp_path: Path) -> None:
+    with pytest.raises(PublishError, match="paper 'A5' is not known; choose from A4, letter"):
+        print_report(report, tmp_path / "report.pdf", paper="A5")
+
+
+def test_the_contents_lead_to_every_section(page: Any) -> None:
+    links = page.locator(".contents a").evaluate_all("a => a.map(x => x.getAttribute('href'))")
+    sections = page.locator("main > section").evaluate_all("s => s.map(x => '#' + x.id)")
+    assert links == sections
+    page.locator(".contents a").last.press("Enter")
+    assert page.evaluate("location.hash") == sections[-1]
+
+
+def test_a_phone_shows_assumptions_as_cards_that_name_their_cells(page: Any) -> None:
+    page.set_viewport_size({"width": 360, "height": 800})
+    cells = page.locator("#assumed table td:not(:empty)")
+    labels = cells.evaluate_all("c => c.map(x => getComputedStyle(x, '::before').content)")
+    assert set(labels) == {'"Value"', '"Unit"', '"Usual value"', '"Set by"'}
+    regions = page.locator("#assumed .wide")
+    assert regions.evaluate_all("r => r.every(x => x.scrollWidth <= x.clientWidth)")
 
 
 def test_every_control_and_table_is_reached_by_tab(page: Any) -> None:

@@ -78,8 +78,12 @@ def test_geopackage_is_projected_as_the_study_says(tmp_path: Path) -> None:
 
 @pytest.mark.parametrize("layer", LAYERS)
 def test_geojson_keeps_rfc_7946(folder: Path, layer: str) -> None:
+    check_rfc_7946(folder / "geojson" / f"{layer}.geojson")
+
+
+def check_rfc_7946(path: Path) -> None:
     """RFC 7946: no crs member (4), right-hand rule (3.1.6), WGS 84 with 6 decimals (11.2)."""
-    content = read_json(folder / "geojson" / f"{layer}.geojson")
+    content = read_json(path)
     assert content["type"] == "FeatureCollection"
     assert "crs" not in content
     assert content["features"]

@@ -7,8 +7,8 @@ from tests.publish.test_report import Page
 
 
 def methods_of(report: str) -> str:
-    text = Page(report).text
-    return text.partition("How it was worked out")[2].partition("Cautions")[0]
+    section = report.partition('<section id="methods"')[2].partition("</section>")[0]
+    return Page(f"<body>{section}</body>").text
 
 
 def test_methods_name_what_this_run_did() -> None:
