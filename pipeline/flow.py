@@ -208,7 +208,7 @@ FLOW: tuple[Stage, ...] = (
         demand_with_diagnostics,
         reads=(FINISHED, Maybe(Zones)),
         writes=(Estimates, Fit, Diagnostics),
-        sections=(DemandSettings, SurplusSettings),
+        sections=(DemandSettings, SurplusSettings, ComputeSettings),
         summarise=summarise_demand,
     ),
     Stage(

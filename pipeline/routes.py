@@ -6,16 +6,17 @@ traffic the way home, one more the shortest distance; zones cost next to nothing
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from functools import partial
 
 import geopandas as gpd
 import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
+from pipeline.at_hand import Find, at_hand
 from pipeline.errors import RouteError
+from pipeline.executor import make_executor
 from pipeline.homes import MEANS, Homes, by_zone, homes_of
 from pipeline.road_settings import RoutesSettings
 from pipeline.roads.arrays import Bool, Float64, Int64
@@ -42,6 +43,18 @@ class Ends:
 
     homes: Tied  # one per zone, or several
     doors: Tied  # one per access point
+
+
+@dataclass(frozen=True)
+class Errand:
+    """What the searches of every site need beside the graph."""
+
+    zones: pd.DataFrame  # without geometry
+    sites: pd.DataFrame
+    homes: Homes
+    discs: Discs
+    ends: Ends
+    settings: RoutesSettings
 
 
 def route(
@@ -83,18 +96,18 @@ def route(
         doors=tie_to_roads(graph, sites, settings, gap_kmh=settings.site_gap_speed_kmh),
     )
     _refuse_sites_off_the_roads(sites, ends.doors, settings)
-    discs = Discs.of(zones, sites)
-    tables, legs = [], []
-    for rows, trips in _site_by_site(sites, ends, graph, study.compute.workers):
-        from_points, door = _site_routes(zones, homes, sites, ends, rows, trips)
-        site, lead = by_zone(from_points, door, homes, (*MEANS, *ALONG))
-        site = charge_within(site, discs, rows, homes.counts, sites, settings)
-        tables.append(site)
-        legs += _legs(graph, ends, site, np.where(lead >= 0, door[lead], -1), lead, trips, settings)
+    points = pd.DataFrame(zones.drop(columns="geometry", errors="ignore"))
+    errand = Errand(points, sites, homes, Discs.of(zones, sites), ends, settings)
+    tables: list[pd.DataFrame] = []
+    legs: list[Leg] = []
+    with make_executor(study.compute) as executor, at_hand(graph, errand, executor) as find:
+        for site, of_site in executor.map(partial(_one_site, find), _rows_of_sites(sites)):
+            tables.append(site)
+            legs = _kept(legs + of_site, sites, settings)
     routes = _zone_by_zone(tables)
     if not routes["route_status"].isin(REACHED_STATUSES).any():
         raise RouteError(_nothing_routed(routes))
-    return routes, _lines(legs, sites, graph, ends, settings)
+    return routes, _lines(legs, graph, ends, settings)
 
 
 def summarise_route(outputs: tuple[pd.DataFrame, gpd.GeoDataFrame]) -> str:
@@ -108,28 +121,30 @@ def summarise_route(outputs: tuple[pd.DataFrame, gpd.GeoDataFrame]) -> str:
     return ", ".join(words) + " (see routes.csv)"
 
 
-def _site_by_site(
-    sites: pd.DataFrame, ends: Ends, graph: RoadGraph, workers: int
-) -> Iterator[tuple[Int64, dict[int, Trips]]]:
-    """Rows of each site's access points, and the trips to those that are on a road.
-
-    The searches run ahead on `workers` threads, one site each; compiled code holds no lock.
-    """
-
-    def all_trips(rows: Int64) -> dict[int, Trips]:
-        on_road = rows[ends.doors.status[rows] == TIED]
-        places = ends.doors.places
-        return {int(row): trips_to(graph, ends.homes.places, places, int(row)) for row in on_road}
-
+def _rows_of_sites(sites: pd.DataFrame) -> list[Int64]:
+    """Rows of each site's access points."""
     site_ids = sites["site_id"].to_numpy()
-    groups = [np.flatnonzero(site_ids == site_id) for site_id in pd.unique(sites["site_id"])]
-    with ThreadPoolExecutor(workers) as pool:
-        for start in range(0, len(groups), workers):
-            batch = groups[start : start + workers]
-            yield from zip(batch, pool.map(all_trips, batch), strict=True)
+    return [np.flatnonzero(site_ids == site_id) for site_id in pd.unique(sites["site_id"])]
 
 
 # --- one site --------------------------------------------------------------------------------
+
+
+def _one_site(find: Find[Errand], rows: Int64) -> tuple[pd.DataFrame, list[Leg]]:
+    """The routes of all zones to one site, and the ways of the shortest of them.
+
+    This is what another process or machine does: the graph is opened there.
+    """
+    graph, errand = find()
+    ends, homes, settings = errand.ends, errand.homes, errand.settings
+    on_road = rows[ends.doors.status[rows] == TIED]
+    points, doors = ends.homes.places, ends.doors.places
+    trips = {int(row): trips_to(graph, points, doors, int(row)) for row in on_road}
+    from_points, door = _site_routes(errand.zones, homes, errand.sites, ends, rows, trips)
+    site, lead = by_zone(from_points, door, homes, (*MEANS, *ALONG))
+    site = charge_within(site, errand.discs, rows, homes.counts, errand.sites, settings)
+    door = np.where(lead >= 0, door[lead], -1)
+    return site, _legs(graph, ends, site, door, lead, trips, settings)
 
 
 def _site_routes(
@@ -242,20 +257,18 @@ def _legs(
     ]
 
 
-def _lines(
-    legs: list[Leg],
-    sites: pd.DataFrame,
-    graph: RoadGraph,
-    ends: Ends,
-    settings: RoutesSettings,
-) -> gpd.GeoDataFrame:
-    """Lines of the pairs that are kept: sites before substitutes, then the shortest drives."""
+def _kept(legs: list[Leg], sites: pd.DataFrame, settings: RoutesSettings) -> list[Leg]:
+    """Those that are drawn: sites before substitutes, then the shortest drives."""
     roles = dict(zip(sites["site_id"], sites["role"], strict=True))
-    kept = sorted(legs, key=lambda leg: (roles[leg.site_id] != "site", leg.drive_time_min))
-    kept = kept[: settings.max_lines]
-    return draw_legs(
-        graph, ends.homes.places, ends.doors.places, kept, tolerance_m=settings.line_tolerance_m
-    )
+    ordered = sorted(legs, key=lambda leg: (roles[leg.site_id] != "site", leg.drive_time_min))
+    return ordered[: settings.max_lines]
+
+
+def _lines(
+    legs: list[Leg], graph: RoadGraph, ends: Ends, settings: RoutesSettings
+) -> gpd.GeoDataFrame:
+    tolerance_m = settings.line_tolerance_m
+    return draw_legs(graph, ends.homes.places, ends.doors.places, legs, tolerance_m=tolerance_m)
 
 
 # --- what cannot be --------------------------------------------------------------------------

@@ -7,7 +7,6 @@ there. The first row of a site is the study itself, as its own tables give it.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from concurrent.futures import Executor
 from dataclasses import dataclass
 from typing import Any
 
@@ -18,8 +17,9 @@ from pandera.config import config_context
 from pipeline.costs import cost
 from pipeline.demand import demand
 from pipeline.errors import PipelineError
-from pipeline.executor import in_batches, make_executor
+from pipeline.executor import Workforce, in_batches, make_executor
 from pipeline.finished import join, repriced
+from pipeline.settings import ComputeSettings
 from pipeline.study import Study
 from pipeline.surplus import surplus
 from pipeline.tables import Sensitivity
@@ -89,7 +89,7 @@ def sensitivity(
         finished = None if pricing is None else zone_table
         variants = [*standard_variants(study, finished, chosen), *variants]
     base = [row | _about(None, study) for row in _site_rows(fit, values)]
-    with make_executor(study.compute.workers) as executor:
+    with make_executor(study.compute) as executor:
         rows = run_variants(variants, tables, study, executor)
     table = pd.DataFrame([*base, *rows])
     order = {site: place for place, site in enumerate(dict.fromkeys(table["site_id"]))}
@@ -98,11 +98,12 @@ def sensitivity(
 
 
 def run_variants(
-    variants: list[Variant], tables: Tables, study: Study, executor: Executor
+    variants: list[Variant], tables: Tables, study: Study, executor: Workforce
 ) -> list[Row]:
     """Rows of all alternatives, in their order, whatever the executor."""
-    workers = max(1, study.compute.workers)
-    results = in_batches(executor, run_batch, variants, tables, study, batches=workers)
+    alone = study.model_copy(update={"compute": ComputeSettings()})  # no executor in another
+    batches = executor.workers
+    results = in_batches(executor, run_batch, variants, tables, alone, batches=batches)
     return [row for rows in results for row in rows]
 
 

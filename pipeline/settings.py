@@ -290,7 +290,14 @@ class ComputeSettings(Section):
     """How the work is done; never changes a figure."""
 
     section_name: ClassVar[str] = "compute"
-    workers: int = setting("Processes for the searches.", 1, ge=1)
+    workers: int = setting(
+        "Processes for searches, alternatives and replicates; 1: all in this one.", 1, ge=1
+    )
+    scheduler: str | None = setting(
+        "Address of a dask.distributed scheduler (tcp://host:port) whose workers take the place "
+        "of these processes; they need this program, and the study's folder by the same path.",
+        None,
+    )
 
 
 SECTIONS: tuple[type[Section], ...] = (

@@ -77,8 +77,12 @@ class Study(BaseModel):
         return dict(_plain(self))
 
     def settings_digest(self, sections: tuple[type[Section], ...]) -> str:
-        """SHA-256 of the given sections and [study]; paths count by their name only."""
-        plain = json.dumps(_plain(self.only(sections)), sort_keys=True)
+        """SHA-256 of the given sections and [study]; paths count by their name only.
+
+        [compute] does not count: where the work is done changes no figure.
+        """
+        counting = tuple(section for section in sections if section is not ComputeSettings)
+        plain = json.dumps(_plain(self.only(counting)), sort_keys=True)
         return hashlib.sha256(plain.encode()).hexdigest()
 
 

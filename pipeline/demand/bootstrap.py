@@ -140,10 +140,10 @@ def _cold(model: FittedModel, sample: Sample, weight: FloatArray) -> FloatArray:
 
 
 def bootstrap_covariance(
-    model: FittedModel, sample: Sample, *, count: int, seed: int
+    model: FittedModel, sample: Sample, *, count: int, seed: int, executor: Executor | None = None
 ) -> FittedModel:
     """The model with the covariance of its replicates."""
-    drawn = replicates(model, sample, count=count, seed=seed)
+    drawn = replicates(model, sample, count=count, seed=seed, executor=executor)
     free = np.isfinite(np.diag(model.covariance))
     spread = np.full_like(model.covariance, np.nan)
     spread[np.ix_(free, free)] = np.cov(drawn.theta[:, free], rowvar=False)

@@ -15,6 +15,7 @@ from pipeline.demand.registry import FAMILIES
 from pipeline.demand.rows import estimate_rows, fit_row, fitted_models
 from pipeline.demand.sample import PRICE, Sample, stacked
 from pipeline.errors import DemandError
+from pipeline.executor import make_executor
 from pipeline.settings import TEST_PAIRS, DemandSettings
 from pipeline.study import Study
 from pipeline.tables import Diagnostics, Estimates, Fit
@@ -126,7 +127,8 @@ def _fit(name: str, sample: Sample, study: Study) -> FittedModel:
     model = replace(model, errors=model.errors or errors)
     if model.converged and errors == "bootstrap":
         count, seed = study.surplus.bootstrap or 500, study.study.seed
-        model = bootstrap_covariance(model, sample, count=count, seed=seed)
+        with make_executor(study.compute) as executor:
+            model = bootstrap_covariance(model, sample, count=count, seed=seed, executor=executor)
     return replace(model, notes=(*model.notes, *sampling_notes(name, sample, sampling)))
 
 

@@ -121,6 +121,14 @@ class RoadGraph:
         """How many directed arcs there are."""
         return len(self.arc_node)
 
+    @property
+    def folder(self) -> Path | None:
+        """Where the arrays lie, if they have been opened there."""
+        mapped = self.arc_cost.base
+        if isinstance(mapped, np.memmap) and mapped.filename is not None:
+            return Path(str(mapped.filename)).parent
+        return None
+
     def main_edges(self) -> Bool:
         """Edges that can be reached from the rest of a main network and left to it again."""
         network = self.node_network

@@ -9,7 +9,7 @@ import geopandas as gpd
 import numpy as np
 import shapely
 
-from pipeline.roads.arrays import Float64, Int64, ranges
+from pipeline.roads.arrays import Float64, Int32, Int64, ranges
 from pipeline.roads.extract import degrees
 from pipeline.roads.graph import RoadGraph
 from pipeline.roads.lines import line_strings
@@ -40,7 +40,7 @@ class Leg:
     zone: int
     door: int
     leave: int
-    edges: Int64
+    edges: Int32
     seed: int
 
     @classmethod
@@ -65,7 +65,7 @@ class Leg:
             node = int(left_to(graph, edge, np.array([spent == 0]), by_end=by_end)[0])
             edges, number = path_edges(trips.tree.parent, trips.tree.via, graph.in_edge, node)
             seed = int(trips.seed_end[number])
-        return cls(*names, drive_time_min, zone, door, leave, edges, int(seed))
+        return cls(*names, drive_time_min, zone, door, leave, edges.astype(np.int32), int(seed))
 
 
 def draw_legs(
@@ -133,7 +133,7 @@ def _vertex_after(places: Places, index: int) -> int:
     return int(places.nearest.vertex[index]) + 1
 
 
-def _along_edges(graph: RoadGraph, edges: Int64) -> Int64:
+def _along_edges(graph: RoadGraph, edges: Int32) -> Int64:
     """Vertices along directed edges, in the order of travel."""
     edge, backward = edges // 2, edges % 2 == 1
     starts = graph.edge_first[edge].astype(np.int64)

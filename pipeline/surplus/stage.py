@@ -121,7 +121,7 @@ def _value_rows(
         rows += fieller_rows(model, valued, confidence)
         rows += simulated_rows(model, valued, draws, confidence, seed=seed)
         if replicated and study.surplus.bootstrap:
-            with make_executor(study.compute.workers) as executor:
+            with make_executor(study.compute) as executor:
                 rows += bootstrap_rows(model, valued, study, executor)
     units = measure_units(study.study.currency)
     frame = pd.DataFrame(rows)
