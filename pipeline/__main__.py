@@ -26,6 +26,9 @@ STAGE_NAMES = (
     "publish",
 )
 
+COMMANDS = ("all", "new", "compare", "completion", *STAGE_NAMES)
+OPTIONS = ("--again", "--help", "--json", "--output", "--quiet")
+
 EXAMPLES = """\
 examples
   python -m pipeline all config/demo.toml        the whole flow, ending with the report
@@ -35,6 +38,7 @@ examples
   python -m pipeline all my/park.toml --quiet    only the result, or the error
   python -m pipeline all my/park.toml --json     the result for a program
   python -m pipeline compare A/output B/output   two runs side by side: comparison.html
+  source <(python -m pipeline completion)        complete commands and files in bash or zsh
 
 stages, in their order
   geocode      a zone of origin for every visit record
@@ -56,12 +60,17 @@ exit codes: 0 done, 1 something in the study or its data is wrong, 2 a wrong com
 
 def main(arguments: list[str] | None = None) -> int:
     """Run a command line; return the exit code."""
-    options = _parser().parse_args(arguments)
+    parser = _parser()
+    options = parser.parse_args(arguments)
+    if options.study_file is None and options.command != "completion":
+        parser.error(f"{options.command} needs a study file (after 'new', a name)")
     try:
         if options.command == "new":
             return _new(options.study_file)
         if options.command == "compare":
             return _compare(options)
+        if options.command == "completion":
+            return _completion()
         return _run(options)
     except PipelineError as error:
         if options.json:
@@ -83,12 +92,14 @@ def _parser() -> argparse.ArgumentParser:
     parser.add_argument(
         "command",
         metavar="STAGE",
-        choices=("all", "new", "compare", *STAGE_NAMES),
-        help="'all', one stage (with those before it that are out of date), 'new' or 'compare'",
+        choices=COMMANDS,
+        help="'all', one stage (with those before it that are out of date), 'new', 'compare' or "
+        "'completion'",
     )
     parser.add_argument(
         "study_file",
         metavar="STUDY_FILE",
+        nargs="?",
         help="the study file; after 'new': the study's name; after 'compare': the first run",
     )
     parser.add_argument("second", metavar="B", nargs="?", help="after 'compare': the second run")
@@ -171,6 +182,13 @@ def _compare(options: argparse.Namespace) -> int:
         compare_runs(read_run(Path(options.study_file)), read_run(Path(options.second))), page
     )
     print(f"wrote {page}")
+    return 0
+
+
+def _completion() -> int:
+    from pipeline.completion import completion_script
+
+    print(completion_script(COMMANDS, OPTIONS), end="")
     return 0
 
 

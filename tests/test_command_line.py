@@ -4,11 +4,13 @@ from __future__ import annotations
 
 import json
 import re
+import shutil
+import subprocess
 from pathlib import Path
 
 import pytest
 
-from pipeline.__main__ import EXAMPLES, main
+from pipeline.__main__ import EXAMPLES, OPTIONS, main
 from pipeline.progress import stage_progress
 from tests.ministudy import write_ministudy
 
@@ -111,3 +113,47 @@ def test_compare_of_what_is_no_run_says_so(
     assert "holds no finished run" in capsys.readouterr().err
     assert main(["compare", str(tmp_path)]) == 1
     assert "compare needs two runs" in capsys.readouterr().err
+
+
+def completed(words: str, folder: Path, capsys: pytest.CaptureFixture[str]) -> list[str]:
+    """What bash offers when the words are typed and the last one is to be completed."""
+    assert main(["completion"]) == 0
+    script = capsys.readouterr().out
+    typed = words.split(" ")
+    ask = (
+        f"{script}\nCOMP_WORDS=({' '.join(typed)}); COMP_CWORD={len(typed) - 1}; _roadworth\n"
+        'printf "%s\\n" "${COMPREPLY[@]}"'
+    )
+    done = subprocess.run(
+        ["bash", "-c", ask], cwd=folder, capture_output=True, text=True, check=True
+    )
+    assert done.stderr == ""
+    return done.stdout.split()
+
+
+@pytest.mark.skipif(shutil.which("bash") is None, reason="needs bash")
+def test_bash_completes_commands_options_and_study_files(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    (tmp_path / "park.toml").touch()
+    (tmp_path / "park.csv").touch()
+    (tmp_path / "runs").mkdir()
+    assert completed("roadworth ro", tmp_path, capsys) == ["roads", "route"]
+    assert completed("roadworth route p", tmp_path, capsys) == ["park.toml"]
+    assert completed("roadworth route park.toml --q", tmp_path, capsys) == ["--quiet"]
+    assert completed("roadworth all park.toml --output r", tmp_path, capsys) == ["runs"]
+    assert completed("roadworth compare r", tmp_path, capsys) == ["runs"]
+
+
+def test_completion_knows_every_option(capsys: pytest.CaptureFixture[str]) -> None:
+    with pytest.raises(SystemExit):
+        main(["--help"])
+    said = capsys.readouterr().out.partition("examples")[0]
+    assert set(re.findall(r"--[a-z]+", said)) == set(OPTIONS)
+
+
+def test_a_command_without_its_study_file_is_told_so(capsys: pytest.CaptureFixture[str]) -> None:
+    with pytest.raises(SystemExit) as caught:
+        main(["route"])
+    assert caught.value.code == 2
+    assert "route needs a study file" in capsys.readouterr().err
