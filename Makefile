@@ -60,7 +60,10 @@ clean:  ## remove what the flow made for STUDY (inputs stay)
 	rm -rf data/$(STUDY)/work data/$(STUDY)/output
 
 help:  ## this list
-	@echo "make TARGET [STUDY=name]      STUDY is demo unless you say otherwise"
+	@echo "make all                       the invented demo, from visit records to the report"
+	@echo "make new STUDY=lakeshore       a study of your own; then: make all STUDY=lakeshore"
+	@echo "make all STUDY_FILE=my/park.toml"
+	@echo "make compare A=data/demo B=data/lakeshore"
 	@echo
 	@grep -hE '^[a-z]+:.*##' $(MAKEFILE_LIST) | sed -E 's/^([a-z]+):.*## */  \1\t/' | expand -t 14
 	@echo

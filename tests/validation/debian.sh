@@ -8,6 +8,7 @@ install() {
 command -v chromium > /dev/null && command -v pdftotext > /dev/null ||
   install chromium poppler-utils || echo "no Chromium: the checks in a browser are skipped"
 [ "$1" = browser ] && exit 0
+command -v faketime > /dev/null || install faketime || echo "no faketime: the run on another day is skipped"
 command -v osmium > /dev/null || install osmium-tool || echo "no osmium: its checks are skipped"
 Rscript -e 'for (p in c("pscl", "VGAM", "MASS")) library(p, character.only = TRUE)' > /dev/null 2>&1 ||
   install r-base-core r-cran-pscl r-cran-vgam r-cran-mass || echo "no R packages: the comparisons with R are skipped"
