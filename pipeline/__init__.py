@@ -10,7 +10,8 @@ roads        ``roads``                         road graph, ``road_quality``, ``r
 route        ``routes`` (``search``)           ``routes``, ``route_lines``
 cost         ``costs``                         ``costs``, ``reported_check``
 join         ``finished``                      ``zone_table``, ``trip_table``
-demand       ``demand``                        ``estimates``, ``fit``, ``diagnostics``
+demand       ``demand``                        ``estimates``, ``fit``, ``diagnostics``,
+                                               ``residuals``
 surplus      ``surplus``                       ``surplus``, ``fee_schedule``, ``zone_surplus``
 sensitivity  ``sensitivity`` (``variants``)    ``sensitivity``
 publish      ``publish``                       GeoPackage, GeoJSON, Parquet, CSV, report, run.json

@@ -616,6 +616,25 @@ class Diagnostics(Table):
         unique = ["site_id", "model", "diagnostic", "subject"]
 
 
+class Residuals(Table):
+    """What the chosen model leaves of each zone: one row per zone and site of the regression."""
+
+    zone_id: Series[str] = column("zone of origin")
+    site_id: Series[str] = column("site that is valued")
+    model: Series[str] = column("the chosen model")
+    residual: Series[float] = column(
+        "more (positive) or fewer visits than expected, in standard deviations: about standard "
+        "normal where the model is right"
+    )
+    residual_kind: Series[str] = column(
+        "randomised quantile (counts with a likelihood) or standardised (least squares, "
+        "quasi-Poisson)"
+    )
+
+    class Config:
+        unique = ["zone_id", "site_id"]
+
+
 # --- surplus ---------------------------------------------------------------------------------
 
 
@@ -751,6 +770,7 @@ TABLES: tuple[type[Table], ...] = (
     Estimates,
     Fit,
     Diagnostics,
+    Residuals,
     Surplus,
     FeeSchedule,
     ZoneSurplus,

@@ -5,10 +5,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+import pandas as pd
 from scipy import special
 from scipy.spatial import cKDTree
 
+from pipeline.demand.dispersed import QuasiPoisson
 from pipeline.demand.family import FittedModel
+from pipeline.demand.least_squares import Linear, LogLinear, weigh
 from pipeline.demand.likelihood import LikelihoodFamily
 from pipeline.demand.registry import FAMILIES
 from pipeline.demand.sample import FloatArray, IntArray, Sample
@@ -61,21 +64,52 @@ def count_classes(spread: Spread, sample: Sample) -> list[tuple[str, float, floa
 def standardised_residuals(model: FittedModel, sample: Sample) -> tuple[FloatArray, IntArray]:
     """Residuals over their standard deviation by the model, and which rows of the sample they are.
 
-    Least squares: residuals of its own response (the rate, or the log of it), which have one
-    variance.
+    Least squares: of its own response (the rate, or the log of it). Quasi-Poisson: the variance is
+    the mean times the dispersion.
     """
     family = FAMILIES[model.model]
     kept = np.arange(sample.nobs)
     if isinstance(family, LikelihoodFamily):
         spread = family.spread(model.estimate, sample)
-        return (sample.counts - spread.mean) / np.sqrt(np.maximum(spread.variance, 1e-300)), kept
-    if "log" in model.model:
+        scale = model.dispersion if isinstance(family, QuasiPoisson) else 1.0
+        deviation = np.sqrt(np.maximum(scale * spread.variance, 1e-300))
+        return (sample.counts - spread.mean) / deviation, kept
+    if isinstance(family, LogLinear):
         kept = np.flatnonzero(sample.counts > 0)
-        response = np.log(sample.rate[kept])
+    used = sample.rows(kept)
+    by_exposure = isinstance(family, Linear | LogLinear) and family.by_exposure
+    used = weigh(used) if by_exposure else used
+    response = np.log(used.rate) if isinstance(family, LogLinear) else used.rate * used.per
+    left = response - used.design @ model.estimate[: len(sample.terms)]
+    degrees = max(used.nobs - len(sample.terms), 1)
+    variance = float(used.weight @ left**2) / degrees
+    return left * np.sqrt(used.weight / max(variance, 1e-300)), kept
+
+
+def zone_residuals(model: FittedModel, sample: Sample, *, seed: int) -> pd.DataFrame:
+    """Rows of `residuals` for the zones that a model was fitted to.
+
+    Counts with a likelihood: randomised quantile residuals, which are standard normal where the
+    model is right, however small the counts. Others have no distribution to take quantiles of.
+    """
+    family = FAMILIES[model.model]
+    used = family.restrict(sample) if isinstance(family, LikelihoodFamily) else sample
+    if isinstance(family, LikelihoodFamily) and not isinstance(family, QuasiPoisson):
+        spread = family.spread(model.estimate, used)
+        residuals, kept = quantile_residuals(spread, used, seed=seed), np.arange(used.nobs)
+        kind = "randomised quantile"
     else:
-        response = sample.rate * sample.per
-    fitted = sample.design[kept] @ model.estimate[: len(sample.terms)]
-    return response - fitted, kept
+        residuals, kept = standardised_residuals(model, used)
+        kind = "standardised"
+    return pd.DataFrame(
+        {
+            "zone_id": [used.zone_ids[i] for i in kept],
+            "site_id": sample.site_id,
+            "model": model.model,
+            "residual": residuals,
+            "residual_kind": kind,
+        }
+    )
 
 
 @dataclass(frozen=True)

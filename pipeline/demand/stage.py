@@ -12,13 +12,14 @@ from pipeline.demand.choice import Choice, choose, p_words
 from pipeline.demand.diagnostics import diagnose, placed
 from pipeline.demand.family import FittedModel
 from pipeline.demand.registry import FAMILIES
+from pipeline.demand.residuals import zone_residuals
 from pipeline.demand.rows import estimate_rows, fit_row, fitted_models
 from pipeline.demand.sample import PRICE, Sample, stacked
 from pipeline.errors import DemandError
 from pipeline.executor import make_executor
 from pipeline.settings import TEST_PAIRS, DemandSettings
 from pipeline.study import Study
-from pipeline.tables import Diagnostics, Estimates, Fit
+from pipeline.tables import Diagnostics, Estimates, Fit, Residuals
 
 
 def demand(
@@ -75,8 +76,8 @@ def demand_with_diagnostics(
     zones: pd.DataFrame | None,
     *,
     study: Study,
-) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
-    """`demand`, with what speaks for and against each model.
+) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame, pd.DataFrame | None]:
+    """`demand`, with what speaks for and against each model, and what it leaves of each zone.
 
     Parameters
     ----------
@@ -84,7 +85,7 @@ def demand_with_diagnostics(
 
     Returns
     -------
-    `estimates`, `fit`, `diagnostics`.
+    `estimates`, `fit`, `diagnostics`, `residuals` (None where the rows are records of persons).
     """
     estimates, fit = demand(zone_table, trip_table, study=study)
     found = []
@@ -103,7 +104,33 @@ def demand_with_diagnostics(
                 )
             )
     rows = pd.concat(found, ignore_index=True)
-    return estimates, fit, Diagnostics.checked(rows, source="demand: diagnostics")
+    return (
+        estimates,
+        fit,
+        Diagnostics.checked(rows, source="demand: diagnostics"),
+        _residuals(study_samples(zone_table, trip_table, study.demand), models, fit, study),
+    )
+
+
+def _residuals(
+    samples: list[Sample],
+    models: dict[tuple[str, str], FittedModel],
+    fit: pd.DataFrame,
+    study: Study,
+) -> pd.DataFrame | None:
+    """What the chosen models leave of each zone; None where the rows are no zones."""
+    if not all(sample.zonal for sample in samples):
+        return None
+    chosen = fit[fit["chosen"]].set_index("site_id")["model"].to_dict()
+    found = [
+        zone_residuals(
+            models[sample.site_id, chosen[sample.site_id]], sample, seed=study.study.seed
+        )
+        for sample in samples
+        if sample.site_id in chosen
+    ]
+    rows = pd.concat(found, ignore_index=True)
+    return Residuals.checked(rows, source="demand: residuals")
 
 
 def _fitted_samples(

@@ -129,7 +129,15 @@ def _fit_table(fit: pd.DataFrame) -> Html:
         if not (row.chosen or pd.isna(row.note))
     ]
     grid = table(head, rows, caption="How the models fit", numbers=range(2, 9))
-    return join([grid, tag("ul", *remarks, class_="care") if remarks else None])
+    scale = tag("p", _SCALES) if fit["model"].str.contains("linear").any() else None
+    return join([grid, scale, tag("ul", *remarks, class_="care") if remarks else None])
+
+
+_SCALES = (
+    "Log-likelihood, AIC and BIC can be compared among count models of the same rows only. Those "
+    "of least squares are of the density of a rate, or of the log of a rate in the zones that had "
+    "a visit: they stand on another scale and are no reason to prefer or to reject a model."
+)
 
 
 def _estimates(results: Results, fit: pd.DataFrame) -> Html:

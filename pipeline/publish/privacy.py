@@ -87,6 +87,17 @@ def is_safe(hidden_counts: npt.NDArray[np.float64], below: int) -> bool:
     return number >= 2 and float(hidden_counts.sum()) - number >= below
 
 
+def hide_residuals(
+    residuals: pd.DataFrame | None, zone_table: pd.DataFrame | None
+) -> pd.DataFrame | None:
+    """Without the hidden zones: what a model leaves of a count gives the count away."""
+    if residuals is None or zone_table is None or REASON not in zone_table:
+        return residuals
+    hidden = zone_table.loc[zone_table[REASON].notna(), ["zone_id", "site_id"]]
+    key = pd.MultiIndex.from_frame(residuals[["zone_id", "site_id"]])
+    return residuals[~key.isin(pd.MultiIndex.from_frame(hidden))].reset_index(drop=True)
+
+
 def hide_zone_surplus(zone_surplus: pd.DataFrame, zone_table: pd.DataFrame) -> pd.DataFrame:
     """Blank the surplus of hidden zones, from which their visits could be worked out."""
     if REASON not in zone_table:

@@ -21,7 +21,12 @@ from pipeline.publish.geofiles import write_geojson, write_geoparquet
 from pipeline.publish.geopackage import About, write_geopackage
 from pipeline.publish.layers import build_layers
 from pipeline.publish.manifest import manifest_text, run_manifest
-from pipeline.publish.privacy import hide_small_cells, hide_zone_surplus, trip_means
+from pipeline.publish.privacy import (
+    hide_residuals,
+    hide_small_cells,
+    hide_zone_surplus,
+    trip_means,
+)
 from pipeline.publish.report import build_report
 from pipeline.publish.reported import hide_few
 from pipeline.publish.results import Headline, Results, headlines
@@ -139,6 +144,7 @@ def publish(
     zone_surplus: pd.DataFrame,
     sensitivity: pd.DataFrame,
     diagnostics: pd.DataFrame | None = None,
+    residuals: pd.DataFrame | None = None,
     *,
     study: Study,
 ) -> tuple[Publication]:
@@ -147,7 +153,7 @@ def publish(
     Parameters
     ----------
     provenance : what the run was made from.
-    origin_summary, ..., diagnostics : the tables of the flow; those that the study neither
+    origin_summary, ..., residuals : the tables of the flow; those that the study neither
         built nor brought are None, and the report says what is missing for it.
 
     Raises
@@ -184,6 +190,7 @@ def publish(
         zone_surplus=zone_surplus if shown is None else hide_zone_surplus(zone_surplus, shown),
         sensitivity=coarse(sensitivity) if below else sensitivity,
         diagnostics=diagnostics,
+        residuals=hide_residuals(residuals, shown),
         curves=fitted_curves(zone_table, trip_table, estimates, fit, study=study),
         fees=fee_curves(zone_table, trip_table, estimates, fit, fee_schedule, study=study),
         headlines=headlines(fit, surplus, finished, sites),

@@ -4,7 +4,10 @@ from __future__ import annotations
 
 import pandas as pd
 
+from pipeline.publish.changes import changes
+from pipeline.publish.mapview import BaseMap
 from pipeline.publish.markup import Html, join, table, tag
+from pipeline.publish.residualmap import residual_map
 from pipeline.publish.results import Headline, Results
 from pipeline.publish.rows import rows_of
 from pipeline.publish.words import figure, interval, model_words, words_of
@@ -14,15 +17,20 @@ TRIP = "surplus_per_trip"
 APART = ("observed_count", "influence")
 
 
-def referee_report(results: Results, headline: Headline) -> Html:
-    """Diagnostics of one site as tables; a sentence where the study brought none."""
+def referee_report(results: Results, headline: Headline, base: BaseMap | None) -> Html:
+    """What would change the answer, the residuals on the map, and the diagnostics as tables.
+
+    A sentence where the study brought no diagnostics.
+    """
     if results.diagnostics is None:
         return tag("p", "The diagnostics of the demand stage were not handed over.")
     rows = results.diagnostics[results.diagnostics["site_id"] == headline.site_id]
     plain = rows[~rows["diagnostic"].isin(APART)]
     return join(
         [
+            changes(results, headline),
             _other_models(results, headline),
+            residual_map(results, headline, base),
             _table_of(plain, "Tests and residuals", with_subject=True),
             _counts(rows, headline),
             _influence(rows),
@@ -37,15 +45,17 @@ def _other_models(results: Results, headline: Headline) -> Html:
     body = [
         (
             model_words(str(row.model)),
-            "chosen" if row.chosen else "",
+            "chosen" if row.model == headline.model else "",
             row.method,
             figure(row.value, row.ci_low, row.ci_high),
             interval(row.ci_low, row.ci_high, row.value),
         )
-        for row in rows_of(site.sort_values("chosen", ascending=False, kind="stable"))
+        for row in rows_of(
+            site.iloc[(site["model"] != headline.model).to_numpy().argsort(kind="stable")]
+        )
     ]
     head = ("Model", "Choice", "Kind of interval", f"{results.currency} per trip", "Interval")
-    caption = "What would change the answer: surplus per trip by model and kind of interval"
+    caption = "Surplus per trip by model and kind of interval"
     return table(head, body, caption=caption, numbers=(3, 4))
 
 

@@ -35,7 +35,7 @@ def build_report(results: Results) -> str:
     script = Html(SCRIPT_FILE.read_text(encoding="utf-8"))
     base = base_map(results)
     maps = _maps(results, base)
-    parts = _sections(results, lambda h: map_figure(results, base, h, maps.get(h.site_id)))
+    parts = _sections(results, base, lambda h: map_figure(results, base, h, maps.get(h.site_id)))
     body = tag(
         "body",
         tag("a", "Skip to the evidence", href="#map", class_="skip"),
@@ -100,7 +100,9 @@ def _maps(results: Results, base: BaseMap | None) -> dict[str, MapFigures]:
     return {site_id: figures for site_id, figures in found.items() if figures is not None}
 
 
-def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Section]:
+def _sections(
+    results: Results, base: BaseMap | None, draw_map: Callable[[Headline], Html]
+) -> list[Section]:
     def each(draw: Callable[[Results, Headline], Html]) -> Html:
         return join(
             join([site_heading(results, headline), draw(results, headline)])
@@ -118,7 +120,7 @@ def _sections(results: Results, draw_map: Callable[[Headline], Html]) -> list[Se
         _section("lost", "What was lost on the way", _LOST, *losses(results)),
         *_reported(results),
         _section("models", "Models tried", _MODELS, each(models_tried)),
-        *_referee(results, each),
+        *_referee(results, base, each),
         *([_section("roads", "The road data", _ROADS, roads)] if roads else []),
         _section("methods", "How it was worked out", _METHODS, *methods(results)),
         _section("care", "Cautions", "Read these before quoting a figure.", cautions()),
@@ -146,16 +148,19 @@ _REPORTED = (
 )
 
 
-def _referee(results: Results, each: Callable[..., Html]) -> list[Section]:
+def _referee(results: Results, base: BaseMap | None, each: Callable[..., Html]) -> list[Section]:
     """The section for a referee, where the demand stage made diagnostics."""
     if results.diagnostics is None:
         return []
-    return [_section("referee", "For a referee", _REFEREE, each(referee_report))]
+
+    def draw(results: Results, headline: Headline) -> Html:
+        return referee_report(results, headline, base)
+
+    return [_section("referee", "For a referee", _REFEREE, each(draw))]
 
 
 _REFEREE = (
-    "Tests, residuals and rows left out; the zones that move the answer most; and the answer by "
-    "every model and kind of interval."
+    "What would change the answer; where the model misses, on the map; tests, and rows left out."
 )
 _EFFECTS = (
     "The same data under other assumptions, the strongest first. A bar that leaves the shaded "

@@ -77,6 +77,7 @@ class Results:
     fees: dict[str, FeeCurve]
     headlines: tuple[Headline, ...]
     diagnostics: pd.DataFrame | None = None
+    residuals: pd.DataFrame | None = None
 
     @property
     def currency(self) -> str:

@@ -194,7 +194,7 @@ def test_the_table_says_what_there_is_to_say() -> None:
     table = zones(count=100)
     places = pd.DataFrame(grid(), columns=["lon", "lat"]).assign(zone_id=table["zone_id"])
     study = a_study(demand={"covariates": ("household_income",)})
-    _, _, rows = demand_with_diagnostics(table, None, places, study=study)
+    _, _, rows, _ = demand_with_diagnostics(table, None, places, study=study)
     assert {
         "overdispersion",
         "likelihood_ratio",
@@ -210,7 +210,7 @@ def test_the_table_says_what_there_is_to_say() -> None:
     } - set(rows["diagnostic"]) == {"vuong_bic"}
     one = rows[rows["diagnostic"] == "likelihood_ratio"].iloc[0]
     assert (one["model"], one["subject"]) == ("negative_binomial", "poisson")
-    _, _, unplaced = demand_with_diagnostics(table, None, None, study=study)
+    _, _, unplaced, _ = demand_with_diagnostics(table, None, None, study=study)
     assert "moran_i" not in set(unplaced["diagnostic"])
 
 
@@ -220,8 +220,57 @@ def test_twelve_zones_with_six_covariates_are_reported_as_what_they_are() -> Non
     names = tuple(f"x{i}" for i in range(5))
     table = table.assign(**{name: random.normal(size=12) for name in names})
     study = a_study(demand={"covariates": ("household_income", *names), "choose": "poisson"})
-    _, fit, rows = demand_with_diagnostics(table, None, None, study=study)
+    _, fit, rows, _ = demand_with_diagnostics(table, None, None, study=study)
     per = rows[rows["diagnostic"] == "rows_per_coefficient"].iloc[0]
     assert per["value"] == pytest.approx(12 / 8)
     assert "too few to trust" in per["note"]
     assert fit["note"].str.contains("Only 12 rows for 8 coefficients").any()
+
+
+def test_residuals_of_every_zone_are_about_standard_normal() -> None:
+    """The chosen NB2 drew the counts; a zone with ten times its visits stands out."""
+    table = zones(count=150)
+    table.loc[7, ["visits", "sampled_visits"]] *= 10
+    _, fit, _, rows = demand_with_diagnostics(table, None, None, study=a_study())
+    assert rows is not None
+    assert fit.loc[fit["chosen"], "model"].tolist() == ["negative_binomial"]
+    assert rows["zone_id"].tolist() == table["zone_id"].tolist()
+    assert set(rows["residual_kind"]) == {"randomised quantile"}
+    assert abs(rows["residual"].mean()) < 0.25
+    assert 0.8 < rows["residual"].std() < 1.2
+    assert rows["residual"].idxmax() == 7
+    assert rows.loc[7, "residual"] > 2
+
+
+@pytest.mark.parametrize(
+    "name", ["linear", "log_linear", "weighted_linear", "weighted_log_linear", "quasi_poisson"]
+)
+def test_residuals_without_a_likelihood_have_variance_one(name: str) -> None:
+    """Divided by their own standard deviation: mean square (n − k)/n; logs need a visit."""
+    table = zones(count=150)
+    study = a_study(demand={"models": (name,), "choose": name})
+    _, _, _, rows = demand_with_diagnostics(table, None, None, study=study)
+    assert rows is not None
+    assert set(rows["residual_kind"]) == {"standardised"}
+    visited = table["visits"] > 0
+    assert len(rows) == (visited.sum() if "log" in name else 150)
+    degrees = len(rows) - 2
+    assert (rows["residual"] ** 2).sum() == pytest.approx(degrees, rel=1e-6)
+
+
+def test_stacked_sites_have_residuals_each_and_records_have_none() -> None:
+    table = pd.concat([zones(), zones(seed=2, site_id="weir")], ignore_index=True)
+    study = a_study(demand={"site_effects": True})
+    rows = demand_with_diagnostics(table, None, None, study=study)[3]
+    assert rows is not None
+    assert rows["site_id"].value_counts().to_dict() == {"fen": 80, "weir": 80}
+    sample = drawn("poisson", seed=1, count=100)
+    trips = pd.DataFrame(
+        {
+            "record_id": [str(i) for i in range(100)],
+            "site_id": "fen",
+            "trips": sample.counts,
+            "travel_cost": sample.price,
+        }
+    )
+    assert demand_with_diagnostics(None, trips, None, study=a_study())[3] is None
