@@ -103,11 +103,11 @@ class ZeroInflatedPoisson(MixedCurve, IndexedFamily):
     def spread(self, estimate: FloatArray, sample: Sample) -> Spread:
         """Counts of those who may come, zero for the others."""
         alpha = float(estimate[-1]) if self.extra_terms else 0.0
-        share = self._coming(estimate[None, :], sample, np.zeros((1, 1)))[0]
+        share = self.coming(estimate[None, :], sample, np.zeros((1, 1)))[0]
         return nb2_spread(log_mean(estimate, sample), alpha).with_share(share)
 
-    def _coming(self, theta: FloatArray, sample: Sample, fee: FloatArray) -> FloatArray:
-        """Share that may come, (vectors, rows)."""
+    def coming(self, theta: FloatArray, sample: Sample, fee: FloatArray) -> FloatArray:
+        """Share that may come at an added fee, (vectors, rows)."""
         if theta.shape[1] == len(sample.terms) + len(self.extra_terms):
             return np.ones((len(theta), sample.nobs))
         never, price = self.zero_part(theta, sample)
@@ -116,7 +116,7 @@ class ZeroInflatedPoisson(MixedCurve, IndexedFamily):
     def rates(self, theta: FloatArray, sample: Sample, fee: FloatArray) -> FloatArray:
         """Share that may come times exp(x'β)."""
         mean = np.exp(self.count_index(theta, sample, fee))
-        return self._coming(theta, sample, fee) * mean
+        return self.coming(theta, sample, fee) * mean
 
     def decay(self, theta: FloatArray, sample: Sample) -> FloatArray:
         """At high costs visits fall as the count does, unless ever fewer may come."""

@@ -131,7 +131,8 @@ def simulated_rows(
 
     A draw whose demand does not fall bounds no area and counts as infinite: where there are
     enough of them the interval has no upper end. No standard error is given: the ratio −1/b has
-    no variance. The annual visits are drawn, too, where their standard error is known.
+    no variance. The annual visits are drawn, too, where their standard error is known. A measure
+    that the model cannot give has the row of the delta method alone, which says why.
     """
     wrong = float(np.mean(~valued.family.falls(draws, valued.sample)))
     words = f"{wrong:.2%} of the draws have a price coefficient that is not negative.{said}"
@@ -141,14 +142,14 @@ def simulated_rows(
     notes = measure_notes(valued)
     rows = []
     for measure, values in measure_values(valued, draws, visits).items():
-        if measure == VISITS_OBSERVED:
+        if measure == VISITS_OBSERVED or np.isnan(values).all():
             continue
         if measure in AREAS and not has_area(model, valued):
             rows.append(_row(measure, method, note=no_area_words(model)))
             continue
         median, low, high = percentiles(values, confidence)
         note = f"{notes[measure]} Median of {len(draws):,} {kind}. {words}"
-        if not np.isfinite(high):
+        if np.isinf(high):
             note += " The interval has no finite upper end."
         rows.append(_row(measure, method, median, low, high, note=note))
     return rows

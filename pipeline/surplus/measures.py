@@ -20,7 +20,7 @@ from pipeline.demand.curves import LinearCurve, SemiLogCurve, price_column
 from pipeline.demand.family import Family
 from pipeline.demand.mixed_curve import MixedCurve
 from pipeline.demand.sample import FloatArray, Sample
-from pipeline.surplus.welfare import exact_totals
+from pipeline.surplus.welfare import exact_totals, has_closed_form
 
 PER_TRIP = "surplus_per_trip"
 PER_TRIP_OBSERVED = "surplus_per_trip_observed"
@@ -56,6 +56,8 @@ AREAS = (
     EV_ANNUAL,
     CHOKE,
 )
+#: Measures that need an expenditure function.
+EXACT = (CV_TRIP, EV_TRIP, CV_ANNUAL, EV_ANNUAL)
 #: Measures that grow with the observed visits.
 BY_VISITS = (ANNUAL, ANNUAL_TRAPEZOID, ACCESS, PER_PERSON, CV_ANNUAL, EV_ANNUAL, VISITS_OBSERVED)
 
@@ -76,6 +78,11 @@ class Valuation:
     fees: FloatArray
     income: str | None
     income_unit: float = 1.0
+
+    @property
+    def has_closed_form(self) -> bool:
+        """Whether exact welfare can be given."""
+        return self.income is not None and has_closed_form(self.family, self.sample, self.income)
 
     @property
     def visits_se(self) -> float:
@@ -125,7 +132,7 @@ def measure_values(
     choke = family.choke_cost(theta, sample)
     if choke is not None:
         values[CHOKE] = choke
-    if valued.income is not None and not isinstance(family, MixedCurve):
+    if valued.income is not None:
         values |= _exact(valued, theta, predicted, observed)
     return values
 
@@ -150,6 +157,8 @@ def _exact(
     valued: Valuation, theta: FloatArray, predicted: FloatArray, observed: FloatArray
 ) -> dict[str, FloatArray]:
     sample, income = valued.sample, str(valued.income)
+    if not valued.has_closed_form:
+        return dict.fromkeys(EXACT, np.full(len(theta), np.nan))
     paid, given = exact_totals(valued.family, sample, theta, income=income, unit=valued.income_unit)
     each = np.where(predicted > 0, predicted, 1.0)
     incomes = sample.design[:, sample.terms.index(income)]
@@ -196,6 +205,7 @@ def measure_notes(valued: Valuation) -> dict[str, str]:
     """How each measure is made."""
     family, sample = valued.family, valued.sample
     exact = "closed form by Hausman (1981); income effect from the income coefficient."
+    no_form = {} if valued.has_closed_form else dict.fromkeys(EXACT, NO_CLOSED_FORM)
     known = "taken as known"
     if valued.visits_se:
         known = "with its standard error"
@@ -223,4 +233,11 @@ def measure_notes(valued: Valuation) -> dict[str, str]:
         VISITS_OBSERVED: f"As counted or expanded, in the rows of the regression; {known}.",
         VISITS_PREDICTED: "Expected visits of all rows by the model.",
         CHOKE: "Cost at which an average resident stops visiting.",
-    }
+    } | no_form
+
+
+NO_CLOSED_FORM = (
+    "Not given: expected visits where the chance of any trip depends on cost or income integrate "
+    "to no expenditure function in closed form. The surplus stands alone; with a small income "
+    "effect it lies close (Willig, American Economic Review 66, 1976)."
+)

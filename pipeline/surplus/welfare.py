@@ -16,6 +16,10 @@ linear       (α/δ²) (log(1 + x) − x)             −(α/δ²) (exp(x) − 1
 Compensating: what visitors would have to be paid to be as well off without the site; infinite
 where 1 + x ≤ 0. Equivalent: what they would give up to keep it. For a normal good (δ > 0) the
 surplus lies between them. The income is that of the household, as in the regression.
+
+Of a zero-inflated model the formulas hold for those who may come, where neither the cost nor the
+income moves who may. The expected visits of a hurdle are no power of e: they integrate to no
+expenditure function in closed form, and no exact figure is given.
 """
 
 from __future__ import annotations
@@ -24,7 +28,9 @@ import numpy as np
 
 from pipeline.demand.curves import LinearCurve, SemiLogCurve, index, price_column, row_blocks
 from pipeline.demand.family import Family
-from pipeline.demand.sample import FloatArray, Sample
+from pipeline.demand.mixed_curve import MixedCurve
+from pipeline.demand.sample import PRICE, FloatArray, Sample
+from pipeline.demand.zeros import ZeroInflatedPoisson
 
 #: Below this the differences are taken by their series.
 _SMALL = 1e-3
@@ -70,6 +76,14 @@ def equivalent(
     return np.where(income == 0, -trips / price, np.log1p(inside) / effect)
 
 
+def has_closed_form(family: Family, sample: Sample, income: str) -> bool:
+    """Whether the demand integrates to an expenditure function in closed form."""
+    if not isinstance(family, MixedCurve):
+        return True
+    moved_by = {sample.terms[j] for j in family.zero_columns(sample)}
+    return isinstance(family, ZeroInflatedPoisson) and not moved_by & {PRICE, income}
+
+
 def exact_totals(
     family: Family, sample: Sample, theta: FloatArray, *, income: str, unit: float
 ) -> tuple[FloatArray, FloatArray]:
@@ -99,7 +113,10 @@ def _block(
     else:
         trips = np.maximum(base, 0) / per
     bounded = np.where(price < 0, price, -1.0)
+    may_come = np.ones_like(base)
+    if isinstance(family, ZeroInflatedPoisson):
+        may_come = family.coming(theta, sample, np.zeros((1, 1)))
     return (
-        compensating(trips, bounded, effect, linear=linear) @ sample.people,
-        equivalent(trips, bounded, effect, linear=linear) @ sample.people,
+        (may_come * compensating(trips, bounded, effect, linear=linear)) @ sample.people,
+        (may_come * equivalent(trips, bounded, effect, linear=linear)) @ sample.people,
     )

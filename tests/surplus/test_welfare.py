@@ -11,9 +11,12 @@ from scipy.integrate import solve_ivp
 
 from pipeline.demand import demand, fitted_models
 from pipeline.demand.registry import FAMILIES
-from pipeline.surplus import surplus
+from pipeline.surplus import parameter_draws, surplus
+from pipeline.surplus.intervals import delta_rows, simulated_rows
+from pipeline.surplus.measures import Valuation
 from pipeline.surplus.ratios import fieller
 from pipeline.surplus.welfare import compensating, equivalent, exact_totals
+from tests.demand.persons import drawn
 from tests.demand.worlds import a_sample, a_study, bare_sample, number, zones
 
 PRICE, COST, INCOME = -0.08, 10.0, 500.0
@@ -82,6 +85,60 @@ def test_totals_are_sums_over_people() -> None:
     by_hand = -np.log1p(1e-5 * trips / -0.2) / 1e-5 @ [1000, 500]
     assert paid[0] == pytest.approx(by_hand)
     assert given[0] < trips @ [1000, 500] / 0.2 < paid[0]
+
+
+def test_exact_welfare_of_a_zero_inflated_is_that_of_those_who_may_come() -> None:
+    """A share of 1/(1 + e^0.4) never comes; the others' demand is the semi-log of the count."""
+    sample = bare_sample([30, 20], [2, 5], [1000, 500], household_income=[30_000.0, 40_000.0])
+    theta = np.array([-3.0, -0.2, 1e-5, -0.4])
+    plain = exact_totals(
+        FAMILIES["poisson"], sample, theta[None, :3], income="household_income", unit=1.0
+    )
+    found = exact_totals(
+        FAMILIES["zero_inflated_poisson"],
+        sample,
+        theta[None, :],
+        income="household_income",
+        unit=1.0,
+    )
+    for one, other in zip(plain, found, strict=True):
+        assert other[0] == pytest.approx(one[0] / (1 + np.exp(-0.4)))
+
+
+@pytest.mark.parametrize(
+    ("name", "zero_terms", "exact"),
+    [
+        ("poisson", None, True),
+        ("zero_inflated_poisson", None, True),
+        ("zero_inflated_poisson", ("const", "age"), True),
+        ("zero_inflated_negative_binomial", ("const", "travel_cost"), False),
+        ("zero_inflated_poisson", ("const", "household_income"), False),
+        ("hurdle", None, False),
+    ],
+)
+def test_where_there_is_no_closed_form_it_is_said(
+    name: str, zero_terms: tuple[str, ...] | None, exact: bool
+) -> None:
+    """What may come must not hang on cost or income; a hurdle's expected visits never do it."""
+    sample = drawn("hurdle", seed=1, count=400)
+    income = np.random.default_rng(2).normal(40_000, 8_000, 400)
+    sample = replace(
+        sample,
+        terms=(*sample.terms, "household_income"),
+        design=np.column_stack([sample.design, income]),
+        zero_terms=zero_terms,
+    )
+    model = FAMILIES[name].fit(sample, errors="model")
+    assert model.converged, model.problem
+    valued = Valuation(FAMILIES[name], sample, np.array([0.0, 5.0]), "household_income")
+    draws = parameter_draws(model, draws=200, seed=1)
+    rows = pd.DataFrame(
+        [*delta_rows(model, valued, 0.95), *simulated_rows(model, valued, draws, 0.95, seed=1)]
+    )
+    own = rows[rows["measure"] == "compensating_variation_per_trip"]
+    assert own["method"].tolist() == (["delta", "simulated"] if exact else ["delta"])
+    assert own["value"].notna().all() == exact
+    assert own["note"].str.startswith("Not given: expected visits").all() != exact
 
 
 def test_a_hurdle_of_single_trips_is_worth_the_area_of_its_logit() -> None:

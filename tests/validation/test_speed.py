@@ -1,4 +1,6 @@
-"""How long fits take (processor time, the median of three) and a bootstrap (by the clock)."""
+"""How long fits and a bootstrap take, by the clock; the fits the least of five, so that what else
+the machine does counts little.
+"""
 
 from __future__ import annotations
 
@@ -50,13 +52,13 @@ def test_a_fit_of_5000_rows_and_8_covariates(name: str, record_check: RecordChec
     assert len(sample.terms) == 9
     FAMILIES[name].fit(sample, errors="HC3")
     seconds = []
-    for _ in range(3):
-        start = time.process_time()
+    for _ in range(5):
+        start = time.perf_counter()
         model = FAMILIES[name].fit(sample, errors="HC3")
-        seconds.append(time.process_time() - start)
+        seconds.append(time.perf_counter() - start)
     assert model.converged, model.problem
     label = f"speed, {name}: seconds for 5,000 rows and 8 covariates"
-    record_check(label, float(np.median(seconds)), 0, 0.3, SOURCE)
+    record_check(label, min(seconds), 0, 0.3, SOURCE)
 
 
 @pytest.mark.slow
