@@ -8,13 +8,19 @@ Applied Econometrics with R, 2008, section 5.3 (from memory).
 
 from __future__ import annotations
 
+import numpy as np
 import pandas as pd
 import pytest
+import statsmodels.api as sm
 
 from pipeline.demand import demand, fitted_models
 from pipeline.demand.build import build_samples
 from pipeline.demand.choice import overdispersion_test
+from pipeline.demand.registry import FAMILIES
 from pipeline.surplus import surplus
+from pipeline.surplus.intervals import fieller_rows
+from pipeline.surplus.measures import Valuation
+from tests.conftest import RecordCheck
 from tests.demand.worlds import a_study, number
 from tests.published.boating import COVARIATES, boating_trips
 
@@ -93,3 +99,39 @@ def test_simulated_interval_is_that_of_a_normal_coefficient(trips: pd.DataFrame)
     ).iloc[0]
     assert row["ci_low"] == pytest.approx(-1 / (b - width), rel=0.01)
     assert row["ci_high"] == pytest.approx(-1 / (b + width), rel=0.01)
+
+
+def test_fieller_interval_of_the_nb2(trips: pd.DataFrame, record_check: RecordCheck) -> None:
+    """−1/(b ± 1.96 standard errors) from statsmodels' whole information matrix, at our maximum."""
+    (sample,) = build_samples(None, trips, COVARIATES)
+    model = FAMILIES["negative_binomial"].fit(sample, errors="model")
+    valued = Valuation(FAMILIES["negative_binomial"], sample, np.zeros(1), None)
+    row = next(r for r in fieller_rows(model, valued, 0.95) if r["measure"] == "surplus_per_trip")
+    outside = sm.NegativeBinomial(sample.counts, sample.design).fit(
+        start_params=model.estimate, method="newton", disp=0
+    )
+    low, high = (-1 / (outside.params[1] + z * outside.bse[1]) for z in (-1.959964, 1.959964))
+    source = "closed form at the estimates of statsmodels' NegativeBinomial"
+    record_check("boating, NB2: Fieller, lower end", row["ci_low"], low, 0.005, source)
+    record_check("boating, NB2: Fieller, upper end", row["ci_high"], high, 0.005, source)
+    assert f"{row['ci_high']:.2f}" == "13.07"
+
+
+def test_the_on_site_nb2_has_no_interior_maximum_and_says_its_limit(trips: pd.DataFrame) -> None:
+    """The visitors among these households are no on-site sample: y − 1 has alpha* above one.
+
+    The limit is the geometric model of y − 1; checked against the NB2 of statsmodels with alpha
+    held at one (a GLM).
+    """
+    (sample,) = build_samples(None, trips, COVARIATES)
+    model = FAMILIES["on_site_negative_binomial"].fit(sample, errors="HC3")
+    assert not model.converged
+    assert model.problem.startswith("No interior maximum: the counts less one are an NB2 with")
+    visited = sample.rows(sample.counts > 0)
+    geometric = sm.GLM(
+        visited.counts - 1,
+        visited.design,
+        family=sm.families.NegativeBinomial(alpha=1.0),
+    ).fit(tol=1e-12)
+    assert f"log-likelihood {geometric.llf:.2f}" in model.problem
+    assert f"−1/b = {-1 / geometric.params[1]:.4g}" in model.problem
