@@ -83,7 +83,7 @@ def _models(results: Results, headline: Headline) -> list[Change]:
     own = headline.surplus_per_trip
     assert own is not None
     ends = [points.iloc[0], points.iloc[-1]][: len(points)]
-    said = [f"{figure(float(r['value']))} ({model_words(str(r['model']))})" for r in ends]
+    said = [f"{number(r['value'], 4)} ({model_words(str(r['model']))})" for r in ends]
     share = max((float(r["value"]) / own.value - 1 for r in ends), key=abs)
     return [Change("Another model", f"It would give {' to '.join(said)}.", share)]
 

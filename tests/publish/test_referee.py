@@ -134,7 +134,7 @@ def test_another_model_and_the_income_effect_are_named() -> None:
     surplus = pd.concat([values, other, *more], ignore_index=True)
     published = make_publication(diagnostics=diagnostics(), residuals=residuals(), surplus=surplus)
     words = " ".join(bare(referee(published)).split())
-    assert "Another model. It would give 6.00 (Poisson)." in words
+    assert "Another model. It would give 6.000 (Poisson)." in words
     assert "Income elasticity of visits 0.400. Exact welfare per trip: 4.900 (equivalent)" in words
 
 

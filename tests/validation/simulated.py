@@ -14,7 +14,10 @@ from functools import cached_property
 
 import numpy as np
 
+from pipeline.demand.covariance import covariance
+from pipeline.demand.design import standardise
 from pipeline.demand.family import FittedModel
+from pipeline.demand.likelihood import LikelihoodFamily, Rows
 from pipeline.demand.registry import FAMILIES
 from pipeline.demand.sample import FloatArray, Sample
 from tests.demand import persons
@@ -150,29 +153,67 @@ class Simulation:
         return float(off.mean() / noise), float(off.mean() / abs(self.truth[term]))
 
 
+def with_robust_errors(model: FittedModel, sample: Sample) -> FittedModel:
+    """The same fit with HC3 errors; without climbing again where the maximum is interior."""
+    family = FAMILIES[model.model]
+    assert isinstance(family, LikelihoodFamily)
+    used = family.restrict(sample)
+    whole = len(used.terms) + len(family.further_terms(used))
+    if len(model.estimate) < whole or not np.isfinite(model.std_error).all():
+        return family.fit(sample, errors="HC3")
+    standard = standardise(used.design)
+    rows = Rows.of(used, standard.matrix, family.zero_columns(used))
+    theta = family.to_standard(model.estimate, standard, used)
+    _, jacobian = family.to_table(theta, standard, used)
+    scores = family.scores(theta, rows) * rows.weight[:, None]
+    leverage = family.leverage(theta, rows)
+    spread = covariance(family.hessian(theta, rows), scores, leverage, "HC3")
+    return replace(model, covariance=jacobian @ spread @ jacobian.T, errors="HC3")
+
+
 def simulate(
-    name: str, sample: Callable[[int], Sample], truth: dict[str, float], errors: str, worlds: int
-) -> Simulation:
-    """Fit a family to the samples of the seeds 0, 1, 2 …"""
-    fitted = [FAMILIES[name].fit(sample(seed), errors=errors) for seed in range(worlds)]
-    return Simulation([model for model in fitted if model.converged], truth, worlds)
+    name: str, sample: Callable[[int], Sample], truth: dict[str, float], worlds: int
+) -> dict[str, Simulation]:
+    """Fit a family to the samples of the seeds 0, 1, 2 …: with model errors, and with HC3."""
+    plain, robust = [], []
+    for seed in range(worlds):
+        drawn = sample(seed)
+        model = FAMILIES[name].fit(drawn, errors="model")
+        if model.converged:
+            plain.append(model)
+            robust.append(with_robust_errors(model, drawn))
+    return {
+        errors: Simulation(models, truth, worlds)
+        for errors, models in (("model", plain), ("HC3", robust))
+    }
 
 
-def of_persons(name: str, errors: str, *, worlds: int = 1000, count: int = 600) -> Simulation:
+def of_persons(name: str, *, worlds: int = 1000, count: int = 600) -> dict[str, Simulation]:
     """A family on its worlds of persons."""
 
     def sample(seed: int) -> Sample:
         return replace(persons.drawn(name, seed=seed, count=count), notes=())
 
-    return simulate(name, sample, personal_truth(name), errors, worlds)
+    return simulate(name, sample, personal_truth(name), worlds)
 
 
-def of_zones(
-    name: str, errors: str, *, worlds: int = 1000, count: int = ZONES, uneven: bool = False
-) -> Simulation:
-    """A family on its worlds of zones."""
+def of_zones(name: str, *, worlds: int = 1000, count: int = ZONES) -> dict[str, Simulation]:
+    """A family of counts on its worlds of zones."""
 
     def sample(seed: int) -> Sample:
-        return zones(name, seed, count, uneven=uneven)
+        return zones(name, seed, count)
 
-    return simulate(name, sample, zonal_truth(name), errors, worlds)
+    return simulate(name, sample, zonal_truth(name), worlds)
+
+
+def of_lines(name: str, *, worlds: int = 1000, count: int = ZONES) -> dict[str, Simulation]:
+    """Least squares of zones; HC3 where errors grow with the cost, which the model's miss."""
+    found = {}
+    for errors in ("model", "HC3"):
+        fitted = [
+            FAMILIES[name].fit(zones(name, seed, count, uneven=errors == "HC3"), errors=errors)
+            for seed in range(worlds)
+        ]
+        models = [model for model in fitted if model.converged]
+        found[errors] = Simulation(models, zonal_truth(name), worlds)
+    return found

@@ -21,52 +21,69 @@ from tests.demand.persons import ALPHA, TRUE, drawn
 from tests.validation.simulated import (
     COUNTED,
     LEAST_SQUARES,
+    ZONES,
     Simulation,
+    of_lines,
     of_persons,
     of_zones,
 )
 
 PERSONS = 600
+#: Where zeros are told from a dispersion, or a dispersion from visitors alone, it takes more rows:
+#: of 600, intervals of the share that never comes hold 92 and those of a hurdle's alpha 98 times in
+#: 100, while those of the price coefficient hold 94.
+MORE = {"zero_inflated_negative_binomial": 2000, "hurdle": 2000}
 OF_PERSONS = (*COUNTED, "on_site_poisson", "on_site_negative_binomial", "hurdle")
-OF_ZONES = (*COUNTED, *LEAST_SQUARES)
 SOURCE = "nominal level; data drawn from a stated demand, seeds 0 to 999"
 
 
-def record(label: str, found: Simulation, errors: str, record_check: RecordCheck) -> None:
-    """Failures and bias once, coverage for each kind of errors."""
-    if errors == "model":
-        record_check(f"{label}: share without a verified fit", found.failed, 0, 0.0009, SOURCE)
-        bias, _ = found.bias()
-        what = "bias of the price coefficient in Monte Carlo errors"
-        record_check(f"{label}: {what}", bias, 0, 3.5, SOURCE)
-    coverage = dict(found.coverage)
-    label = f"{label}, {errors} errors"
-    price = coverage.pop("travel_cost")
-    record_check(f"{label}: coverage of the price coefficient", price, 0.95, 0.02, SOURCE)
-    furthest = max(coverage.values(), key=lambda share: abs(share - 0.95))
-    what = "coverage of the other parameter that is furthest off"
-    record_check(f"{label}: {what}", furthest, 0.95, 0.02, SOURCE)
+def record(label: str, found: dict[str, Simulation], record_check: RecordCheck) -> None:
+    """Failures and bias once, coverage for each kind of errors; all of it before any is judged."""
+    plain = found["model"]
+    checks = [
+        ("share without a verified fit", plain.failed, 0.0, 0.0009),
+        ("bias of the price coefficient in Monte Carlo errors", plain.bias()[0], 0.0, 3.5),
+    ]
+    for errors, simulation in found.items():
+        others = dict(simulation.coverage)
+        price = others.pop("travel_cost")
+        furthest = max(others, key=lambda term: abs(others[term] - 0.95))
+        what = f"coverage with {errors} errors,"
+        checks.append((f"{what} price coefficient", price, 0.95, 0.02))
+        checks.append((f"{what} the furthest off ({furthest})", others[furthest], 0.95, 0.02))
+    failed = []
+    for what, value, expected, tolerance in checks:
+        try:
+            record_check(f"{label}: {what}", value, expected, tolerance, SOURCE)
+        except AssertionError as error:
+            failed.append(str(error))
+    assert not failed, "; ".join(failed)
 
 
 @pytest.mark.slow
-@pytest.mark.parametrize("errors", ["model", "HC3"])
 @pytest.mark.parametrize("name", OF_PERSONS)
 def test_intervals_of_persons_hold_the_truth_as_often_as_they_say(
-    name: str, errors: str, record_check: RecordCheck
+    name: str, record_check: RecordCheck
 ) -> None:
-    record(f"simulated persons, {name}", of_persons(name, errors), errors, record_check)
+    count = MORE.get(name, PERSONS)
+    found = of_persons(name, count=count)
+    record(f"simulated, {count:,} persons, {name}", found, record_check)
 
 
 @pytest.mark.slow
-@pytest.mark.parametrize("errors", ["model", "HC3"])
-@pytest.mark.parametrize("name", OF_ZONES)
+@pytest.mark.parametrize("name", COUNTED)
 def test_intervals_of_zones_hold_the_truth_as_often_as_they_say(
-    name: str, errors: str, record_check: RecordCheck
+    name: str, record_check: RecordCheck
 ) -> None:
-    """Least squares by HC3: errors that grow with the cost, which those of the model miss."""
-    uneven = name in LEAST_SQUARES and errors == "HC3"
-    found = of_zones(name, errors, uneven=uneven)
-    record(f"simulated zones, {name}", found, errors, record_check)
+    record(f"simulated, {ZONES} zones, {name}", of_zones(name), record_check)
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("name", LEAST_SQUARES)
+def test_intervals_of_least_squares_hold_the_truth_as_often_as_they_say(
+    name: str, record_check: RecordCheck
+) -> None:
+    record(f"simulated, {ZONES} zones, {name}", of_lines(name), record_check)
 
 
 def naive_ratio(name: str, naive: str, count: int) -> FloatArray:
