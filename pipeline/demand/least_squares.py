@@ -148,5 +148,9 @@ def least_squares(name: str, sample: Sample, response: FloatArray, errors: str) 
         log_likelihood=float(result.llf),
         dispersion=float(result.scale),
         errors=errors,
-        notes=(*sample.notes, *caution_notes(sample), *cluster_notes(sample, errors)),
+        notes=(
+            *sample.notes,
+            *caution_notes(sample, errors, student=True),
+            *cluster_notes(sample, errors),
+        ),
     )

@@ -248,7 +248,7 @@ class LikelihoodFamily(SemiLogCurve, ABC):
             log_likelihood=value,
             r_squared=squared_correlation(sample.rate, expected),
             errors=errors,
-            notes=(*sample.notes, *caution_notes(sample), *cluster_notes(sample, errors)),
+            notes=(*sample.notes, *caution_notes(sample, errors), *cluster_notes(sample, errors)),
         )
         return replace(model, dispersion=self.dispersion(model, sample))
 

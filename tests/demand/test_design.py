@@ -92,6 +92,10 @@ def test_visits_from_the_middle_only_are_not_separated() -> None:
 
 def test_few_rows_and_near_twins_are_cautioned() -> None:
     twins = [1.1, 2.0, 3.1, 4.0, 5.1, 6.0]
-    notes = " ".join(caution_notes(bare_sample(COUNTS, COST, PEOPLE, substitute_cost=twins)))
+    sample = bare_sample(COUNTS, COST, PEOPLE, substitute_cost=twins)
+    notes = " ".join(caution_notes(sample, "HC3"))
     assert "Only 6 rows for 3 coefficients" in notes
     assert "travel_cost and substitute_cost move together (r = 1.00)" in notes
+    assert "intervals with HC3 errors held 94 to 98" in notes
+    assert "use HC3 errors" in caution_notes(sample, "model")[0]
+    assert "Student's t allows" in caution_notes(sample, "model", student=True)[0]

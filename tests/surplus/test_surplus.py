@@ -128,6 +128,16 @@ def test_what_is_left_and_lost_adds_up_at_every_fee(outputs: Outputs) -> None:
         assert (fees[name] <= fees[f"{name}_ci_high"] * (1 + 1e-12)).all()
 
 
+def test_few_zones_are_said_to_make_the_delta_interval_too_narrow() -> None:
+    """20 zones: said of the delta method's areas alone."""
+    values, _, _ = valued(zones(count=20, seed=2))
+    few = values["note"].str.contains("delta method is too narrow", na=False)
+    assert set(values.loc[few, "method"]) == {"delta"}
+    assert {"surplus_per_trip", "annual_surplus"} <= set(values.loc[few, "measure"])
+    many = valued(zones())[0]["note"].str.contains("too narrow", na=False)
+    assert not many.any()
+
+
 def test_default_fees_are_ten_round_steps_to_a_high_fee(outputs: Outputs) -> None:
     fees = outputs[1]
     assert len(fees) == 11
