@@ -11,6 +11,8 @@ import numpy.typing as npt
 from pipeline.publish.markup import Html, join, tag
 
 Numbers = npt.NDArray[np.float64]
+LONG_TICK = 4
+"""Characters of a tick's figure that fit around the end of an axis."""
 
 
 @dataclass(frozen=True)
@@ -79,7 +81,9 @@ def grid(x: Axis, y: Axis, *, x_ticks: int = 6, y_ticks: int = 5) -> Html:
         base = y.start
         parts.append(tag("line", x1=at, x2=at, y1=base, y2=base + 5, class_="tick"))
         words = tick_words(tick)
-        parts.append(tag("text", words, x=at, y=base + 10, dy=".8em", text_anchor="middle"))
+        # A long figure at the very end would leave the drawing.
+        anchor = "end" if len(words) > LONG_TICK and tick == x.high else "middle"
+        parts.append(tag("text", words, x=at, y=base + 10, dy=".8em", text_anchor=anchor))
     parts.append(tag("line", x1=x.start, x2=x.end, y1=y.start, y2=y.start, class_="axis"))
     return tag("g", *parts, class_="axes")
 

@@ -13,6 +13,7 @@ from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Headline, Results
 from pipeline.publish.rows import rows_of
 from pipeline.publish.words import (
+    fee_words,
     figure,
     fixed,
     interval,
@@ -35,7 +36,7 @@ def fee_figure(results: Results, headline: Headline) -> Html:
     sure = level(results.study.surplus.confidence)
     rows = [
         (
-            f"{row.fee:,.2f}",
+            fee_words(row.fee, float(schedule["fee"].max())),
             _cell(row.visits, row.visits_ci_low, row.visits_ci_high),
             _cell(row.revenue, row.revenue_ci_low, row.revenue_ci_high),
             _cell(row.consumer_surplus, row.consumer_surplus_ci_low, row.consumer_surplus_ci_high),

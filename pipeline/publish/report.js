@@ -2,6 +2,7 @@
 // The report's own script: map measures, a zone's row, and the fee slider. Without it the page
 // shows the first measure and the tables; with it nothing is fetched and nothing is stored.
 const data = JSON.parse(document.getElementById("page-data").textContent);
+const WHOLE_FEES = 1000;
 const all = (root, what) => Array.from(root.querySelectorAll(what));
 
 // --- figures in words: as the page's own tables round them -----------------------------------
@@ -33,7 +34,10 @@ function interval(low, high, value) {
   if (!Number.isFinite(low) || !Number.isFinite(high)) return "no finite upper end";
   if (high - low <= 1e-6 * Math.abs(value)) return "–";
   const step = stepOf(low, high, value);
-  return `${stepped(low, step)} to ${stepped(high, step)}`;
+  const [from, unit] = stepped(low, step).split(" ");
+  const [to, word] = stepped(high, step).split(" ");
+  const ends = [unit === word ? from : [from, unit].filter(Boolean).join(" "), "to", to, word];
+  return ends.filter(Boolean).join(" ");
 }
 
 // --- fees ------------------------------------------------------------------------------------
@@ -75,8 +79,9 @@ function showFee(tool, model, asked) {
     cell.textContent = value === 0 ? "0" : stepped(value, stepOf(low, high, value));
     cell.closest("tr").lastElementChild.textContent = interval(low, high, value);
   }
-  const words = `${data.currency} ${fee.toFixed(2)}`;
-  tool.querySelector("[type=range]").setAttribute("aria-valuetext", words);
+  const slider = tool.querySelector("[type=range]");
+  const words = `${data.currency} ${grouped(fee, +slider.max >= WHOLE_FEES ? 1 : 0.01)}`;
+  slider.setAttribute("aria-valuetext", words);
   tool.querySelector("output").textContent = words;
   for (const mark of all(tool.parentElement, ".fee-mark")) {
     const { start, end, top } = mark.dataset;

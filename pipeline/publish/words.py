@@ -25,6 +25,8 @@ MODEL_WORDS = {
 UNKNOWN = "not known"
 NO_WIDTH = 1e-6
 """An interval narrower than this share of its value is a figure taken as known."""
+WHOLE_FEES = 1000
+"""Nobody charges hundredths where the highest fee is this much; the page's script knows it too."""
 BIG = ((1e12, "trillion"), (1e9, "billion"), (1e6, "million"))
 
 
@@ -129,6 +131,11 @@ def percent(share: float) -> str:
 def level(confidence: float) -> str:
     """A confidence level: '95 %'."""
     return f"{confidence * 100:g} %"
+
+
+def fee_words(fee: float, highest: float) -> str:
+    """A fee: to the hundredth, or whole where fees run into the thousands."""
+    return f"{fee:,.0f}" if highest >= WHOLE_FEES else f"{fee:,.2f}"
 
 
 def words_of(name: str) -> str:

@@ -216,7 +216,7 @@ def measure_notes(valued: Valuation) -> dict[str, str]:
         ANNUAL: f"Observed visits ({sample.annual_visits:,.0f} a year) × surplus per trip.",
         ANNUAL_PREDICTED: "Area under the predicted demand of all rows.",
         ANNUAL_TRAPEZOID: (
-            f"Trapezoid rule over the fee schedule, 0 to {valued.fees.max():,.4g}; what lies "
+            f"Trapezoid rule over the fee schedule, 0 to {valued.fees.max():,.10g}; what lies "
             "beyond the last fee is not in it."
         ),
         ACCESS: (
