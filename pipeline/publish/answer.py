@@ -128,5 +128,5 @@ def _several_sites(results: Results) -> Html:
         "to pay over and above what their trips cost them. Nobody receives it as cash. The "
         "figures of several sites do not add up where visitors would go from one to another.",
     )
-    grid = table(head, rows, caption="Value of every site", numbers=range(1, 6))
+    grid = table(head, rows, caption="Value of every site", numbers=range(1, 6), class_="cards")
     return tag("div", claim, grid, span, class_="say")
