@@ -43,6 +43,9 @@ def _refuse_fixed(items: dict[str, float]) -> dict[str, float]:
 
 PerKm = Annotated[dict[str, NotNegative], AfterValidator(_refuse_fixed)]
 
+KM_PER_MILE = 1.609344
+"""International mile (Units of Measurement, NIST Special Publication 811, 2008)."""
+
 
 class VehicleSettings(Section):
     """One class of vehicle, built up from what grows with distance."""

@@ -91,6 +91,13 @@ class CostsSettings(Section):
         usual="0.05 to 0.15 in EUR; common practice, no source",
         ge=0,
     )
+    toll_per_booth: float = setting(
+        "Toll per vehicle at each booth that [routes.charges] does not list.",
+        0.0,
+        unit="currency",
+        usual="0 where tolls are by km; else the operator's tariff",
+        ge=0,
+    )
     ferry_fare_per_vehicle: float = setting(
         "Ferry fare of the vehicle (with its driver where the operator counts so), one way.",
         0.0,

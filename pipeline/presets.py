@@ -26,6 +26,7 @@ MONEY_KEYS = (
     "energy_prices",
     "vehicles",
     "toll_per_km",
+    "toll_per_booth",
     "ferry_fare_per_vehicle",
     "ferry_fare_per_person",
     "parking_per_vehicle",

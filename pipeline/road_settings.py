@@ -148,12 +148,109 @@ class RoadsSettings(Section):
     )
 
 
+OsmId = Annotated[str, Field(pattern=r"^-?[0-9]{1,18}$")]
+Listed = dict[OsmId, Annotated[float, Field(ge=0)]]
+
+
+class ChargesSettings(Section):
+    """Fares and tolls of their own, by OSM id; the others have those of [costs]."""
+
+    section_name: ClassVar[str] = "routes.charges"
+    ferry_per_vehicle: Listed = setting(
+        "Fare of the vehicle, one way, by the id of the ferry's way (of several ways the one "
+        'that the trip boards by): "4711" = 18.50.',
+        {},
+        unit="currency",
+        usual="the operator's tariff",
+    )
+    ferry_per_person: Listed = setting(
+        "Fare of each person, likewise.", {}, unit="currency", usual="the operator's tariff"
+    )
+    toll_by_way: Listed = setting(
+        "Toll of the vehicle for all of a toll way, by the way's id; for a part of it in "
+        "proportion.",
+        {},
+        unit="currency",
+        usual="the operator's tariff",
+    )
+    toll_by_booth: Listed = setting(
+        "Toll of the vehicle at a booth, by the id of its node.",
+        {},
+        unit="currency",
+        usual="the operator's tariff",
+    )
+
+
+Amount = Annotated[float, Field(ge=0)]
+
+
+class GeneralisedSettings(Section):
+    """Prices by which routes are chosen where the generalised cost is made least.
+
+    They choose the route; what it costs is worked out by [costs] all the same. Figures that are
+    not set are taken from [costs], where it has one for all.
+    """
+
+    section_name: ClassVar[str] = "routes.generalised"
+    value_of_time_per_hour: float | None = setting(
+        "Worth of an hour to all in the vehicle; not set: [costs] hourly_wage × wage_fraction × "
+        "party_size (or adults).",
+        None,
+        unit="currency/h",
+        usual="5 to 20 in EUR or USD for a party; common practice, no source",
+        gt=0,
+    )
+    vehicle_cost_per_km: Amount | None = setting(
+        "Cost of driving; not set: that of [costs].", None, unit="currency/km", usual="as [costs]"
+    )
+    toll_per_km: Amount | None = setting(
+        "Toll of roads that are not listed; not set: that of [costs].",
+        None,
+        unit="currency/km",
+        usual="as [costs]",
+    )
+    toll_per_booth: Amount | None = setting(
+        "Toll at booths that are not listed; not set: that of [costs].",
+        None,
+        unit="currency",
+        usual="as [costs]",
+    )
+    ferry_fare_per_vehicle: Amount | None = setting(
+        "Fare of ferries that are not listed; not set: that of [costs].",
+        None,
+        unit="currency",
+        usual="as [costs]",
+    )
+    ferry_fare_per_person: Amount | None = setting(
+        "The same for each person.", None, unit="currency", usual="as [costs]"
+    )
+    people: float | None = setting(
+        "People in the vehicle; not set: [costs] party_size, if it is a number, else 1.",
+        None,
+        unit="people",
+        usual="2 to 3.5",
+        gt=0,
+    )
+
+
 class RoutesSettings(Section):
     """How origins and sites are tied to the roads."""
 
     section_name: ClassVar[str] = "routes"
     table: InputPath | None = setting(
         "A ready routes table (CSV or Parquet); then no road extract is needed.", None
+    )
+    minimise: Literal["time", "distance", "generalised_cost"] = setting(
+        "What people make least in choosing their route: its time, its distance, or what it costs "
+        "in money and time ([routes.generalised]).",
+        "time",
+        usual="time",
+    )
+    generalised: GeneralisedSettings = setting(
+        "Prices for minimise = 'generalised_cost'.", GeneralisedSettings()
+    )
+    charges: ChargesSettings = setting(
+        "Fares and tolls of single ferries, roads and booths.", ChargesSettings()
     )
     max_snap_km: float = setting(
         "A point further from its road is too_far_from_road.",

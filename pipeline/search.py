@@ -250,6 +250,70 @@ def _sums(
     return result
 
 
+def cost_along(tree: Tree, nodes: Int64, arc_cost: Int64, seed_cost: Int64) -> Int64:
+    """Packed costs of the routes between some junctions and the tree's place.
+
+    Parameters
+    ----------
+    tree : a search that made something else least.
+    nodes : (k,) junctions; `UNREACHED` where the tree does not reach one.
+    arc_cost : of the arcs that were searched.
+    seed_cost : between each seed and the place.
+    """
+    return _cost_along(tree.cost, tree.parent, tree.via, nodes, arc_cost, seed_cost)
+
+
+@compiled
+def _cost_along(
+    label: Int64, parent: Int32, via: Int32, nodes: Int64, arc_cost: Int64, seed_cost: Int64
+) -> Int64:
+    known = np.full(len(parent), np.int64(-1))
+    climbed = np.empty(len(parent), dtype=np.int32)
+    result = np.full(len(nodes), UNREACHED)
+    for k in range(len(nodes)):
+        here, height = np.int64(nodes[k]), 0
+        if label[here] >= UNREACHED:
+            continue
+        while known[here] < 0 and parent[here] >= 0:
+            climbed[height] = here
+            height += 1
+            here = np.int64(parent[here])
+        if known[here] < 0:
+            known[here] = seed_cost[-2 - via[here]]
+        total = known[here]
+        while height > 0:
+            height -= 1
+            total += arc_cost[via[climbed[height]]]
+            known[climbed[height]] = total
+        result[k] = total
+    return result
+
+
+def seeds_of(tree: Tree, nodes: Int64) -> Int64:
+    """Number of the seed at the end of the route of each of some junctions."""
+    return _seeds_of(tree.parent, tree.via, nodes)
+
+
+@compiled
+def _seeds_of(parent: Int32, via: Int32, nodes: Int64) -> Int64:
+    """Climb until a node with a known seed, then hand it down again."""
+    seed = np.full(len(parent), -1, dtype=np.int32)
+    result = np.empty(len(nodes), dtype=np.int64)
+    for k in range(len(nodes)):
+        here = np.int64(nodes[k])
+        while seed[here] < 0 and parent[here] >= 0:
+            here = np.int64(parent[here])
+        if seed[here] < 0:
+            seed[here] = -2 - via[here]
+        found = seed[here]
+        here = np.int64(nodes[k])
+        while seed[here] < 0:
+            seed[here] = found
+            here = np.int64(parent[here])
+        result[k] = found
+    return result
+
+
 @compiled
 def path_edges(parent: Int32, via: Int32, arc_edge: Int32, node: int) -> tuple[Int64, int]:
     """Directed edges from `node` to the tree's place, and the number of the seed at its end."""

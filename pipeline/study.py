@@ -23,6 +23,7 @@ from pipeline.cost_settings import CostsSettings
 from pipeline.errors import StudyError
 from pipeline.presets import load_preset
 from pipeline.road_settings import RoadsSettings, RoutesSettings
+from pipeline.route_prices import with_route_prices
 from pipeline.sections import Section, inner_section
 from pipeline.sensitivity_settings import SensitivitySettings
 from pipeline.settings import (
@@ -124,6 +125,7 @@ def study_from(raw: dict[str, Any], *, base: Path, source: str) -> Study:
         raise StudyError(f"{source}: section [costs] is needed and missing; add it.")
     if study.costs is not None:
         _check_prices(study, source)
+    study = with_route_prices(study)
     check_own_variants(study)
     for file in study.input_files():
         if not file.is_file():

@@ -278,6 +278,39 @@ class Routes(Table):
         ge=0,
         nullable=True,
     )
+    ferry_count: Series[float] | None = column(
+        "ferries boarded on the way there", ge=0, nullable=True
+    )
+    toll_booths: Series[float] | None = column(
+        "toll booths passed on the way there", ge=0, nullable=True
+    )
+    listed_ferries: Series[float] | None = column(
+        "of ferry_count, with a fare in [routes.charges]", ge=0, nullable=True
+    )
+    listed_booths: Series[float] | None = column(
+        "of toll_booths, with a toll in [routes.charges]", ge=0, nullable=True
+    )
+    listed_toll_km: Series[float] | None = column(
+        "of toll_km, on ways with a toll in [routes.charges]", unit="km", ge=0, nullable=True
+    )
+    listed_fare_per_vehicle: Series[float] | None = column(
+        "fares of the listed ferries for the vehicle, one way",
+        unit="currency",
+        ge=0,
+        nullable=True,
+    )
+    listed_fare_per_person: Series[float] | None = column(
+        "fares of the listed ferries for each person, one way",
+        unit="currency",
+        ge=0,
+        nullable=True,
+    )
+    listed_toll: Series[float] | None = column(
+        "tolls of the listed ways and booths for the vehicle, one way",
+        unit="currency",
+        ge=0,
+        nullable=True,
+    )
     zone_snap_m: Series[float] = column(
         "gap between the zone's centroid and its road", unit="m", ge=0, nullable=True
     )

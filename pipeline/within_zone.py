@@ -23,6 +23,7 @@ from pipeline.errors import RouteError
 from pipeline.overlay import first_holding
 from pipeline.road_settings import RoutesSettings
 from pipeline.roads.arrays import Float64, Int64
+from pipeline.roads.tariffs import CHARGES
 
 WGS84 = Geod(ellps="WGS84")
 LENGTHS = (
@@ -151,7 +152,7 @@ def charge_within(
     for names, values in (
         (LENGTHS, road_km),
         (TIMES, road_km / settings.local_speed_kmh * 60),
-        (("ferry_km", "ferry_min", "toll_km"), np.zeros(len(table))),
+        (("ferry_km", "ferry_min", "toll_km", *CHARGES), np.zeros(len(table))),
         (("unpaved_km", "delay_min"), np.full(len(table), np.nan)),
     ):
         for name in names:

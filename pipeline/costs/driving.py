@@ -7,11 +7,9 @@ from __future__ import annotations
 
 import pandas as pd
 
+from pipeline.cost_parts import KM_PER_MILE
 from pipeline.costs.figures import Figures
 from pipeline.errors import CostError
-
-KM_PER_MILE = 1.609344
-"""International mile (Units of Measurement, NIST Special Publication 811, 2008)."""
 
 
 def cost_per_km(figures: Figures) -> pd.Series[float]:

@@ -115,6 +115,7 @@ def _vehicle_items(
     """What the vehicle costs, there and back."""
     settings = figures.settings
     toll = settings.toll_per_km * figures.factor("toll_per_km")
+    booth = settings.toll_per_booth * figures.factor("toll_per_booth")
     fare = settings.ferry_fare_per_vehicle * figures.factor("ferry_fare_per_vehicle")
     parking = site_id.map(settings.parking_per_vehicle).fillna(0.0).astype("float64")
     parking = parking * figures.factor("parking_per_vehicle")
@@ -122,8 +123,10 @@ def _vehicle_items(
         {
             "vehicle_cost": trips["driven_km"] * rates["vehicle_cost_per_km"],
             "parking_cost": parking.where(trips["round_trip_km"].notna()),
-            "toll_cost": trips["toll_km"] * toll,
-            "ferry_cost": trips["ferries"] * fare,
+            "toll_cost": trips["toll_km"] * toll
+            + trips["toll_booths"] * booth
+            + trips["listed_toll"],
+            "ferry_cost": trips["ferries"] * fare + trips["listed_fare_per_vehicle"],
         }
     )
 
@@ -131,7 +134,8 @@ def _vehicle_items(
 def _person_fares(trips: pd.DataFrame, figures: Figures) -> pd.Series[float]:
     """Ferry fares of one person, there and back."""
     fare = figures.settings.ferry_fare_per_person
-    return trips["ferries"] * fare * figures.factor("ferry_fare_per_person")
+    usual = trips["ferries"] * fare * figures.factor("ferry_fare_per_person")
+    return usual + trips["listed_fare_per_person"]
 
 
 def fees(routes: pd.DataFrame, sites: pd.DataFrame) -> pd.Series[float]:

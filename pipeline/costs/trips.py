@@ -7,12 +7,13 @@ hours on it count as travel time.
 
 from __future__ import annotations
 
-import numpy as np
 import pandas as pd
 
 from pipeline.cost_settings import CostsSettings
 from pipeline.errors import CostError
 from pipeline.tables import REACHED_STATUSES
+
+LISTED = ("listed_toll", "listed_fare_per_vehicle", "listed_fare_per_person")
 
 
 def round_trips(routes: pd.DataFrame, settings: CostsSettings) -> pd.DataFrame:
@@ -23,9 +24,11 @@ def round_trips(routes: pd.DataFrame, settings: CostsSettings) -> pd.DataFrame:
 
     Returns
     -------
-    `one_way_km, round_trip_km, round_trip_hours, driven_km, toll_km, ferries, wheel_hours,
-    ferry_hours`, all but the first there and back (`ferries`: 2 where the way there uses a
-    ferry, however often, otherwise 0).
+    `one_way_km, round_trip_km, round_trip_hours, driven_km, toll_km, toll_booths, ferries,
+    listed_toll, listed_fare_per_vehicle, listed_fare_per_person, wheel_hours, ferry_hours`, all
+    but the first there and back. What [routes.charges] lists is in the listed amounts, and not
+    in the kilometres and counts before. A routes table that does not count its ferries has one
+    each way where it has ferry km.
 
     Raises
     ------
@@ -49,13 +52,31 @@ def round_trips(routes: pd.DataFrame, settings: CostsSettings) -> pd.DataFrame:
             "round_trip_km": driven_km + ferry_km,
             "round_trip_hours": wheel_hours + ferry_hours,
             "driven_km": driven_km,
-            "toll_km": 2 * table["toll_km"].fillna(0.0) * distance_factor,
-            "ferries": np.where(ferry_km > 0, 2.0, 0.0),
+            **_dues(table, distance_factor),
             "wheel_hours": wheel_hours,
             "ferry_hours": ferry_hours,
         }
     )
     return trips.where(reached)
+
+
+def _dues(table: pd.DataFrame, distance_factor: float) -> dict[str, pd.Series[float]]:
+    """Tolls and ferries there and back, and the amounts of those that are listed."""
+    none = pd.Series(0.0, index=table.index)
+
+    def both_ways(name: str) -> pd.Series[float]:
+        return 2 * table[name].fillna(0.0) if name in table else none
+
+    counted = both_ways("ferry_count")
+    if "ferry_count" not in table:
+        counted = none.mask(table["ferry_km"].fillna(0.0) > 0, 2.0)
+    toll_km = both_ways("toll_km") - both_ways("listed_toll_km")
+    return {
+        "toll_km": toll_km.clip(lower=0) * distance_factor,
+        "toll_booths": both_ways("toll_booths") - both_ways("listed_booths"),
+        "ferries": counted - both_ways("listed_ferries"),
+        **{name: both_ways(name) for name in LISTED},
+    }
 
 
 def _number(factor: str | float) -> float:

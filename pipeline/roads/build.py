@@ -13,6 +13,7 @@ from pipeline.errors import RoadsError
 from pipeline.road_settings import RoadsSettings
 from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64
 from pipeline.roads.barriers import cut_at_barriers
+from pipeline.roads.charges import charged_nodes, charges_of
 from pipeline.roads.conditions import calendar_of
 from pipeline.roads.contract import Chains, contract, reorder
 from pipeline.roads.copies import Copies, copy_junctions
@@ -75,7 +76,8 @@ def build_roads(
     )
     turns = read_restrictions(extract, segments, turn_values(extract, rules, calendar))
     group = (traits.is_ferry * 1 + traits.is_limited * 2).astype(np.uint8)[segments.way]
-    forced = np.array(turns.nodes, dtype=np.int64)
+    tolled = charged_nodes(extract, segments, traits.is_toll)
+    forced = np.append(np.array(turns.nodes, dtype=np.int64), tolled)
     chains = contract(segments, len(extract.node_lon_e7), group, forced)
     nodes, rank = _hilbert_order(extract, chains)
     chains = reorder(chains, np.lexsort((rank[chains.end], rank[chains.start])))
@@ -121,7 +123,18 @@ def _graph(
     way = segments.way[chains.segment[chains.first[:-1]]]
     is_ferry, is_limited = traits.is_ferry[way], traits.is_limited[way]
     turn_s = _turn_delays(extract, traits, segments, chains, is_ferry, rules)
-    forward, backward = _costs(segments, chains, is_ferry, turn_s, settings)
+    on_land = _on_land(chains, is_ferry, len(extract.node_lon_e7))
+    forward, backward = _costs(
+        segments,
+        chains,
+        is_ferry & on_land[chains.start],
+        is_ferry & on_land[chains.end],
+        turn_s,
+        settings,
+    )
+    charges = charges_of(
+        extract, segments, chains, is_ferry=is_ferry, is_toll=traits.is_toll, on_land=on_land
+    )
     number = np.arange(len(start), dtype=np.int32)
     is_open = np.concatenate([forward != CLOSED, backward != CLOSED])
     tail = np.concatenate([start, end])[is_open]
@@ -133,7 +146,7 @@ def _graph(
     )
     copies = copy_junctions(tail, head, directed, limited[directed // 2], runs, len(nodes))
     both = np.concatenate([forward, backward])
-    arcs, arcs_in = _arcs(copies, both, len(start), len(nodes))
+    arcs, arcs_in = _arcs(copies, both, len(start), len(nodes), charges["charge_edge"])
     network, weak = main_networks(tail, head, start, end, road_km, settings.main_network_km)
     island_km, islands = detached_km(start, network, weak, road_km)
     graph = RoadGraph(
@@ -153,19 +166,21 @@ def _graph(
         **_named("arc", arcs),
         **_named("in", arcs_in),
         **{name: getattr(copies, name) for name in COPIES},
+        **charges,
     )
     return graph, islands
 
 
 def _arcs(
-    copies: Copies, cost: Int64, edges: int, junctions: int
+    copies: Copies, cost: Int64, edges: int, junctions: int, charged: Int32
 ) -> tuple[tuple[Int64, Int32, Int64, Int32], tuple[Int64, Int32, Int64, Int32]]:
     """Arcs by tail and by head, with the packed costs of their edges."""
     arc_cost = cost[copies.edge // 2 + edges * (copies.edge % 2)]
     nodes = junctions + len(copies.copy_of)
+    apart = np.isin(copies.edge, charged)
     return (
-        best_arcs(copies.tail, copies.head, arc_cost, copies.edge, nodes),
-        best_arcs(copies.head, copies.tail, arc_cost, copies.edge, nodes),
+        best_arcs(copies.tail, copies.head, arc_cost, copies.edge, nodes, apart),
+        best_arcs(copies.head, copies.tail, arc_cost, copies.edge, nodes, apart),
     )
 
 
@@ -180,10 +195,19 @@ def _named(prefix: str, arcs: tuple[Int64, Int32, Int64, Int32]) -> dict[str, np
     }
 
 
+def _on_land(chains: Chains, is_ferry: Bool, nodes: int) -> Bool:
+    """Of each node of the extract, whether a road that is no ferry ends there."""
+    on_land = np.zeros(nodes, dtype=np.bool_)
+    on_land[chains.start[~is_ferry]] = True
+    on_land[chains.end[~is_ferry]] = True
+    return on_land
+
+
 def _costs(
     segments: Segments,
     chains: Chains,
-    is_ferry: Bool,
+    boards_forward: Bool,
+    boards_backward: Bool,
     turn_s: tuple[Float64, Float64],
     settings: RoadsSettings,
 ) -> tuple[Int64, Int64]:
@@ -194,16 +218,13 @@ def _costs(
     """
     times = _directed(segments.forward_s, segments.backward_s, chains)
     length = _edge_sums(segments.length_m, chains)
-    on_land = np.zeros(int(max(chains.start.max(), chains.end.max())) + 1, dtype=np.bool_)
-    on_land[chains.start[~is_ferry]] = True
-    on_land[chains.end[~is_ferry]] = True
     wait_s = settings.ferry_wait_min * 60
     costs = []
     delays = _directed(segments.forward_delay_s, segments.backward_delay_s, chains)
-    tails = (chains.start, chains.end)
-    for time_s, delay_s, turn, tail in zip(times, delays, turn_s, tails, strict=True):
+    boards = (boards_forward, boards_backward)
+    for time_s, delay_s, turn, boarding in zip(times, delays, turn_s, boards, strict=True):
         time = np.add.reduceat(time_s + delay_s, chains.first[:-1]) + turn
-        costs.append(pack(time + np.where(is_ferry & on_land[tail], wait_s, 0), length))
+        costs.append(pack(time + np.where(boarding, wait_s, 0), length))
     return costs[0], costs[1]
 
 

@@ -11,7 +11,7 @@ import numpy as np
 import numpy.typing as npt
 
 from pipeline.errors import RoadsError
-from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64, Uint8
+from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64, Uint8, compiled
 from pipeline.roads.extract import degrees
 
 # A cost packs both weights of a stretch of road into one integer: hundredths of a second in
@@ -31,8 +31,9 @@ class RoadGraph:
 
     An edge is a stretch of road between two junctions, whatever its directions; an arc is an
     edge in one direction. Arcs are what a search needs and no more: loops have none, and of
-    parallel arcs only the fastest and the shortest is there. Nodes stand in the order of a
-    Hilbert curve and edges in that of their start, so that neighbours lie close in memory.
+    parallel arcs only those that no other beats in time and distance are there. Nodes stand in
+    the order of a Hilbert curve and edges in that of their start, so that neighbours lie close
+    in memory.
 
     Attributes
     ----------
@@ -66,6 +67,8 @@ class RoadGraph:
         copy, and the copy.
     tail_edge, tail_node : directed edges, ascending, with copies from which a trip can end on
         them.
+    charge_edge, charge_kind, charge_id, charge_share : directed edges, ascending, where money is
+        due, what for, the OSM id, and how much of it; see ``charges``.
     """
 
     folder_name: ClassVar[str] = "road_graph"
@@ -105,6 +108,10 @@ class RoadGraph:
     head_node: Int32
     tail_edge: Int32
     tail_node: Int32
+    charge_edge: Int32
+    charge_kind: Uint8
+    charge_id: Int64
+    charge_share: Float32
 
     @property
     def nodes(self) -> int:
@@ -223,9 +230,14 @@ def unpack_distance_km(cost: Int64) -> Float64:
 
 
 def best_arcs(
-    tail: Int32, head: Int32, cost: Int64, edge: Int32, nodes: int
+    tail: Int32,
+    head: Int32,
+    cost: Int64,
+    edge: Int32,
+    nodes: int,
+    apart: Bool | None = None,
 ) -> tuple[Int64, Int32, Int64, Int32]:
-    """Arcs by tail: of parallel ones the fastest and the shortest, never their sum; no loops.
+    """Arcs by tail: of parallel ones those that no other beats in time and distance; no loops.
 
     Parameters
     ----------
@@ -233,22 +245,32 @@ def best_arcs(
     cost : packed costs, none of them closed.
     edge : number of the directed edge.
     nodes : how many nodes there are.
+    apart : arcs that cost money beside: they are kept, and beat no other.
     """
     useful = np.flatnonzero(tail != head)
-    tail, head, cost, edge = tail[useful], head[useful], cost[useful], edge[useful]
-    distance = cost & DISTANCE_MASK
-    by_time = np.lexsort((edge, cost, head, tail))
-    by_distance = np.lexsort((edge, cost, distance, head, tail))
-    best = np.zeros(len(tail), dtype=np.bool_)
-    for order in (by_time, by_distance):
-        t, h = tail[order], head[order]
-        first = np.ones(len(order), dtype=np.bool_)
-        first[1:] = (t[1:] != t[:-1]) | (h[1:] != h[:-1])
-        best[order[first]] = True
-    kept = by_time[best[by_time]]
+    if apart is None:
+        apart = np.zeros(len(tail), dtype=np.bool_)
+    order = useful[np.lexsort((edge[useful], cost[useful], head[useful], tail[useful]))]
+    kept = order[_unbeaten(tail[order], head[order], cost[order], apart[order])]
     counts = np.bincount(tail[kept], minlength=nodes).astype(np.int64)
     first_arc = np.concatenate([[0], np.cumsum(counts)]).astype(np.int64)
     return first_arc, head[kept], cost[kept], edge[kept]
+
+
+@compiled
+def _unbeaten(tail: Int32, head: Int32, cost: Int64, apart: Bool) -> Bool:
+    """Of arcs by tail, head and time those that are shorter than every faster parallel one."""
+    result = np.ones(len(tail), dtype=np.bool_)
+    shortest = np.int64(0)
+    for arc in range(len(tail)):
+        if arc == 0 or tail[arc] != tail[arc - 1] or head[arc] != head[arc - 1]:
+            shortest = np.int64(DISTANCE_MASK) + 1
+        distance = cost[arc] & DISTANCE_MASK
+        if apart[arc]:
+            continue
+        result[arc] = distance < shortest
+        shortest = min(shortest, distance)
+    return result
 
 
 def flag_bits(is_toll: Bool, is_unpaved: Bool) -> Uint8:

@@ -60,14 +60,16 @@ def entered_from(
     )
 
 
-def entry_label(
+def entry_node(
     graph: RoadGraph, label: Int64, edge: Int64, is_at: Bool, *, by_start: bool
 ) -> Int64:
-    """Least label of what a trip can come from that ends on an edge."""
+    """What a trip can come from that ends on an edge: the one with the least label."""
     row, node = entered_from(graph, edge, is_at, by_start=by_start)
-    least = label[node[: len(edge)]]
-    np.minimum.at(least, row[len(edge) :], label[node[len(edge) :]])
-    return least
+    if len(row) == len(edge):
+        return node
+    order = np.lexsort((node, label[node], row))
+    first = np.flatnonzero(np.diff(row[order], prepend=-1))
+    return np.asarray(node[order[first]])
 
 
 def _junction(graph: RoadGraph, edge: Int64, *, by_end: bool) -> Int64:

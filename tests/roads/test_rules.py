@@ -132,13 +132,17 @@ def test_unknown_class_in_the_study_is_refused(tmp_path: Path) -> None:
 
 
 def test_unpaved_and_toll_lengths_of_a_chain(tmp_path: Path) -> None:
-    """w ──gravel── m ──toll── e is one edge of two steps, one unpaved and one tolled."""
-    ways: Ways = [("w m", ROAD | {"surface": "gravel"}), ("m e", ROAD | {"toll": "yes"})]
+    """w ──gravel── m ──paved── e is one edge of two steps, one of them unpaved.
+
+    A toll road is never joined with another: w ──free── m ──toll── e are two edges.
+    """
+    ways: Ways = [("w m", ROAD | {"surface": "gravel"}), ("m e", ROAD)]
     graph, _, _ = graph_of(tmp_path, PLACES, ways)
     assert graph.edges == 1
     assert unpack_distance_km(graph.edge_forward_cost[0]) == pytest.approx(2 * STEP_KM, abs=1e-5)
     assert graph.edge_unpaved_m[0] == pytest.approx(1000 * STEP_KM, abs=0.01)
-    assert graph.edge_toll_m[0] == pytest.approx(1000 * STEP_KM, abs=0.01)
+    graph, _, _ = graph_of(tmp_path, PLACES, [("w m", ROAD), ("m e", ROAD | {"toll": "yes"})])
+    assert sorted(graph.edge_toll_m) == pytest.approx([0, 1000 * STEP_KM], abs=0.01)
 
 
 @pytest.mark.parametrize(
