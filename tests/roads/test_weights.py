@@ -143,10 +143,11 @@ def test_equals_networkx(tmp_path_factory: pytest.TempPathFactory, seed: int) ->
     net = graph.to_networkx()
 
     def money(_u: int, _v: int, parallel: dict[str, Any]) -> float:
-        return min(
-            float(e["travel_time"]) / 3600 * 12 + (e["length"] * 0.3 + e["toll_m"] * 0.2) / 1000
+        costs = [
+            e["travel_time"] / 3600 * 12 + (e["length"] * 0.3 + e["toll_m"] * 0.2) / 1000
             for e in parallel.values()
-        )
+        ]
+        return float(min(costs))
 
     wanted = nx.single_source_dijkstra_path_length(net.reverse(), int(main[0]), weight=money)
     for zone, value in zip(table["zone_id"], found, strict=True):
