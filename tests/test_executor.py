@@ -29,9 +29,10 @@ from pipeline.road_settings import RoutesSettings
 from pipeline.roads import RoadGraph
 from pipeline.roads.arrays import Int64
 from pipeline.roads.route_lines import Leg
-from pipeline.routes import Errand, route
+from pipeline.routes import route
 from pipeline.sensitivity import run_variants
 from pipeline.settings import ComputeSettings
+from pipeline.site_routes import Errand, one_site
 from pipeline.variants import own_variants
 from tests.demand.persons import drawn
 from tests.roads.worlds import ROAD, Places, Ways, a_study, graph_of, sites_at, zones_at
@@ -40,7 +41,6 @@ from tests.test_sensitivity import study, tables
 SIDE = 6
 ROOT = Path(__file__).parents[1]
 STALLED = "s3"
-one_site = routes_module._one_site
 
 
 def town() -> tuple[Places, Ways]:
@@ -172,7 +172,7 @@ def test_a_cluster_that_loses_a_worker_gives_the_same_bytes(
     serial = routes_with(graph)
     mark = tmp_path / "stalled"
     monkeypatch.setenv("ROADWORTH_TEST_MARK", str(mark))
-    monkeypatch.setattr(routes_module, "_one_site", stalled)
+    monkeypatch.setattr(routes_module, "one_site", stalled)
 
     def kill() -> None:
         while not mark.exists() or not mark.read_text():
