@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from datetime import date
-from typing import Annotated, ClassVar, Literal
+from typing import Annotated, Any, ClassVar, Literal
 
 from pydantic import Field
 
@@ -23,7 +23,7 @@ class RoadColumns(Section):
 
 
 class RoadsSettings(Section):
-    """The road extract, and how its ways become roads that a car can use."""
+    """The road extract, and how its ways become roads that the vehicle can use."""
 
     section_name: ClassVar[str] = "roads"
     files: tuple[InputPath, ...] = setting(
@@ -53,6 +53,22 @@ class RoadsSettings(Section):
         "Whether lines of one level are also joined where they only cross.",
         default=False,
         usual="false; true where the lines were not split at junctions",
+    )
+    profile: Literal["car", "motorcycle", "bicycle", "foot"] = setting(
+        "How people travel: decides access, classes, speeds, directions and barriers by "
+        "config/roads.toml. On foot also for gathered goods (water, firewood); set the gap speeds "
+        "of [routes] to walking, and the cost per km to what a km costs.",
+        "car",
+        usual="car",
+    )
+    rules: dict[str, dict[str, Any]] = setting(
+        "Figures and lists of config/roads.toml to replace, by its sections: [roads.rules.gravel] "
+        "is wrong, [roads.rules.unpaved_kmh] gravel = 45.0 is right.",
+        {},
+        usual="none: the table as it is",
+    )
+    toll_ways: tuple[int, ...] = setting(
+        "OSM ids of ways that cost a toll though they are not tagged so.", (), usual="none"
     )
     class_speed_kmh: dict[str, Annotated[float, Field(gt=0, le=200)]] = setting(
         "Speed where no limit is tagged, by `highway` value; "
@@ -87,7 +103,8 @@ class RoadsSettings(Section):
     )
     tracks: bool | Literal["last_stretch"] = setting(
         "Whether ways of class `track` are roads to drive on; 'last_stretch': only in the first "
-        "and the last part of a trip, never as a way through.",
+        "and the last part of a trip, never as a way through. On foot and by bicycle they always "
+        "are roads.",
         default=False,
         usual="false; true or 'last_stretch' where sites lie on farm, forest or highland tracks",
     )
@@ -118,8 +135,25 @@ class RoadsSettings(Section):
         "open",
         usual="open",
     )
+    unpaved_speed_factor: float = setting(
+        "Multiplies the speed on unpaved roads (a caravan, a low car).",
+        1.0,
+        unit="share",
+        usual="0.7 to 1",
+        gt=0.1,
+        le=1.5,
+    )
+    rough_speed_factor: float = setting(
+        "Multiplies the speed on roads for four-wheel drive only, where they are used.",
+        1.0,
+        unit="share",
+        usual="0.5 to 1",
+        gt=0.1,
+        le=1.5,
+    )
     ferries: Literal["all", "car_tagged", "none"] = setting(
-        "Ferries to use: 'all' that are not closed to cars, only those tagged open to cars, none.",
+        "Ferries to use: 'all' that are not closed to the vehicle, only those tagged open to it, "
+        "none.",
         "all",
         usual="all",
     )

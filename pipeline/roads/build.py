@@ -24,11 +24,10 @@ from pipeline.roads.limited import through_roads
 from pipeline.roads.networks import detached_km, main_networks
 from pipeline.roads.quality import lines_by_class, quality
 from pipeline.roads.restrictions import Run, edge_runs, read_restrictions
+from pipeline.roads.rulebook import RoadRules, load_rules
 from pipeline.roads.rules import (
-    RoadRules,
     WayTraits,
     closed_barriers,
-    load_rules,
     turn_values,
     way_traits,
 )
@@ -56,7 +55,7 @@ def build_roads(
     Raises
     ------
     RoadsError
-        No way of the extract is open to cars.
+        No way of the extract is open to the vehicle.
     StudyError
         The study gives a speed for an unknown class.
     """
@@ -68,7 +67,7 @@ def build_roads(
     segments, losses = segments_of(extract, traits, rules, settings)
     if not segments.count or traits.is_ferry[segments.way].all():
         raise RoadsError(
-            f"none of the {extract.ways} ways of the road extract is a road open to cars. "
+            f"none of the {extract.ways} ways of the road extract is a road open to the vehicle. "
             "Give an extract with roads, or allow tracks by roads.tracks."
         )
     extract, segments = cut_at_barriers(

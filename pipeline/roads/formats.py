@@ -16,7 +16,7 @@ from pipeline.roads.merge import FileRoads, merge
 from pipeline.roads.osm import read_osm
 from pipeline.roads.pbf import read_pbf
 from pipeline.roads.pbf_frame import OddFileError
-from pipeline.roads.rules import load_rules
+from pipeline.roads.rulebook import load_rules
 
 # A clean cut leaves roads without nodes along its edge only; more than this share, and this
 # many, and the file has lost nodes.

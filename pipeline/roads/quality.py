@@ -15,7 +15,8 @@ from pipeline.roads.extract import RoadExtract
 from pipeline.roads.graph import RoadGraph, unpack_distance_km, unpack_time_min
 from pipeline.roads.lines import line_strings
 from pipeline.roads.restrictions import Restrictions
-from pipeline.roads.rules import FERRY, RoadRules, WayTraits
+from pipeline.roads.rulebook import FERRY, RoadRules
+from pipeline.roads.rules import WayTraits
 from pipeline.roads.segments import Losses, Segments
 
 NO_CLASS = "all"
@@ -83,8 +84,8 @@ def _whole(
     dropped_km = float(km_of_edges(graph)[dropped].sum())
     rows = [
         ("ways in the extract", extract.ways, "ways", "highway or ferry tag"),
-        ("ways for cars", int((traits.class_code >= 0).sum()), "ways", "of a class in use"),
-        ("ways closed to cars", int(traits.closed.sum()), "ways", "by their access tags"),
+        ("ways for the vehicle", int((traits.class_code >= 0).sum()), "ways", "of a class in use"),
+        ("ways closed to the vehicle", int(traits.closed.sum()), "ways", "by their access tags"),
         (
             "unreadable speed limits",
             int((traits.limit_unreadable & on_road).sum()),

@@ -7,65 +7,30 @@ worked out once per distinct value and spread over the ways.
 from __future__ import annotations
 
 import re
-import tomllib
 from collections.abc import Callable
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
 import numpy as np
 import pandas as pd
 
-from pipeline.errors import StudyError
 from pipeline.road_settings import RoadsSettings
 from pipeline.roads.arrays import Bool, Float64, Int8, Int32
 from pipeline.roads.conditions import Calendar
 from pipeline.roads.extract import RoadExtract
+from pipeline.roads.rulebook import FERRY, RoadRules
 from pipeline.roads.speeds import read_code_kmh, read_duration_min, read_limit_kmh
-
-RULES_FILE = Path(__file__).parents[2] / "config" / "roads.toml"
-FERRY = "ferry"
-
-
-@dataclass(frozen=True)
-class RoadRules:
-    """The table of rules, with what the study replaces in it.
-
-    Attributes
-    ----------
-    classes : road classes in order; a class's code is its position; ferries come last.
-    class_kmh, class_oneway, class_unpaved : defaults of each class, in that order.
-    access, barriers, turns, oneway, speed, unpaved_kmh, smoothness_kmh, tracktype_kmh : sections
-        of the table, as they stand there.
-    ferry : likewise.
-    delays_s : delays with what the study replaces, times its calibration factor.
-    """
-
-    classes: tuple[str, ...]
-    class_kmh: Float64
-    class_oneway: Bool
-    class_unpaved: Bool
-    access: dict[str, Any]
-    barriers: dict[str, Any]
-    turns: dict[str, Any]
-    oneway: dict[str, Any]
-    speed: dict[str, Any]
-    unpaved_kmh: dict[str, float]
-    smoothness_kmh: dict[str, float]
-    tracktype_kmh: dict[str, float]
-    delays_s: dict[str, float]
-    ferry: dict[str, float]
 
 
 @dataclass(frozen=True)
 class WayTraits:
-    """What a car may do on each way: arrays with one value per way of the extract.
+    """What the vehicle may do on each way: arrays with one value per way of the extract.
 
     Attributes
     ----------
-    class_code : position in ``RoadRules.classes``; -1: no way for cars (a path, a class that
+    class_code : position in ``RoadRules.classes``; -1: no way for it (a path, a class that
         the study leaves out).
-    closed : whether access tags close it to cars.
+    closed : whether access tags close it.
     forward, backward : whether it can be driven in the order of its nodes, and against it.
     forward_kmh, backward_kmh : driven speed; of ferries NaN (see `ferry_min`).
     limit_tagged, limit_unreadable : whether a limit is tagged, and cannot be read.
@@ -89,51 +54,6 @@ class WayTraits:
     ferry_min: Float64
 
 
-def load_rules(settings: RoadsSettings, file: Path = RULES_FILE) -> RoadRules:
-    """Read the table of rules and put the study's own speeds in it.
-
-    Raises
-    ------
-    StudyError
-        The study gives a speed for a class that the table does not know.
-    """
-    table = tomllib.loads(file.read_text(encoding="utf-8"))
-    classes = table["classes"]
-    for name, kmh in settings.class_speed_kmh.items():
-        if name not in classes:
-            raise StudyError(
-                f"roads.class_speed_kmh: {name!r} is no road class; known: {', '.join(classes)}."
-            )
-        classes[name] = classes[name] | {"kmh": kmh}
-    rows = [*classes.values(), {"kmh": np.nan, "oneway": False, "unpaved": False}]
-    return RoadRules(
-        classes=(*classes, FERRY),
-        class_kmh=np.array([row["kmh"] for row in rows], dtype=np.float64),
-        class_oneway=np.array([row["oneway"] for row in rows], dtype=np.bool_),
-        class_unpaved=np.array([row["unpaved"] for row in rows], dtype=np.bool_),
-        access=table["access"],
-        barriers=table["barriers"],
-        turns=table["turns"],
-        oneway=table["oneway"],
-        speed=table["speed"],
-        unpaved_kmh=table["unpaved_kmh"],
-        smoothness_kmh=table["smoothness_kmh"],
-        tracktype_kmh=table["tracktype_kmh"],
-        delays_s=_delays(table["delays_s"], settings),
-        ferry=table["ferry"],
-    )
-
-
-def _delays(table: dict[str, float], settings: RoadsSettings) -> dict[str, float]:
-    """Delays with what the study replaces in them, times its calibration."""
-    strange = sorted(set(settings.delay_s) - set(table))
-    if strange:
-        raise StudyError(f"roads.delay_s: {strange[0]!r} is no delay; known: {', '.join(table)}.")
-    factor = settings.calibration_factor
-    delays = table | settings.delay_s
-    return {name: s if name == "sharp_deg" else s * factor for name, s in delays.items()}
-
-
 def way_traits(
     extract: RoadExtract, rules: RoadRules, settings: RoadsSettings, calendar: Calendar
 ) -> WayTraits:
@@ -144,26 +64,33 @@ def way_traits(
     has_class = class_code >= 0
     access = _access(tags, rules, calendar)
     closed = (access == 0) | _untagged_ferry(is_ferry, access, settings)
+    closed |= _not_opened_by_name(tags, class_code, rules, calendar)
     direction = _direction(tags, class_code, rules, calendar)
     surface_kmh = _by_value(tags["surface"], lambda v: rules.unpaved_kmh.get(v, np.inf), np.nan)
     default_unpaved = np.isnan(surface_kmh) & has_class & rules.class_unpaved[class_code]
     is_unpaved = np.isfinite(surface_kmh) | default_unpaved
-    closed |= _out_of_season(tags, calendar) | _too_rough(tags, is_unpaved & ~is_ferry, settings)
+    rough = _by_value(tags["4wd_only"], lambda v: float(v == "yes"), 0) == 1
+    rough &= bool(rules.vehicle["heeds_4wd_only"])
+    closed |= _out_of_season(tags, calendar)
+    closed |= _too_rough(tags, rough, is_unpaved & ~is_ferry, settings)
     cap_kmh = np.fmin(surface_kmh, _rough_cap(tags, rules))
     forward_kmh, backward_kmh, unreadable = _speeds(tags, class_code, cap_kmh, rules, calendar)
+    factor = settings.speed_factor / settings.calibration_factor
+    share = np.where(is_unpaved, settings.unpaved_speed_factor, 1.0)
+    share = share * np.where(rough, settings.rough_speed_factor, 1.0) * factor
     is_open = has_class & ~closed
     return WayTraits(
         class_code=class_code,
         closed=closed & has_class,
         forward=is_open & (direction >= 0) & (direction != CLOSED),
         backward=is_open & (direction <= 0),
-        forward_kmh=forward_kmh * settings.speed_factor / settings.calibration_factor,
-        backward_kmh=backward_kmh * settings.speed_factor / settings.calibration_factor,
+        forward_kmh=forward_kmh * share,
+        backward_kmh=backward_kmh * share,
         limit_tagged=tags["maxspeed"].notna().to_numpy(),
         limit_unreadable=unreadable,
         is_limited=is_open & ((access == ENDS) | _last_stretch(class_code, rules, settings)),
         is_ferry=is_ferry,
-        is_toll=_last_tagged(tags, ("toll", "toll:motorcar"), lambda v: float(v == "yes")) == 1,
+        is_toll=_is_toll(extract, rules, settings),
         is_unpaved=is_unpaved,
         ferry_min=np.where(is_ferry, _by_value(tags["duration"], read_duration_min), np.nan),
     )
@@ -177,18 +104,23 @@ def _class_codes(tags: pd.DataFrame, rules: RoadRules, settings: RoadsSettings) 
     """Code of each way's class; a way that is a road and a ferry counts as a ferry."""
     codes = {name: code for code, name in enumerate(rules.classes)}
     if settings.tracks is False:
-        del codes["track"]
+        codes = {name: code for name, code in codes.items() if not rules.on_request[code]}
     ferry = codes.pop(FERRY) if settings.ferries != "none" else -1
     road = _by_value(tags["highway"], lambda value: codes.get(value, -1), -1)
     is_ferry = _by_value(tags["route"], lambda value: value == FERRY, 0) == 1
     return np.where(is_ferry, ferry, road).astype(np.int32)
 
 
-def _access(tags: pd.DataFrame, rules: RoadRules, calendar: Calendar | None = None) -> Float64:
+def _access(
+    tags: pd.DataFrame,
+    rules: RoadRules,
+    calendar: Calendar | None = None,
+    keys: list[str] | None = None,
+) -> Float64:
     """1 open, 0 closed, NaN untagged: the most specific key with a known value decides."""
     known = dict.fromkeys(rules.access["closed"], 0.0) | dict.fromkeys(rules.access["open"], 1.0)
     known |= dict.fromkeys(rules.access["ends"], ENDS)
-    keys = rules.access["keys"]
+    keys = rules.access["keys"] if keys is None else keys
     return _last_tagged(tags, keys, lambda value: known.get(value, np.nan), calendar)
 
 
@@ -197,10 +129,26 @@ def _out_of_season(tags: pd.DataFrame, calendar: Calendar) -> Bool:
     return np.asarray(_by_value(tags["seasonal"], calendar.is_open(tags["seasonal"])) == 0)
 
 
-def _too_rough(tags: pd.DataFrame, is_unpaved: Bool, settings: RoadsSettings) -> Bool:
+def _not_opened_by_name(
+    tags: pd.DataFrame, class_code: Int32, rules: RoadRules, calendar: Calendar
+) -> Bool:
+    """Ways of classes that the vehicle uses only where a tag of its own opens them."""
+    asks = (class_code >= 0) & rules.if_tagged[class_code]
+    own = _access(tags, rules, calendar, rules.access["keys"][-1:])
+    return np.asarray(asks & ~(own > 0))
+
+
+def _is_toll(extract: RoadExtract, rules: RoadRules, settings: RoadsSettings) -> Bool:
+    """Ways on which the vehicle owes a toll, by their tags or by the study's list."""
+    listed = np.isin(extract.way_id, np.array(settings.toll_ways, dtype=np.int64))
+    keys = rules.vehicle["toll_keys"]
+    tagged = _last_tagged(extract.way_tags, keys, lambda value: float(value == "yes")) == 1
+    return np.asarray(tagged | listed)
+
+
+def _too_rough(tags: pd.DataFrame, rough: Bool, is_unpaved: Bool, settings: RoadsSettings) -> Bool:
     """Ways that the study's vehicle does not take: fords, rough tracks, unpaved roads."""
     ford = _by_value(tags["ford"], lambda value: float(value != "no"), 0) == 1
-    rough = _by_value(tags["4wd_only"], lambda value: float(value == "yes"), 0) == 1
     return np.asarray(
         (ford & (settings.fords == "closed"))
         | (rough & (not settings.four_wheel_drive))
@@ -217,7 +165,7 @@ def _rough_cap(tags: pd.DataFrame, rules: RoadRules) -> Float64:
 
 def _last_stretch(class_code: Int32, rules: RoadRules, settings: RoadsSettings) -> Bool:
     """Tracks, where the study opens them at the ends of a trip only."""
-    is_track = class_code == rules.classes.index("track")
+    is_track = (class_code >= 0) & rules.on_request[class_code]
     return np.asarray(is_track & (settings.tracks == "last_stretch"))
 
 
@@ -239,6 +187,8 @@ def turn_values(extract: RoadExtract, rules: RoadRules, calendar: Calendar) -> p
     """Of each turn restriction what it forbids; missing where it does not bind the vehicle."""
     tags = extract.turn_relations.tags
     values = tags["restriction"].astype(object)
+    if not rules.turns["bind"]:
+        return pd.Series(np.full(len(values), np.nan, dtype=object), index=values.index)
     for key in rules.turns["keys"]:
         own = tags[key].astype(object)
         values = own.where(own.notna(), values)
@@ -298,7 +248,10 @@ def _speeds(
         one = limit(key)
         unreadable |= tags[key].notna().to_numpy() & np.isnan(one)
         kmh = np.where(np.isnan(one), both, one)
-        speeds.append(np.fmin(np.where(np.isnan(kmh), default, kmh), cap_kmh))
+        kmh = np.where(np.isnan(kmh), default, kmh)
+        if not rules.vehicle["drives_at_limit"]:
+            kmh = np.fmin(kmh, default)
+        speeds.append(np.fmin(kmh, cap_kmh))
     return speeds[0], speeds[1], unreadable
 
 

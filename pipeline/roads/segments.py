@@ -11,7 +11,8 @@ from pipeline.road_settings import RoadsSettings
 from pipeline.roads.arrays import Bool, Float64, Int32, Int64
 from pipeline.roads.delays import node_delays_s
 from pipeline.roads.extract import RoadExtract
-from pipeline.roads.rules import RoadRules, WayTraits
+from pipeline.roads.rulebook import RoadRules
+from pipeline.roads.rules import WayTraits
 
 WGS84 = Geod(ellps="WGS84")
 

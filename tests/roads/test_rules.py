@@ -10,7 +10,7 @@ import pytest
 from pipeline.errors import RoadsError, StudyError
 from pipeline.roads import RoadGraph
 from pipeline.roads.graph import unpack_distance_km, unpack_time_min
-from pipeline.roads.rules import load_rules
+from pipeline.roads.rulebook import load_rules
 from pipeline.roads.speeds import read_duration_min, read_limit_kmh
 from tests.roads.worlds import ROAD, STEP_KM, Ways, a_study, arcs_between, graph_of
 
