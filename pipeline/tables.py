@@ -234,10 +234,13 @@ class RoadQuality(Table):
 
 
 class RoadLines(Table):
-    """Roads of the graph as lines (WGS 84), for maps."""
+    """Roads as lines (WGS 84), for maps: those of the graph, and those that were left out."""
 
     road_class: Series[str] = column("road class (OpenStreetMap `highway` value, or 'ferry')")
     distance_km: Series[float] = column("length along the line", unit="km", ge=0)
+    left_out: Series[str] | None = column(
+        "why no route runs on it; missing: routes can", nullable=True
+    )
 
 
 # --- route -----------------------------------------------------------------------------------

@@ -29,7 +29,8 @@ def build_layers(results: Results) -> dict[str, gpd.GeoDataFrame]:
     Returns
     -------
     Layers by name: `zones`, `zones_<site>` (only with several sites), `zone_points`, `routes`,
-    `roads_used`, `sites`. A study that was entered at a finished table may have none.
+    `roads_used`, `dropped_roads`, `sites`. A study that was entered at a finished table may
+    have none.
     """
     layers: dict[str, gpd.GeoDataFrame] = {}
     if results.zones is not None:
@@ -38,9 +39,26 @@ def build_layers(results: Results) -> dict[str, gpd.GeoDataFrame]:
     if results.route_lines is not None:
         layers["routes"] = _route_layer(results, results.route_lines)
         layers["roads_used"] = roads_used(results.route_lines, results.zone_table)
+    if results.dropped_roads is not None:
+        layers["dropped_roads"] = results.dropped_roads
     if results.sites is not None:
         layers["sites"] = _site_layer(results, results.sites)
     return {name: layer for name, layer in layers.items() if len(layer)}
+
+
+def roads_in_use(road_lines: gpd.GeoDataFrame | None) -> gpd.GeoDataFrame | None:
+    """Lines of the roads that routes can run on."""
+    if road_lines is None or "left_out" not in road_lines:
+        return road_lines
+    kept = road_lines[road_lines["left_out"].isna()]
+    return kept.drop(columns="left_out").reset_index(drop=True)
+
+
+def dropped_roads(road_lines: gpd.GeoDataFrame | None) -> gpd.GeoDataFrame | None:
+    """Lines of the roads that were left out of the graph, with the reason."""
+    if road_lines is None or "left_out" not in road_lines:
+        return None
+    return road_lines[road_lines["left_out"].notna()].reset_index(drop=True)
 
 
 def zone_figures(results: Results) -> pd.DataFrame | None:

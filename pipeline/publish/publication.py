@@ -19,7 +19,7 @@ from pipeline.publish.feecurve import fee_curves
 from pipeline.publish.figures import draw_figures, write_figures
 from pipeline.publish.geofiles import write_geojson, write_geoparquet
 from pipeline.publish.geopackage import About, write_geopackage
-from pipeline.publish.layers import build_layers
+from pipeline.publish.layers import build_layers, dropped_roads, roads_in_use
 from pipeline.publish.manifest import manifest_text, run_manifest
 from pipeline.publish.privacy import (
     hide_residuals,
@@ -174,7 +174,8 @@ def publish(
         provenance=provenance,
         origin_summary=origin_summary,
         road_quality=road_quality,
-        road_lines=road_lines,
+        road_lines=roads_in_use(road_lines),
+        dropped_roads=dropped_roads(road_lines),
         routes=routes,
         route_lines=route_lines,
         zones=zones,

@@ -22,8 +22,9 @@ from pipeline.roads.extract import E7, RoadExtract
 from pipeline.roads.graph import CLOSED, RoadGraph, best_arcs, flag_bits, pack
 from pipeline.roads.limited import through_roads
 from pipeline.roads.networks import detached_km, main_networks
-from pipeline.roads.quality import lines_by_class, quality
+from pipeline.roads.quality import quality
 from pipeline.roads.restrictions import Run, edge_runs, read_restrictions
+from pipeline.roads.road_lines import lines_by_class
 from pipeline.roads.rulebook import RoadRules, load_rules
 from pipeline.roads.rules import (
     WayTraits,
@@ -49,8 +50,8 @@ def build_roads(
 
     Returns
     -------
-    The graph, the table `road_quality`, and the lines of the graph (`road_lines`, WGS 84),
-    each road once whatever its directions.
+    The graph, the table `road_quality`, and the roads as lines (`road_lines`, WGS 84), each
+    once whatever its directions, with those that were left out of the graph and why.
 
     Raises
     ------
@@ -83,7 +84,8 @@ def build_roads(
     runs = edge_runs(turns.runs, chains)
     graph, parts = _graph(extract, traits, segments, chains, nodes, rank, runs, rules, settings)
     table = quality(extract, traits, rules, segments, losses, graph, parts, turns, calendar)
-    return graph, table, lines_by_class(extract, traits, rules, segments, chains)
+    is_main = graph.main_edges() | graph.edge_is_ferry
+    return graph, table, lines_by_class(extract, traits, rules, segments, chains, is_main)
 
 
 def summarise_roads(outputs: tuple[RoadGraph, pd.DataFrame, gpd.GeoDataFrame]) -> str:

@@ -1,19 +1,16 @@
-"""What a road extract holds and what was lost of it: a table, and lines for maps."""
+"""What a road extract holds and what was lost of it."""
 
 from __future__ import annotations
 
 from typing import Any
 
-import geopandas as gpd
 import numpy as np
 import pandas as pd
 
-from pipeline.roads.arrays import Bool, Float64, Int64
+from pipeline.roads.arrays import Bool, Float64
 from pipeline.roads.conditions import Calendar
-from pipeline.roads.contract import Chains
 from pipeline.roads.extract import RoadExtract
 from pipeline.roads.graph import RoadGraph, unpack_distance_km, unpack_time_min
-from pipeline.roads.lines import line_strings
 from pipeline.roads.restrictions import Restrictions
 from pipeline.roads.rulebook import FERRY, RoadRules
 from pipeline.roads.rules import WayTraits
@@ -160,35 +157,3 @@ def _delay_share(graph: RoadGraph) -> float:
 def _one_way_km(segments: Segments, road: Bool) -> float:
     one_way = np.isnan(segments.forward_s) != np.isnan(segments.backward_s)
     return float(segments.length_m[one_way & road[segments.way]].sum() / 1000)
-
-
-def lines_by_class(
-    extract: RoadExtract,
-    traits: WayTraits,
-    rules: RoadRules,
-    segments: Segments,
-    chains: Chains,
-) -> gpd.GeoDataFrame:
-    """The table `road_lines`: a line for each run of one class along an edge."""
-    code = traits.class_code[segments.way[chains.segment]]
-    begins = np.zeros(len(code), dtype=np.bool_)
-    begins[chains.first[:-1]] = True
-    begins[1:] |= code[1:] != code[:-1]
-    first = np.flatnonzero(begins)
-    counts: Int64 = np.diff(np.append(first, len(code))).astype(np.int64)
-    tail = np.where(chains.against, segments.b[chains.segment], segments.a[chains.segment])
-    head = np.where(chains.against, segments.a[chains.segment], segments.b[chains.segment])
-    run = np.repeat(np.arange(len(first)), counts)
-    vertex = np.empty(len(code) + len(first), dtype=np.int64)
-    vertex[np.arange(len(code)) + run] = tail
-    vertex[np.cumsum(counts + 1) - 1] = head[first + counts - 1]
-    lon, lat = extract.degrees(vertex)
-    names = np.array(rules.classes, dtype=object)
-    return gpd.GeoDataFrame(
-        {
-            "road_class": names[code[first]],
-            "distance_km": np.add.reduceat(segments.length_m[chains.segment], first) / 1000,
-        },
-        geometry=line_strings(lon, lat, counts + 1),
-        crs="EPSG:4326",
-    )
