@@ -7,7 +7,7 @@ stage        module                            writes
 ===========  ================================  =================================================
 geocode      ``origins``                       ``origins``, ``origin_summary``
 roads        ``roads``                         road graph, ``road_quality``, ``road_lines``
-route        ``routes`` (``search``)           ``routes``, ``route_lines``
+route        ``routes`` (``search``)           ``routes``, ``route_lines``, ``route_quality``
 cost         ``costs``                         ``costs``, ``reported_check``
 join         ``finished``                      ``zone_table``, ``trip_table``
 demand       ``demand``                        ``estimates``, ``fit``, ``diagnostics``,

@@ -29,7 +29,7 @@ from pipeline.roads import (
     read_extract,
     summarise_roads,
 )
-from pipeline.routes import route, summarise_route
+from pipeline.route_quality import route_and_check, summarise_routes
 from pipeline.sections import Section
 from pipeline.sensitivity import sensitivity, summarise_sensitivity
 from pipeline.sensitivity_settings import SensitivitySettings
@@ -51,6 +51,7 @@ from pipeline.tables import (
     Estimates,
     FeeSchedule,
     Fit,
+    MeasuredTimes,
     Origins,
     OriginSummary,
     ReportedCheck,
@@ -58,6 +59,7 @@ from pipeline.tables import (
     RoadLines,
     RoadQuality,
     RouteLines,
+    RouteQuality,
     Routes,
     Sensitivity,
     Sites,
@@ -148,6 +150,7 @@ INPUTS: dict[Kind, Input] = {
         ),
         Input(Zones, inputs.read_zones, (ZonesSettings,), "zones.file"),
         Input(ZonePoints, inputs.read_zone_points, (ZonesSettings,), "zones.points.file"),
+        Input(MeasuredTimes, inputs.read_measured_times, (RoutesSettings,), "routes.measured.file"),
         Input(Crosswalk, inputs.read_crosswalk, (VisitsSettings,), "visits.crosswalk"),
         Input(Sites, inputs.read_sites, (SitesSettings,), "sites.file"),
         Input(RoadExtract, _extract, (RoadsSettings,), "roads.files"),
@@ -182,11 +185,11 @@ FLOW: tuple[Stage, ...] = (
     ),
     Stage(
         "route",
-        route,
-        reads=(Zones, Sites, RoadGraph, Maybe(ZonePoints)),
-        writes=(Routes, RouteLines),
-        sections=(RoutesSettings, ComputeSettings),
-        summarise=summarise_route,
+        route_and_check,
+        reads=(Zones, Sites, RoadGraph, Maybe(ZonePoints), Maybe(MeasuredTimes)),
+        writes=(Routes, RouteLines, RouteQuality),
+        sections=(RoutesSettings, RoadsSettings, ComputeSettings),
+        summarise=summarise_routes,
     ),
     Stage(
         "cost",
@@ -268,6 +271,7 @@ FLOW: tuple[Stage, ...] = (
             Sensitivity,
             Maybe(Diagnostics),
             Maybe(Residuals),
+            Maybe(RouteQuality),
         ),
         writes=(Publication,),
         sections=(*SECTIONS[1:], ScenarioSettings),

@@ -19,7 +19,7 @@ from pipeline.errors import InputError, StudyError, TableError
 from pipeline.mapped import Mapped, as_truth, read_section
 from pipeline.schema import Table
 from pipeline.study import Study
-from pipeline.tables import Crosswalk, Sites, ZonePoints, Zones
+from pipeline.tables import Crosswalk, MeasuredTimes, Sites, ZonePoints, Zones
 from pipeline.userfiles import PARQUET, TEXT, UserTable, read_user_table
 
 
@@ -127,6 +127,24 @@ def read_crosswalk(study: Study) -> pd.DataFrame | None:
         {"postal_code": mapped.texts("postal_code"), "zone_id": mapped.texts("zone_id")}
     )
     checked = Crosswalk.checked(frame, source=table.source(columns.model_dump()))
+    return checked.reset_index(drop=True)
+
+
+def read_measured_times(study: Study) -> pd.DataFrame | None:
+    """Read measured or reported times; None where the study has none."""
+    section = study.routes.measured
+    if section.file is None:
+        return None
+    table = read_section(section)
+    mapped = Mapped(table, section.columns)
+    frame = pd.DataFrame(
+        {
+            "zone_id": mapped.texts("zone_id"),
+            "site_id": mapped.texts("site_id"),
+            "measured_min": mapped.numbers("measured_min"),
+        }
+    )
+    checked = MeasuredTimes.checked(frame, source=table.source(section.columns.model_dump()))
     return checked.reset_index(drop=True)
 
 

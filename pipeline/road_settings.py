@@ -7,7 +7,7 @@ from typing import Annotated, Any, ClassVar, Literal
 
 from pydantic import Field
 
-from pipeline.sections import InputPath, Section, setting
+from pipeline.sections import FileSection, InputPath, Section, setting
 
 
 class RoadColumns(Section):
@@ -86,8 +86,8 @@ class RoadsSettings(Section):
         le=1.5,
     )
     calibration_factor: float = setting(
-        "Multiplies all times on roads, delays included; from measured or reported times "
-        "(`pipeline.roads.delays.fit_calibration`).",
+        "Multiplies all times on roads, delays included; name measured or reported times in "
+        "[routes.measured], and the table route_quality says what it should be.",
         1.0,
         unit="share",
         usual="1.0 (as modelled) to 1.5 (towns)",
@@ -267,6 +267,21 @@ class GeneralisedSettings(Section):
     )
 
 
+class MeasuredColumns(Section):
+    """The study's own column names in the file of measured times."""
+
+    zone_id: str = setting("Zone of origin.", "zone_id")
+    site_id: str = setting("Site.", "site_id")
+    measured_min: str = setting("Time one way, door to site, minutes.", "measured_min")
+
+
+class MeasuredSettings(FileSection):
+    """Times that were measured or reported: they say by what factor the modelled ones are off."""
+
+    section_name: ClassVar[str] = "routes.measured"
+    columns: MeasuredColumns = setting("Column names in that file.", MeasuredColumns())
+
+
 class RoutesSettings(Section):
     """How origins and sites are tied to the roads."""
 
@@ -282,6 +297,10 @@ class RoutesSettings(Section):
     )
     generalised: GeneralisedSettings = setting(
         "Prices for minimise = 'generalised_cost'.", GeneralisedSettings()
+    )
+    measured: MeasuredSettings = setting(
+        "Measured or reported times; the table route_quality gives the factor that they ask for.",
+        MeasuredSettings(),
     )
     charges: ChargesSettings = setting(
         "Fares and tolls of single ferries, roads and booths.", ChargesSettings()

@@ -151,6 +151,17 @@ class Crosswalk(Table):
         unique = ["postal_code"]
 
 
+class MeasuredTimes(Table):
+    """Times from door to site that were measured or reported."""
+
+    zone_id: Series[str] = column("zone of origin")
+    site_id: Series[str] = column("site or substitute")
+    measured_min: Series[float] = column("time one way", unit="min", gt=0)
+
+    class Config:
+        unique = ["zone_id", "site_id"]
+
+
 class Sites(Table):
     """Sites to be valued and their substitutes: one row per access point."""
 
@@ -343,6 +354,18 @@ class RouteLines(Table):
 
     class Config:
         unique = ["zone_id", "site_id"]
+
+
+class RouteQuality(Table):
+    """How well the routes stand on the roads: gaps, delay, measured times."""
+
+    measure: Series[str] = column("what is counted or measured")
+    value: Series[float] = column("the figure", nullable=True)
+    unit: Series[str] = column("unit of the figure")
+    note: Series[str] = column("what it means for the result", nullable=True)
+
+    class Config:
+        unique = ["measure"]
 
 
 # --- cost ------------------------------------------------------------------------------------
@@ -792,6 +815,7 @@ TABLES: tuple[type[Table], ...] = (
     Zones,
     ZonePoints,
     Crosswalk,
+    MeasuredTimes,
     Sites,
     Origins,
     OriginSummary,
@@ -799,6 +823,7 @@ TABLES: tuple[type[Table], ...] = (
     RoadLines,
     Routes,
     RouteLines,
+    RouteQuality,
     Costs,
     ReportedCheck,
     ZoneTable,

@@ -137,6 +137,19 @@ def _hidden(results: Results) -> Html | None:
     return tag("div", tag("h3", "Hidden figures"), tag("p", words))
 
 
+def route_table(results: Results) -> Html | None:
+    """How well the routes stand on the roads: gaps, delay, measured times."""
+    quality = results.route_quality
+    if quality is None or quality.empty:
+        return None
+    rows = [
+        (row.measure, number(row.value), row.unit, "" if pd.isna(row.note) else row.note)
+        for row in rows_of(quality)
+    ]
+    head = ("Measure", "Figure", "Unit", "What it means")
+    return table(head, rows, caption="Quality of the routes", numbers=(1,), class_="prose")
+
+
 def road_table(results: Results) -> Html | None:
     """What the road extract holds."""
     quality = results.road_quality

@@ -145,6 +145,7 @@ def publish(
     sensitivity: pd.DataFrame,
     diagnostics: pd.DataFrame | None = None,
     residuals: pd.DataFrame | None = None,
+    route_quality: pd.DataFrame | None = None,
     *,
     study: Study,
 ) -> tuple[Publication]:
@@ -153,7 +154,7 @@ def publish(
     Parameters
     ----------
     provenance : what the run was made from.
-    origin_summary, ..., residuals : the tables of the flow; those that the study neither
+    origin_summary, ..., route_quality : the tables of the flow; those that the study neither
         built nor brought are None, and the report says what is missing for it.
 
     Raises
@@ -192,6 +193,7 @@ def publish(
         sensitivity=coarse(sensitivity) if below else sensitivity,
         diagnostics=diagnostics,
         residuals=hide_residuals(residuals, shown),
+        route_quality=route_quality,
         curves=fitted_curves(zone_table, trip_table, estimates, fit, study=study),
         fees=fee_curves(zone_table, trip_table, estimates, fit, fee_schedule, study=study),
         headlines=headlines(fit, surplus, finished, sites),

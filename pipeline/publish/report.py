@@ -14,7 +14,7 @@ from pipeline.publish.closing import attribution, cautions, inputs_table, made_w
 from pipeline.publish.effects import effects_figure, has_effects
 from pipeline.publish.evidence import demand_figure, map_figure, site_heading, site_map
 from pipeline.publish.findings import fee_figure, models_tried, values_table
-from pipeline.publish.losses import losses, road_table
+from pipeline.publish.losses import losses, road_table, route_table
 from pipeline.publish.mapmeasures import MapFigures
 from pipeline.publish.mapview import BaseMap, base_map
 from pipeline.publish.markup import Html, join, tag
@@ -109,7 +109,7 @@ def _sections(
             for headline in results.headlines
         )
 
-    roads = road_table(results)
+    roads = [part for part in (road_table(results), route_table(results)) if part is not None]
     return [
         _section("map", "Where visitors come from", _MAP, each(lambda _, h: draw_map(h))),
         _section("demand", "How cost holds them back", _DEMAND, each(demand_figure)),
@@ -121,7 +121,7 @@ def _sections(
         *_reported(results),
         _section("models", "Models tried", _MODELS, each(models_tried)),
         *_referee(results, base, each),
-        *([_section("roads", "The road data", _ROADS, roads)] if roads else []),
+        *([_section("roads", "The road data", _ROADS, *roads)] if roads else []),
         _section("methods", "How it was worked out", _METHODS, *methods(results)),
         _section("care", "Cautions", "Read these before quoting a figure.", cautions()),
         _section("sources", "Sources", _SOURCES, sources(results)),

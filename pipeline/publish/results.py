@@ -78,6 +78,7 @@ class Results:
     headlines: tuple[Headline, ...]
     diagnostics: pd.DataFrame | None = None
     residuals: pd.DataFrame | None = None
+    route_quality: pd.DataFrame | None = None
     dropped_roads: gpd.GeoDataFrame | None = None
 
     @property
