@@ -28,7 +28,8 @@ def test_what_is_left_out_and_why(tmp_path: Path) -> None:
         ("a d", {"highway": "path"}),
         ("d missing", ROAD | {"access": "no"}),
     ]
-    lines = RoadLines.checked(graph_of(tmp_path, places, ways)[2])
+    lines = graph_of(tmp_path, places, ways)[2]
+    RoadLines.checked(lines)
     left_out = dropped_roads(lines)
     in_use = roads_in_use(lines)
     assert left_out is not None
@@ -42,6 +43,6 @@ def test_what_is_left_out_and_why(tmp_path: Path) -> None:
 
 def test_nothing_is_left_out_of_a_sound_network(tmp_path: Path) -> None:
     lines = graph_of(tmp_path, {"a": (0.0, 0.0), "b": (0.01, 0.0)}, [("a b", ROAD)])[2]
-    left_out = dropped_roads(RoadLines.checked(lines))
+    left_out = dropped_roads(lines)
     assert left_out is not None
     assert left_out.empty
