@@ -234,9 +234,12 @@ FLOW: tuple[Stage, ...] = (
             FINISHED,
             Fit,
             Surplus,
+            Maybe(RoadGraph),
+            Maybe(ZonePoints),
         ),
         writes=(Sensitivity,),
         sections=(
+            RoutesSettings,
             CostsSettings,
             VisitsSettings,
             ZonesSettings,

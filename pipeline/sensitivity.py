@@ -7,7 +7,7 @@ there. The first row of a site is the study itself, as its own tables give it.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -16,9 +16,12 @@ from pandera.config import config_context
 
 from pipeline.costs import cost
 from pipeline.demand import demand
-from pipeline.errors import PipelineError
+from pipeline.errors import PipelineError, RouteError
 from pipeline.executor import Workforce, in_batches, make_executor
 from pipeline.finished import join, repriced
+from pipeline.roads.graph import RoadGraph
+from pipeline.route_prices import with_route_prices
+from pipeline.routes import route
 from pipeline.settings import ComputeSettings
 from pipeline.study import Study
 from pipeline.surplus import surplus
@@ -41,6 +44,7 @@ class Pricing:
     routes: pd.DataFrame
     zones: pd.DataFrame
     sites: pd.DataFrame
+    rerouted: dict[str, pd.DataFrame] = field(default_factory=dict)  # by their [routes]
 
 
 @dataclass(frozen=True)
@@ -61,6 +65,8 @@ def sensitivity(
     trip_table: pd.DataFrame | None,
     fit: pd.DataFrame,
     values: pd.DataFrame,
+    graph: RoadGraph | None = None,
+    zone_points: pd.DataFrame | None = None,
     *,
     study: Study,
 ) -> tuple[pd.DataFrame]:
@@ -72,8 +78,9 @@ def sensitivity(
         table, and then only the regression is varied.
     zone_table, trip_table : the finished table.
     fit, values : tables `fit` and `surplus` of the study itself.
-    study : reads [costs], [visits], [zones], [market], [demand], [surplus], [sensitivity] and
-        [compute].
+    graph, zone_points : for alternatives that choose routes otherwise.
+    study : reads [routes], [costs], [visits], [zones], [market], [demand], [surplus],
+        [sensitivity] and [compute].
 
     Returns
     -------
@@ -88,6 +95,8 @@ def sensitivity(
         chosen = set(fit.loc[fit["chosen"], "model"].astype(str))
         finished = None if pricing is None else zone_table
         variants = [*standard_variants(study, finished, chosen), *variants]
+    if pricing is not None and graph is not None:
+        pricing.rerouted.update(rerouted_by(variants, pricing, graph, zone_points, study))
     base = [row | _about(None, study) for row in _site_rows(fit, values)]
     with make_executor(study.compute) as executor:
         rows = run_variants(variants, tables, study, executor)
@@ -95,6 +104,26 @@ def sensitivity(
     order = {site: place for place, site in enumerate(dict.fromkeys(table["site_id"]))}
     table = table.sort_values("site_id", key=lambda ids: ids.map(order), kind="stable")
     return (Sensitivity.checked(_with_changes(table.reset_index(drop=True))),)
+
+
+def rerouted_by(
+    variants: list[Variant],
+    pricing: Pricing,
+    graph: RoadGraph,
+    zone_points: pd.DataFrame | None,
+    study: Study,
+) -> dict[str, pd.DataFrame]:
+    """Routes of the alternatives that choose them otherwise, each choice once."""
+    found: dict[str, pd.DataFrame] = {}
+    for variant in variants:
+        if not any(key.startswith("routes.") for key in variant.changes):
+            continue
+        changed = variant.apply(study)
+        key = changed.routes.model_dump_json()
+        if key not in found:
+            priced = with_route_prices(changed)
+            found[key] = route(pricing.zones, pricing.sites, graph, zone_points, study=priced)[0]
+    return found
 
 
 def run_variants(
@@ -156,17 +185,33 @@ class Flow:
         tables, pricing = self.tables, self.tables.pricing
         priced_alike = study.costs == self.study.costs and study.market == self.study.market
         counted_alike = study.visits == self.study.visits
-        if pricing is None or (priced_alike and counted_alike):
+        routed_alike = study.routes == self.study.routes
+        if pricing is None or (priced_alike and counted_alike and routed_alike):
             return tables.zone_table, tables.trip_table
-        routes, zones, sites = pricing.routes, pricing.zones, pricing.sites
-        if self._priced is None or self._priced[0].costs != study.costs:
+        routes, zones, sites = self._routes(pricing, study), pricing.zones, pricing.sites
+        if self._priced is None or not _same_prices(self._priced[0], study):
             (costs,) = cost(routes, zones, sites, pricing.origins, study=study)
             self._priced = (study, costs)
         costs = self._priced[1]
         by_zone = study.market.level == "zone" and tables.trip_table is None
-        if counted_alike and by_zone and tables.zone_table is not None:
+        if counted_alike and routed_alike and by_zone and tables.zone_table is not None:
             return repriced(tables.zone_table, costs, sites, study=study), None
         return join(pricing.origins, costs, routes, zones, sites, study=study)
+
+    def _routes(self, pricing: Pricing, study: Study) -> pd.DataFrame:
+        """The study's routes, or those of an alternative."""
+        if study.routes == self.study.routes:
+            return pricing.routes
+        found = pricing.rerouted.get(study.routes.model_dump_json())
+        if found is None:
+            raise RouteError(
+                "routes cannot be chosen otherwise, because the study brings its routes ready made."
+            )
+        return found
+
+
+def _same_prices(one: Study, other: Study) -> bool:
+    return one.costs == other.costs and one.routes == other.routes
 
 
 def _about(variant: Variant | None, study: Study) -> Row:

@@ -8,8 +8,17 @@ from pydantic import AfterValidator, Field
 
 from pipeline.sections import Section, setting
 
-#: What may be changed: settings of the stages from the prices to the surplus.
-CHANGEABLE = ("costs", "market", "demand", "visits.annual_visits", "visits.other_purposes")
+#: What may be changed: settings of the stages from the choice of routes to the surplus.
+CHANGEABLE = (
+    "costs",
+    "market",
+    "demand",
+    "visits.annual_visits",
+    "visits.other_purposes",
+    "routes.minimise",
+    "routes.generalised",
+    "routes.charges",
+)
 NEEDS_EARLIER_STAGES = ("market.zone_table", "market.trip_table", "costs.preset")
 
 

@@ -48,6 +48,8 @@ def minutes(graph: RoadGraph) -> float:
         ({"highway": "motorway_link"}, True, True),
         ({"oneway": "yes", "oneway:motor_vehicle": "no"}, True, True),
         ({"oneway": "sometimes"}, True, True),
+        ({"oneway": "alternating"}, True, True),
+        ({"oneway": "reversible"}, False, False),
     ],
 )
 def test_direction(tmp_path: Path, tags: dict[str, str], forward: bool, backward: bool) -> None:
@@ -64,6 +66,11 @@ def test_direction(tmp_path: Path, tags: dict[str, str], forward: bool, backward
     [
         ({"access": "no"}, False),
         ({"access": "private"}, False),
+        ({"access": "permit"}, False),
+        ({"motor_vehicle": "agricultural"}, False),
+        ({"motor_vehicle": "forestry"}, False),
+        ({"access": "destination"}, True),
+        ({"highway": "proposed", "proposed": "primary"}, False),
         ({"motor_vehicle": "no"}, False),
         ({"motorcar": "private"}, False),
         ({"vehicle": "no"}, False),
