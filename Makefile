@@ -45,6 +45,7 @@ bench: $(VENV)/ready-test  ## speed of reading and searching roads, as ratios, i
 
 validate: $(VENV)/ready-validate  ## the slow checks against outside sources
 	@sh tests/validation/debian.sh
+	@sh tests/validation/engine.sh
 	$(RUN) -m pytest -m "slow or outside" --validation-to=docs tests
 
 docs: $(VENV)/ready  ## the reference documents that are made from the code

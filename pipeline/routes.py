@@ -62,7 +62,7 @@ def route(
     """
     settings = study.routes
     homes = homes_of(zones, zone_points)
-    ends = TiedEnds.of(graph, homes.points, sites, settings)
+    ends = TiedEnds.of(graph.opened_again(), homes.points, sites, settings)
     _refuse_sites_off_the_roads(sites, ends.doors, settings)
     points = pd.DataFrame(zones.drop(columns="geometry", errors="ignore"))
     errand = Errand(points, sites, homes, Discs.of(zones, sites), ends, settings)

@@ -18,6 +18,7 @@ import pytest
 Check = dict[str, object]
 Named = tuple[str, Check]
 RecordCheck = Callable[[str, float, float, float, str], None]
+RecordNote = Callable[[str], None]
 
 
 @pytest.fixture
@@ -40,6 +41,16 @@ def record_check(request: pytest.FixtureRequest) -> RecordCheck:
     return record
 
 
+@pytest.fixture
+def record_note(request: pytest.FixtureRequest) -> RecordNote:
+    """`record_note(text)`: a finding in words, to stand below the checks."""
+
+    def record(text: str) -> None:
+        request.node.user_properties.append(("note", text))
+
+    return record
+
+
 class Checks:
     """Gathers what was recorded, from this process or from the workers of pytest-xdist."""
 
@@ -47,12 +58,14 @@ class Checks:
         self.folder = folder
         self.found: dict[str, Check] = {}
         self.skipped: dict[str, str] = {}
+        self.notes: list[str] = []
 
     def pytest_runtest_logreport(self, report: pytest.TestReport) -> None:
         """Take the checks of a finished test, and the reason of one that was skipped."""
         if report.when == "call":
             recorded = [value for key, value in report.user_properties if key == "check"]
             self.found |= {str(name): check for name, check in cast("list[Named]", recorded)}
+            self.notes += [str(value) for key, value in report.user_properties if key == "note"]
         if report.skipped and isinstance(report.longrepr, tuple):
             self.skipped[report.nodeid] = str(report.longrepr[2])
 
@@ -77,6 +90,8 @@ class Checks:
             figures = " | ".join(f"{check[k]:.8g}" for k in ("value", "expected", "tolerance"))
             holds = "yes" if check["ok"] else "**no**"
             lines.append(f"| {name} | {figures} | {check['source']} | {holds} |")
+        if self.notes:
+            lines += ["", "Found besides:", "", *(f"- {note}" for note in sorted(self.notes))]
         if self.skipped:
             lines += ["", "Not run:", ""]
             lines += [f"- `{test}`: {why}" for test, why in sorted(self.skipped.items())]

@@ -39,3 +39,19 @@ def ranges(starts: Int64, counts: Int64) -> Int64:
 def offsets(counts: Int64) -> Int64:
     """Where each of `counts` consecutive groups starts, and where the last one ends."""
     return np.concatenate([[0], np.cumsum(counts)]).astype(np.int64)
+
+
+@compiled
+def grouped(group: Int64 | Int32, groups: int) -> tuple[Int64, Int64]:
+    """Rows of each group in their order: ``order[first[g]:first[g + 1]]`` (a counting sort)."""
+    first = np.zeros(groups + 1, dtype=np.int64)
+    for row in range(len(group)):
+        first[group[row] + 1] += 1
+    for number in range(groups):
+        first[number + 1] += first[number]
+    at = first[:-1].copy()
+    order = np.empty(len(group), dtype=np.int64)
+    for row in range(len(group)):
+        order[at[group[row]]] = row
+        at[group[row]] += 1
+    return first, order

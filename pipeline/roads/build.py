@@ -11,15 +11,17 @@ import pandas as pd
 
 from pipeline.errors import RoadsError
 from pipeline.road_settings import RoadsSettings
-from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64
+from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64, grouped
 from pipeline.roads.barriers import cut_at_barriers
 from pipeline.roads.charges import charged_nodes, charges_of
 from pipeline.roads.conditions import calendar_of
 from pipeline.roads.contract import Chains, contract, reorder
 from pipeline.roads.copies import Copies, copy_junctions
 from pipeline.roads.delays import turns_off
-from pipeline.roads.extract import E7, RoadExtract
+from pipeline.roads.extract import RoadExtract
+from pipeline.roads.geodesy import geodesics
 from pipeline.roads.graph import CLOSED, RoadGraph, best_arcs, flag_bits, pack
+from pipeline.roads.hilbert import hilbert_order
 from pipeline.roads.limited import through_roads
 from pipeline.roads.networks import detached_km, main_networks
 from pipeline.roads.quality import quality
@@ -32,7 +34,7 @@ from pipeline.roads.rules import (
     turn_values,
     way_traits,
 )
-from pipeline.roads.segments import WGS84, Segments, segments_of
+from pipeline.roads.segments import Segments, segments_of
 from pipeline.study import Study
 
 COPIES = ("copy_of", "copy_kind", "head_edge", "head_node", "tail_edge", "tail_node")
@@ -80,7 +82,8 @@ def build_roads(
     forced = np.append(np.array(turns.nodes, dtype=np.int64), tolled)
     chains = contract(segments, len(extract.node_lon_e7), group, forced)
     nodes, rank = _hilbert_order(extract, chains)
-    chains = reorder(chains, np.lexsort((rank[chains.end], rank[chains.start])))
+    by_end = grouped(rank[chains.end], len(nodes))[1]
+    chains = reorder(chains, by_end[grouped(rank[chains.start][by_end], len(nodes))[1]])
     runs = edge_runs(turns.runs, chains)
     graph, parts = _graph(extract, traits, segments, chains, nodes, rank, runs, rules, settings)
     table = quality(extract, traits, rules, segments, losses, graph, parts, turns, calendar)
@@ -97,12 +100,12 @@ def summarise_roads(outputs: tuple[RoadGraph, pd.DataFrame, gpd.GeoDataFrame]) -
 
 def _hilbert_order(extract: RoadExtract, chains: Chains) -> tuple[Int64, Int32]:
     """Junctions in the order of a Hilbert curve, and the rank of each node of the extract."""
-    junctions = np.unique(np.concatenate([chains.start, chains.end]))
-    points = gpd.GeoSeries(gpd.points_from_xy(*extract.degrees(junctions)))
-    west, south, east, north = points.total_bounds
-    bounds = (west, south, max(east, west + E7), max(north, south + E7))
-    along = points.hilbert_distance(total_bounds=bounds, level=16).to_numpy()
-    nodes = junctions[np.argsort(along, kind="stable")]
+    is_junction = np.zeros(len(extract.node_lon_e7), dtype=np.bool_)
+    is_junction[chains.start] = True
+    is_junction[chains.end] = True
+    junctions = np.flatnonzero(is_junction)
+    order = hilbert_order(extract.node_lon_e7[junctions], extract.node_lat_e7[junctions])
+    nodes = junctions[order]
     rank = np.full(len(extract.node_lon_e7), -1, dtype=np.int32)
     rank[nodes] = np.arange(len(nodes), dtype=np.int32)
     return nodes, rank
@@ -245,11 +248,12 @@ def _turn_delays(
         np.concatenate([tail[first], head[last]]),
         np.concatenate([head[first], tail[last]]),
     )
-    bearing = WGS84.inv(*extract.degrees(here), *extract.degrees(there))[0]
+    places = (extract.node_lon_e7, extract.node_lat_e7)
+    _, bearing = geodesics(*places, here.astype(np.int64), there.astype(np.int64))
     rank = traits.class_code[segments.way[chains.segment[np.concatenate([first, last])]]]
     is_road = np.concatenate([~is_ferry, ~is_ferry])
     sharp_deg = rules.delays_s["sharp_deg"]
-    off = turns_off(here.astype(np.int64), np.asarray(bearing), rank, is_road, sharp_deg)
+    off = turns_off(here.astype(np.int64), bearing, rank, is_road, sharp_deg)
     seconds = np.where(off, rules.delays_s["smaller_road"], 0.0)
     return seconds[: len(first)], seconds[len(first) :]
 

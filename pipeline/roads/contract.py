@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from pipeline.roads.arrays import Bool, Int64, Uint8, compiled, offsets, ranges
+from pipeline.roads.arrays import Bool, Int64, Uint8, compiled, grouped, offsets, ranges
 from pipeline.roads.segments import Segments
 
 
@@ -46,8 +46,7 @@ def contract(segments: Segments, nodes: int, group: Uint8, forced: Int64) -> Cha
     forced : nodes that are to be junctions.
     """
     ends = np.concatenate([segments.a, segments.b]).astype(np.int64)
-    order = np.argsort(ends, kind="stable")
-    start = offsets(np.bincount(ends, minlength=nodes).astype(np.int64))
+    start, order = grouped(ends, nodes)
     can_ab, can_ba = ~np.isnan(segments.forward_s), ~np.isnan(segments.backward_s)
     kind = _kinds(can_ab, can_ba, group)
     inner = _inner_nodes(start, order, kind)

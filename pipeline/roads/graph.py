@@ -11,7 +11,7 @@ import numpy as np
 import numpy.typing as npt
 
 from pipeline.errors import RoadsError
-from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64, Uint8, compiled
+from pipeline.roads.arrays import Bool, Float32, Float64, Int32, Int64, Uint8, compiled, grouped
 from pipeline.roads.extract import degrees
 
 # A cost packs both weights of a stretch of road into one integer: hundredths of a second in
@@ -136,6 +136,10 @@ class RoadGraph:
             return Path(str(mapped.filename)).parent
         return None
 
+    def opened_again(self) -> Self:
+        """The same graph by a mapping of its own: memory that it takes goes when it goes."""
+        return self if self.folder is None else type(self).read(self.folder)
+
     def main_edges(self) -> Bool:
         """Edges that can be reached from the rest of a main network and left to it again."""
         network = self.node_network
@@ -247,10 +251,11 @@ def best_arcs(
     nodes : how many nodes there are.
     apart : arcs that cost money beside: they are kept, and beat no other.
     """
-    useful = np.flatnonzero(tail != head)
+    first, order = grouped(tail, nodes)
+    _sort_groups(first, order, head, cost, edge)
+    order = order[tail[order] != head[order]]
     if apart is None:
         apart = np.zeros(len(tail), dtype=np.bool_)
-    order = useful[np.lexsort((edge[useful], cost[useful], head[useful], tail[useful]))]
     kept = order[_unbeaten(tail[order], head[order], cost[order], apart[order])]
     counts = np.bincount(tail[kept], minlength=nodes).astype(np.int64)
     first_arc = np.concatenate([[0], np.cumsum(counts)]).astype(np.int64)
@@ -271,6 +276,21 @@ def _unbeaten(tail: Int32, head: Int32, cost: Int64, apart: Bool) -> Bool:
         result[arc] = distance < shortest
         shortest = min(shortest, distance)
     return result
+
+
+@compiled
+def _sort_groups(first: Int64, order: Int64, head: Int32, cost: Int64, edge: Int32) -> None:
+    """Sort the few arcs that leave each node by head, cost and edge (by insertion)."""
+    for tail in range(len(first) - 1):
+        for row in range(first[tail] + 1, first[tail + 1]):
+            arc, place = order[row], row
+            while place > first[tail]:
+                other = order[place - 1]
+                if (head[other], cost[other], edge[other]) <= (head[arc], cost[arc], edge[arc]):
+                    break
+                order[place] = other
+                place -= 1
+            order[place] = arc
 
 
 def flag_bits(is_toll: Bool, is_unpaved: Bool) -> Uint8:

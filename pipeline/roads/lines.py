@@ -19,13 +19,13 @@ def line_strings(lon: Float64, lat: Float64, counts: Int64) -> Geometries:
     A line that crosses the 180th meridian becomes a MultiLineString cut there, as RFC 7946,
     section 3.1.9, asks for.
     """
-    line = np.repeat(np.arange(len(counts)), counts)
-    lines: Geometries = np.asarray(
-        shapely.linestrings(np.column_stack([lon, lat]), indices=line), dtype=object
-    )
-    jumps = (np.abs(np.diff(lon)) > 180) & (line[1:] == line[:-1])
     starts = offsets(counts)
-    for crossing in np.unique(line[:-1][jumps]):
+    lines: Geometries = shapely.from_ragged_array(
+        shapely.GeometryType.LINESTRING, np.column_stack([lon, lat]), (starts,)
+    )
+    jumps = np.flatnonzero(np.abs(np.diff(lon)) > 180)
+    of_jump = np.searchsorted(starts, jumps, side="right") - 1
+    for crossing in np.unique(of_jump[jumps + 1 < starts[of_jump + 1]]):
         run = slice(starts[crossing], starts[crossing + 1])
         lines[crossing] = _cut(lon[run], lat[run])
     return lines

@@ -5,19 +5,14 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
-import shapely
-from scipy.spatial import cKDTree
 
 from pipeline.roads.arrays import Bool, Float32, Float64, Int64, offsets, ranges
 from pipeline.roads.extract import degrees
+from pipeline.roads.geodesy import AXIS_M, ECCENTRICITY2, WGS84
 from pipeline.roads.graph import CLOSED, TOLL, UNPAVED, RoadGraph, pack
-from pipeline.roads.segments import WGS84
+from pipeline.roads.stretches import Grid
 
-AXIS_M, FLATTENING = WGS84.a, WGS84.f
-ECCENTRICITY2 = FLATTENING * (2 - FLATTENING)
 HERE_M = 0.0005  # half the unit of a packed distance
-CHUNK = 2000  # points whose candidates are looked at together
 
 
 @dataclass(frozen=True)
@@ -30,8 +25,8 @@ class Nearest:
     vertex : vertex of the graph at which the stretch with the place starts.
     share : how far along that stretch the place is, 0 to 1.
     lon, lat : the place, degrees; NaN where there is none.
-    gap_m : geodesic distance from the point; where none is within reach, that of the nearest
-        vertex; infinite where there are no edges at all.
+    gap_m : geodesic distance from the point; far beyond reach about that of the nearest place;
+        infinite where there are no edges at all.
     """
 
     edge: Int64
@@ -77,33 +72,35 @@ def nearest_places(
 ) -> Nearest:
     """Nearest place on any of some edges, exact to the geodesic within `reach_m`.
 
-    The nearest vertex bounds the distance; every edge that touches a box of that size around
-    the point is then looked at, stretch by stretch, in the plane that touches the ellipsoid at
-    the point. Long stretches and the antimeridian are no special cases.
+    Every stretch is looked at in the plane that touches the ellipsoid at the point (see
+    ``stretches``). Long stretches and the antimeridian are no special cases.
 
     Parameters
     ----------
     graph : the road graph.
     edges : numbers of the edges that count.
     lon, lat : the points, degrees.
-    reach_m : places further away need not be found.
+    reach_m : a place further away is no place, and only its distance is told.
     """
-    result = _nowhere(len(lon))
     if not len(edges):
-        return result
-    counts = np.diff(graph.edge_first)[edges].astype(np.int64)
-    vertices = ranges(graph.edge_first[:-1][edges].astype(np.int64), counts)
-    x, y = degrees(graph.vertex_lon_e7[vertices]), degrees(graph.vertex_lat_e7[vertices])
-    _, at = cKDTree(_on_sphere(x, y), balanced_tree=False).query(_on_sphere(lon, lat))
-    result.gap_m[:] = WGS84.inv(lon, lat, x[at], y[at])[2]
-    boxes = shapely.STRtree(_boxes(x, y, counts))
-    # A place within reach can be further from any vertex by half the longest stretch.
-    limit_m = reach_m + _longest_stretch_m(x, y, counts) / 2
-    within = np.flatnonzero(result.gap_m <= limit_m)
-    for chunk in np.array_split(within, max(1, -(-len(within) // CHUNK))):
-        if len(chunk):
-            _refine(graph, edges, boxes, chunk, lon, lat, result)
-    return result
+        return _nowhere(len(lon))
+    vertices = (np.asarray(graph.vertex_lon_e7), np.asarray(graph.vertex_lat_e7))
+    grid = Grid.of(vertices, np.asarray(graph.edge_first), edges)
+    vertex, share = grid.nearest(lon, lat, *_scales(lat))
+    x, y = degrees(vertices[0][vertex]), degrees(vertices[1][vertex])
+    place_lon = _turn(x + share * _turn(degrees(vertices[0][vertex + 1]) - x))
+    place_lat = y + share * (degrees(vertices[1][vertex + 1]) - y)
+    gap_m = np.asarray(WGS84.inv(lon, lat, place_lon, place_lat)[2])
+    within = gap_m <= reach_m
+    edge = np.searchsorted(graph.edge_first, vertex, side="right") - 1
+    return Nearest(
+        edge=np.where(within, edge, -1),
+        vertex=np.where(within, vertex, -1),
+        share=np.where(within, share, np.nan),
+        lon=np.where(within, place_lon, np.nan),
+        lat=np.where(within, place_lat, np.nan),
+        gap_m=gap_m,
+    )
 
 
 def _nowhere(count: int) -> Nearest:
@@ -117,36 +114,9 @@ def _nowhere(count: int) -> Nearest:
     )
 
 
-def _on_sphere(lon: Float64, lat: Float64) -> Float64:
-    """Unit vectors; only for finding a near vertex, never for a distance."""
-    theta, phi = np.radians(lon), np.radians(lat)
-    return np.column_stack([np.cos(phi) * np.cos(theta), np.cos(phi) * np.sin(theta), np.sin(phi)])
-
-
 def _turn(degrees: Float64) -> Float64:
     """Difference of longitudes between -180 and 180."""
     return np.asarray((degrees + 180) % 360 - 180)
-
-
-def _boxes(x: Float64, y: Float64, counts: Int64) -> npt.NDArray[np.object_]:
-    """Box of each run of vertices; one that crosses the antimeridian runs on beyond 180."""
-    starts = offsets(counts)[:-1]
-    origin = np.repeat(x[starts], counts)
-    unrolled = origin + _turn(x - origin)
-    return np.asarray(
-        shapely.box(
-            np.minimum.reduceat(unrolled, starts),
-            np.minimum.reduceat(y, starts),
-            np.maximum.reduceat(unrolled, starts),
-            np.maximum.reduceat(y, starts),
-        )
-    )
-
-
-def _longest_stretch_m(x: Float64, y: Float64, counts: Int64) -> float:
-    step = np.linalg.norm(np.diff(_on_sphere(x, y), axis=0), axis=1)
-    step[offsets(counts)[1:-1] - 1] = 0  # from one edge to the next
-    return float(step.max(initial=0)) * AXIS_M * 1.01
 
 
 def _scales(lat: Float64) -> tuple[Float64, Float64]:
@@ -156,64 +126,6 @@ def _scales(lat: Float64) -> tuple[Float64, Float64]:
     east = AXIS_M / np.sqrt(shrink) * np.cos(phi)
     north = AXIS_M * (1 - ECCENTRICITY2) / shrink**1.5
     return np.radians(east), np.radians(north)
-
-
-def _refine(
-    graph: RoadGraph,
-    edges: Int64,
-    boxes: shapely.STRtree,
-    chunk: Int64,
-    lon: Float64,
-    lat: Float64,
-    result: Nearest,
-) -> None:
-    """Put the exact nearest place of the points of a chunk into `result`."""
-    point, candidate = _candidates(boxes, lon[chunk], lat[chunk], result.gap_m[chunk])
-    edge = edges[candidate]
-    counts = (np.diff(graph.edge_first)[edge] - 1).astype(np.int64)
-    vertex = ranges(graph.edge_first[:-1][edge].astype(np.int64), counts)
-    owner = chunk[np.repeat(point, counts)]
-    edge = np.repeat(edge, counts)
-    east, north = _scales(lat[owner])
-
-    def plane(v: Int64) -> tuple[Float64, Float64]:
-        x = _turn(degrees(graph.vertex_lon_e7[v]) - lon[owner]) * east
-        return x, (degrees(graph.vertex_lat_e7[v]) - lat[owner]) * north
-
-    (ax, ay), (bx, by) = plane(vertex), plane(vertex + 1)
-    dx, dy = bx - ax, by - ay
-    length2 = dx**2 + dy**2
-    share = -(ax * dx + ay * dy) / np.where(length2 > 0, length2, 1)
-    share = np.clip(share, 0, 1)
-    gap2 = (ax + share * dx) ** 2 + (ay + share * dy) ** 2
-    starts = np.flatnonzero(np.diff(owner, prepend=-1))
-    least = np.minimum.reduceat(gap2, starts)
-    best = np.flatnonzero(gap2 == np.repeat(least, np.diff(np.append(starts, len(owner)))))
-    best = best[np.flatnonzero(np.diff(owner[best], prepend=-1))]
-    who, v, s = owner[best], vertex[best], share[best]
-    x0, y0 = degrees(graph.vertex_lon_e7[v]), degrees(graph.vertex_lat_e7[v])
-    place_lon = _turn(x0 + s * _turn(degrees(graph.vertex_lon_e7[v + 1]) - x0))
-    place_lat = y0 + s * (degrees(graph.vertex_lat_e7[v + 1]) - y0)
-    result.edge[who], result.vertex[who], result.share[who] = edge[best], v, s
-    result.lon[who], result.lat[who] = place_lon, place_lat
-    result.gap_m[who] = WGS84.inv(lon[who], lat[who], place_lon, place_lat)[2]
-
-
-def _candidates(
-    boxes: shapely.STRtree, lon: Float64, lat: Float64, radius_m: Float64
-) -> tuple[Int64, Int64]:
-    """Pairs of a point and an edge whose box comes within the radius, by point, then edge."""
-    radius_m = radius_m * 1.001 + 0.01  # room for the plane's error
-    high = np.degrees(radius_m / 6.33e6)  # the ellipsoid's least radius of curvature is 6,335 km
-    furthest = np.minimum(np.abs(lat) + high, 89.99)
-    wide = np.minimum(high / np.cos(np.radians(furthest)), 180.0)
-    pairs = []
-    for shift in (0, 360, -360):
-        x = lon + shift
-        around = shapely.box(x - wide, lat - high, x + wide, lat + high)
-        pairs.append(boxes.query(around))
-    point, edge = np.unique(np.concatenate(pairs, axis=1), axis=1)
-    return point.astype(np.int64), edge.astype(np.int64)
 
 
 def split_edges(graph: RoadGraph, nearest: Nearest, usable: Bool) -> Places:

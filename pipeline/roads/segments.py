@@ -5,16 +5,14 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from pyproj import Geod
 
 from pipeline.road_settings import RoadsSettings
 from pipeline.roads.arrays import Bool, Float64, Int32, Int64
 from pipeline.roads.delays import node_delays_s
 from pipeline.roads.extract import RoadExtract
+from pipeline.roads.geodesy import geodesics
 from pipeline.roads.rulebook import RoadRules
 from pipeline.roads.rules import WayTraits
-
-WGS84 = Geod(ellps="WGS84")
 
 
 @dataclass(frozen=True)
@@ -86,10 +84,9 @@ def segments_of(
 
 
 def geodesic_m(extract: RoadExtract, a: Int32, b: Int32) -> Float64:
-    """Length of the geodesic between nodes on the WGS 84 ellipsoid (Karney 2013, by PROJ)."""
-    lon_a, lat_a = extract.degrees(a)
-    lon_b, lat_b = extract.degrees(b)
-    return np.asarray(WGS84.inv(lon_a, lat_a, lon_b, lat_b)[2], dtype=np.float64)
+    """Length of the geodesic between nodes on the WGS 84 ellipsoid."""
+    nodes = a.astype(np.int64), b.astype(np.int64)
+    return geodesics(extract.node_lon_e7, extract.node_lat_e7, *nodes)[0]
 
 
 def _with_ferries(

@@ -106,9 +106,10 @@ def trips_to(graph: RoadGraph, ends: Ends, door: int) -> Trips:
         sums = [cost_along(tree, node, graph.in_cost, to_door.packed) for node in nodes]
         there = _taken(weight, leave, (sums[0], sums[1]), real)
     packed = _seeds_to(graph, doors, doors, door)
-    short = search(*into, graph.in_cost, packed.node, packed.packed, by_time=False)
+    label = search(*into, graph.in_cost, packed.node, packed.packed, by_time=False).cost
     lengths = tuple(_length(cost) for cost in real)
-    shortest, _ = _best(homes, (short.cost[nodes[0]], short.cost[nodes[1]]), lengths)
+    shortest, _ = _best(homes, (label[nodes[0]], label[nodes[1]]), lengths)
+    del label
     leave = np.where(weight < UNREACHED, leave, -1)
     return Trips(
         weight=weight,

@@ -130,7 +130,8 @@ def test_a_ferry_in_pieces_is_boarded_once(tmp_path: Path) -> None:
     ways: Ways = [("a b", ROAD), ("b c", ferry), ("c d", ferry), ("d e", ROAD)]
     ways += [("c x", ferry), ("x y", ROAD)]
     graph, _, _ = graph_of(tmp_path, places, ways, ferry_wait_min=30.0)
-    by_lon = {round(lon * 1e-7, 5): i for i, lon in enumerate(graph.node_lon_e7.tolist())}
+    on_line = np.flatnonzero(graph.node_lat_e7 == 0).tolist()
+    by_lon = {round(float(graph.node_lon_e7[i]) * 1e-7, 5): i for i in on_line}
     net = graph.to_networkx()
     for ends in ((0.01, 0.03), (0.03, 0.01)):
         start, end = (by_lon[lon] for lon in ends)
