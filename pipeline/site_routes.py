@@ -195,6 +195,7 @@ def _legs(
     routed = np.flatnonzero(site["route_status"].to_numpy() == "routed")
     minutes = site["drive_time_min"].to_numpy()
     order = routed[np.argsort(minutes[routed], kind="stable")][: settings.max_lines]
+    zone_id, site_id = site["zone_id"].to_numpy(object), str(site["site_id"].iloc[0])
     return [
         Leg.of(
             graph,
@@ -202,7 +203,7 @@ def _legs(
             trips[int(door[zone])],
             zone=int(lead[zone]),
             door=int(door[zone]),
-            names=(str(site["zone_id"].iloc[zone]), str(site["site_id"].iloc[zone])),
+            names=(str(zone_id[zone]), site_id),
             drive_time_min=float(minutes[zone]),
         )
         for zone in order
