@@ -623,8 +623,11 @@ class Fit(Table):
     site_id: Series[str] = column("site that is valued")
     nobs: Series[int] = column("rows that the model was fitted to", ge=0)
     log_likelihood: Series[float] = column("log-likelihood", nullable=True)
-    aic: Series[float] = column("Akaike's information criterion", nullable=True)
-    bic: Series[float] = column("Bayesian information criterion", nullable=True)
+    aic: Series[float] = column(
+        "Akaike's information criterion; comparable among count models of the same rows only",
+        nullable=True,
+    )
+    bic: Series[float] = column("Bayesian information criterion; as aic", nullable=True)
     dispersion: Series[float] = column(
         "alpha or delta of negative binomials; least squares: variance of the residuals; other "
         "models: Pearson chi-square over degrees of freedom",

@@ -13,6 +13,8 @@ module         makes
                ``losses`` and ``closing``; figures by ``mapview`` (``mapframe``, ``classes``,
                ``labels``, ``legend``) and ``charts`` (``axes``, ``curve``); elements by
                ``markup``, wording by ``words``, looks in ``report.css``
+``referee``    the report's section for a referee: ``changes`` (what would change the answer),
+               ``residualmap``, diagnostics
 =============  =========================================================================
 """
 
