@@ -22,6 +22,10 @@ SOURCES = {
     "robust": "White, Econometrica 50, 1982: errors robust to a wrong variance.",
     "leverage": "MacKinnon and White, Journal of Econometrics 29, 1985: HC1 to HC3.",
     "draws": "Krinsky and Robb, Review of Economics and Statistics 68, 1986: simulated intervals.",
+    "residuals": (
+        "Dunn and Smyth, Journal of Computational and Graphical Statistics 5, 1996: randomised "
+        "quantile residuals; Moran, Biometrika 37, 1950: correlation over the map."
+    ),
     "map": (
         "Snyder, Map Projections: A Working Manual, USGS Professional Paper 1395, 1987; Harrower "
         "and Brewer, The Cartographic Journal 40(1), 2003: colours of the maps."
@@ -52,6 +56,8 @@ def sources(results: Results) -> Html:
         names += ["robust", "leverage"]
     if (results.surplus["method"] == "simulated").any():
         names.append("draws")
+    if results.residuals is not None:
+        names.append("residuals")
     if results.zones is not None:
         names.append("map")
     return tag("ul", *(tag("li", SOURCES[name]) for name in names), class_="care")
