@@ -14,7 +14,7 @@ import pytest
 from tests.conftest import RecordCheck
 from tests.validation.simulated import ZONAL, of_lines, of_zones
 
-SOURCE = "nominal level; zones drawn from a stated NB2, seeds 0 to 999"
+SOURCE = "nominal level; zones drawn from a stated demand, seeds 0 to 999"
 #: What is recorded of intervals that are known to be too narrow: no better than this.
 TOO_NARROW = {15: 0.93, 20: 0.94}
 
