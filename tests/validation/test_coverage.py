@@ -1,4 +1,4 @@
-"""1,000 simulated data sets per family: coverage, bias, failures; and how far naive models miss.
+"""1,000 simulated data sets and more per family: coverage, bias, failures; and how far naive models miss.
 
 Data are drawn from a stated demand (``simulated``): 600 persons, or 200 zones. Nominal 95 %
 intervals of every parameter should hold the truth 95 times in 100, those of the study's default
@@ -28,13 +28,17 @@ from tests.validation.simulated import (
     of_zones,
 )
 
-PERSONS = 600
-#: Models of two parts need more records: of 600, 95 % intervals of the share that never comes hold
-#: 92 times in 100 (zero-inflated NB2), those of a hurdle's alpha 98, one of a zero-inflated
-#: Poisson's 92.9; those of the price coefficient hold 94 to 95.
-MORE = dict.fromkeys(("zero_inflated_poisson", "zero_inflated_negative_binomial", "hurdle"), 2000)
+WORLDS, PERSONS = 1000, 600
+#: Models of two parts with a dispersion need more records: of 600, 95 % intervals of the share that
+#: never comes hold 92 times in 100 (zero-inflated NB2), and those of a hurdle's alpha 98; those of
+#: the price coefficient hold 94.
+MORE = {"zero_inflated_negative_binomial": 2000, "hurdle": 2000}
+#: Looked at in more worlds: in the first 1,000 the furthest off of several shares came out at 92.9
+#: and 97.1 by the luck of the draw.
+FINER = {"zero_inflated_poisson": 4000}
+FINER_ZONES = {"negative_binomial_1": 4000}
 OF_PERSONS = (*COUNTED, "on_site_poisson", "on_site_negative_binomial", "hurdle")
-SOURCE = "nominal level; data drawn from a stated demand, seeds 0 to 999"
+SOURCE = "nominal level; 1,000 data sets or more drawn from a stated demand, fixed seeds"
 
 
 def record(label: str, found: dict[str, Simulation], record_check: RecordCheck) -> None:
@@ -66,7 +70,7 @@ def test_intervals_of_persons_hold_the_truth_as_often_as_they_say(
     name: str, record_check: RecordCheck
 ) -> None:
     count = MORE.get(name, PERSONS)
-    found = of_persons(name, count=count)
+    found = of_persons(name, count=count, worlds=FINER.get(name, WORLDS))
     record(f"simulated, {count:,} persons, {name}", found, record_check)
 
 
@@ -75,7 +79,8 @@ def test_intervals_of_persons_hold_the_truth_as_often_as_they_say(
 def test_intervals_of_zones_hold_the_truth_as_often_as_they_say(
     name: str, record_check: RecordCheck
 ) -> None:
-    record(f"simulated, {ZONES} zones, {name}", of_zones(name), record_check)
+    found = of_zones(name, worlds=FINER_ZONES.get(name, WORLDS))
+    record(f"simulated, {ZONES} zones, {name}", found, record_check)
 
 
 @pytest.mark.slow
