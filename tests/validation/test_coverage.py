@@ -1,4 +1,4 @@
-"""Simulated data sets, 1,000 and more per family: coverage, bias, failures; how far naive models miss.
+"""1,000 simulated data sets and more per family: coverage, bias, failures; naive models' misses.
 
 Data are drawn from a stated demand (``simulated``): 600 persons, or 200 zones. Nominal 95 %
 intervals of every parameter should hold the truth 95 times in 100, those of the study's default
