@@ -288,3 +288,19 @@ def test_a_point_at_a_junction_can_take_any_road_there(tmp_path: Path) -> None:
     assert routes["route_status"].tolist() == ["routed", "within_zone"]
     assert routes.loc["z", "distance_km"] == pytest.approx(STEP_KM, abs=1e-5)
     assert routes.loc["z", "return_distance_km"] == pytest.approx(STEP_KM, abs=1e-5)
+
+
+def test_points_are_tied_and_routed_across_the_antimeridian(tmp_path: Path) -> None:
+    """a ── b from 179.99 to -179.99 east, without a vertex between: 2 steps over the meridian.
+
+    The zone lies 0.0045 degrees north of 179.995, the site on the road at -179.995: one step.
+    """
+    places: Places = {"a": (179.99, 0.0), "b": (-179.99, 0.0)}
+    graph, _, _ = graph_of(tmp_path, places, [("a b", ROAD)])
+    routes, lines = routes_of(graph, {"z": (179.995, 0.0045)}, {"s": (-179.995, 0.0)})
+    row = routes.loc["z"]
+    assert row["zone_snap_m"] == pytest.approx(497.6, abs=0.1)
+    assert row["distance_km"] == pytest.approx(STEP_KM + 0.4976, abs=1e-3)
+    assert lines.geometry.iloc[0].length == pytest.approx(
+        0.01, abs=1e-6
+    )  # cut, not round the world
