@@ -80,7 +80,14 @@ class ModeSettings(Section):
     )
     speed_kmh: float = setting("Speed over the road distance.", unit="km/h", gt=0)
     extra_min: float = setting(
-        "Getting to it, waiting and changing, one way.", 0.0, unit="min", ge=0
+        "Getting to it and from it, waiting and changing, one way.", 0.0, unit="min", ge=0
+    )
+    access_km: float = setting(
+        "Driven in the party's own or a hired vehicle to the station or airport and from the last "
+        "one to the site, one way; costs what driving costs.",
+        0.0,
+        unit="km",
+        ge=0,
     )
 
 

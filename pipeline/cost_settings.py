@@ -2,26 +2,15 @@
 
 from __future__ import annotations
 
-import difflib
-import math
 from typing import Annotated, Any, ClassVar, Literal, Self
 
 from pydantic import Field, ModelWrapValidatorHandler, model_validator
 
+from pipeline.cost_checks import check_costs
 from pipeline.cost_parts import ModeBand, ModeSettings, VehicleSettings
-from pipeline.presets import MONEY_KEYS, load_preset
+from pipeline.presets import load_preset
 from pipeline.sections import NotNegative, Positive, Section, Share, setting
 
-ROAD = "road"
-#: Figures that a column of the zones may give, beside energy_prices.* and vehicle_mix.*
-ZONE_KEYS = (
-    "vehicle_cost_per_km",
-    "vehicle_cost_per_mile",
-    "hourly_wage",
-    "wage_fraction",
-    "earners_per_household",
-)
-YEAR_KEYS = (*MONEY_KEYS, "household_income", "fee")
 WageShare = Annotated[float, Field(ge=0, le=2)]
 
 
@@ -118,6 +107,14 @@ class CostsSettings(Section):
         unit="currency",
         usual="the site's tariff",
     )
+    lodging_per_person_night: float = setting(
+        "Lodging per person and night that the trip makes necessary, times the nights that records "
+        "tell of ([visits.columns] nights): the record's own, or the mean per trip of its site's.",
+        0.0,
+        unit="currency/night",
+        usual="0; the cheapest lodging that serves, less what a night at home costs",
+        ge=0,
+    )
     other_cost_per_person: float = setting(
         "Other spending that the trip itself makes necessary, per person and trip.",
         0.0,
@@ -138,12 +135,13 @@ class CostsSettings(Section):
         unit="people",
         usual="1.7 to 2.2",
     )
-    shared_by: Literal["everyone", "adults", "nobody"] = setting(
-        "Who bears what the party spends: 'everyone' alike; its 'adults', who then pay for the "
-        "children too (the price is an adult's: bring adult visits); or 'nobody' shares, and each "
-        "visit carries the vehicle's whole cost (parking, tolls and the vehicle's fare included).",
-        "everyone",
-        usual="everyone",
+    shared_by: Literal["all", "adults", "vehicle"] = setting(
+        "Who bears what the party spends, and so what a visit is. 'all' alike: visits and prices "
+        "are a person's; its 'adults', who pay for the children too: visits are those of adults, "
+        "children are not counted; or the 'vehicle' as a whole: a visit is a vehicle's with all "
+        "in it. Known totals ([visits] annual_visits) are of persons in every case.",
+        "all",
+        usual="all",
     )
     wage_fraction: float = setting(
         "Share of the hourly wage that an hour of travel costs; of the driver where "
@@ -177,6 +175,15 @@ class CostsSettings(Section):
         unit="share",
         usual="not set: the visit is what is valued",
     )
+    enjoyed_drive_share: float = setting(
+        "Share of the hours on the road that were themselves enjoyed; they cost nothing. What the "
+        "vehicle costs stays.",
+        0.0,
+        unit="share",
+        usual="0; 0.25 to 0.5 on scenic roads, where a survey says so; common practice, no source",
+        ge=0,
+        le=1,
+    )
     walk_min: float = setting(
         "Walk between car and site that no route holds, one way.", 0.0, unit="min", usual="0", ge=0
     )
@@ -190,6 +197,12 @@ class CostsSettings(Section):
         usual="0 to 0.5; common practice, no source",
         ge=0,
         le=1,
+    )
+    wage_of: Literal["respondent", "zone"] = setting(
+        "Whose household income the wage comes from where [market] level is 'person': the "
+        "respondent's (the zone's where a record has none), or always the zone's.",
+        "respondent",
+        usual="respondent; zone where many refuse to say",
     )
     hourly_wage: NotNegative | None = setting(
         "A stated wage, or with wage_fraction = 1 a stated value of time; not set: from the "
@@ -269,46 +282,8 @@ class CostsSettings(Section):
         return made
 
     @model_validator(mode="after")
-    def _one_price_of_driving(self) -> Self:
-        given = [
-            name
-            for name in ("vehicle_cost_per_km", "vehicle_cost_per_mile", "vehicles")
-            if getattr(self, name) not in (None, {})
-        ]
-        if len(given) != 1:
-            said = " and ".join(given) if given else "none"
-            raise ValueError(
-                "the price of driving is given once: vehicle_cost_per_km, vehicle_cost_per_mile, "
-                f"or [costs.vehicles] (given: {said})"
-            )
-        return self
-
-    @model_validator(mode="after")
-    def _names_fit(self) -> Self:
-        classes = tuple(self.vehicles)
-        _known(self.vehicle_mix, classes, "vehicle_mix", "a class of [costs.vehicles]")
-        if len(classes) > 1 and not self.vehicle_mix:
-            raise ValueError(f"vehicle_mix is needed with several classes ({', '.join(classes)})")
-        if self.vehicle_mix and abs(math.fsum(self.vehicle_mix.values()) - 1) > 1e-6:
-            total = math.fsum(self.vehicle_mix.values())
-            raise ValueError(f"vehicle_mix adds up to {total:g}; it must add up to 1")
-        energies = [vehicle.energy for vehicle in self.vehicles.values()]
-        _known(energies, tuple(self.energy_prices), "energy", "in [costs.energy_prices]")
-        _known(self.price_years, YEAR_KEYS, "price_years", "an amount of [costs]")
-        by_zone = [f"vehicle_mix.{name}" for name in classes]
-        by_zone += [f"energy_prices.{name}" for name in self.energy_prices]
-        _known(self.zone_columns, (*ZONE_KEYS, *by_zone), "zone_columns", "a figure by zone")
-        for band in self.mode_bands:
-            _known(band.shares, (ROAD, *self.modes), "mode_bands", "'road' or in [costs.modes]")
-        return self
-
-    @model_validator(mode="after")
-    def _bands_in_order(self) -> Self:
-        ends = [math.inf if band.up_to_km is None else band.up_to_km for band in self.mode_bands]
-        if ends and (sorted(set(ends)) != ends or ends[-1] != math.inf):
-            raise ValueError(
-                "mode_bands must go from near to far, and the last one must have no up_to_km"
-            )
+    def _fits_together(self) -> Self:
+        check_costs(self)
         return self
 
     def price_factor(self, key: str, price_year: int) -> float:
@@ -331,11 +306,3 @@ class CostsSettings(Section):
                     "or correct the year"
                 )
         return self.price_index[str(price_year)] / self.price_index[str(year)]
-
-
-def _known(names: Any, allowed: tuple[str, ...], key: str, what: str) -> None:
-    for name in names:
-        if name not in allowed:
-            near = difflib.get_close_matches(name, allowed, n=1, cutoff=0.0)
-            hint = f"; the nearest is {near[0]!r}" if near else ""
-            raise ValueError(f"{key} names {name!r}, which is not {what}{hint}")

@@ -1,8 +1,11 @@
 """From records to a year: what each visit record stands for, by the kind of records.
 
 Every record has a factor; visits of a zone are the sum of factor × person-visits × the site's
-share over its records. Where the study knows a site's person-visits in a year or season, they
-are divided by the shares that the records show. Visitors from abroad have their share of the
+share over its records. Where a visit is an adult's or a vehicle's ([costs] shared_by), the
+record's adults or vehicles stand in place of its persons; factor and totals stay of persons.
+
+Where the study knows a site's person-visits in a year or season, they are divided by the shares
+that the records show. Visitors from abroad have their share of the
 total and are left out, being outside the market. The rest is domestic; records without a zone
 are taken to come from the zones in the proportions of those with one. So
 
@@ -25,8 +28,9 @@ import numpy as np
 import pandas as pd
 
 from pipeline.errors import JoinError
-from pipeline.parties import class_labels, people_per_trip
+from pipeline.parties import class_labels, people_per_trip, visits_per_person
 from pipeline.purposes import purposes
+from pipeline.stays import place_ids
 from pipeline.tables import PLACED_STATUSES
 from pipeline.visit_settings import VisitsSettings
 
@@ -55,22 +59,31 @@ def known_totals(visits: VisitsSettings) -> dict[tuple[str, str], Total]:
 
 
 def expanded_records(
-    origins: pd.DataFrame, zones: pd.DataFrame, valued: pd.Series[str], visits: VisitsSettings
+    origins: pd.DataFrame,
+    zones: pd.DataFrame,
+    sites: pd.DataFrame,
+    costs: pd.DataFrame,
+    *,
+    visits: VisitsSettings,
+    shared_by: str,
 ) -> pd.DataFrame:
     """What each record of the valued sites stands for in a year.
 
     Parameters
     ----------
-    origins, zones : tables of the earlier stages.
-    valued : the sites to be valued.
+    origins, zones, sites : tables of the earlier stages.
+    costs : the `costs` table, for parties that are not known.
     visits : the section [visits].
+    shared_by : as [costs] shared_by: whose a visit is.
 
     Returns
     -------
-    One row per record, with the index of `origins`: `record_id, zone_id, site_id, season,
+    One row per record, with the index of `origins`: `record_id, zone_id, site_id, total_of`
+    (whose known total), `season,
     trips, weight, people` (per trip), `is_filled` (by a mean), `person_visits` (in the sample),
-    `multi_purpose`, `share` (of the trip that is the site's), `is_domestic`, `is_placed`,
-    `factor` (visits a year per person-visit of the sample; 0 for what has no zone).
+    `counted_visits` (the same as visits of persons, adults or vehicles), `multi_purpose`,
+    `share` (of the trip that is the site's), `is_domestic`, `is_placed`, `factor` (visits a
+    year per person-visit of the sample; 0 for what has no zone).
 
     Raises
     ------
@@ -80,13 +93,18 @@ def expanded_records(
         respondent with a zone.
     """
     totals = known_totals(visits)
-    _check_sites(totals, valued)
-    of_valued = origins[origins["site_id"].isin(valued)]
+    valued = sites.loc[sites["role"] == "site"].drop_duplicates("site_id")
+    places = place_ids(valued).set_axis(valued["site_id"])
+    _check_sites(totals, [*places.index, *places])
+    of_valued = origins[origins["site_id"].isin(places.index)]
     records = of_valued[["record_id", "zone_id", "site_id", "trips", "weight"]].copy()
-    records["season"] = _seasons(of_valued, totals)
+    records["total_of"] = _total_of(records["site_id"], places, totals)
+    records["season"] = _seasons(of_valued, records["total_of"], totals)
     people = people_per_trip(origins, visits).loc[of_valued.index]
     records[["people", "is_filled"]] = people
     records["person_visits"] = of_valued["counted_trips"] * people["people"]
+    unit = visits_per_person(of_valued, people["people"], costs, visits, shared_by)
+    records["counted_visits"] = records["person_visits"] * unit
     records[["multi_purpose", "share"]] = purposes(of_valued, visits.other_purposes)
     if visits.kind == "sample_of_register" and visits.other_purposes != "keep":
         records = _with_stand_ins(records, of_valued, visits)
@@ -119,10 +137,20 @@ def _with_stand_ins(
     return filled.assign(is_filled=records["is_filled"] | ~surveyed)
 
 
-def _check_sites(totals: dict[tuple[str, str], Total], valued: pd.Series[str]) -> None:
+def _total_of(
+    site_id: pd.Series[str], places: pd.Series[str], totals: dict[tuple[str, str], Total]
+) -> pd.Series[str]:
+    """Whose known total a record belongs to: its site's own, or its place's; else its site."""
+    with_total = {site for site, _ in totals}
+    place = site_id.map(places)
+    of_place = ~site_id.isin(with_total) & place.isin(with_total)
+    return site_id.mask(of_place, place)
+
+
+def _check_sites(totals: dict[tuple[str, str], Total], known: list[str]) -> None:
     for site, season in totals:
-        if site not in set(valued):
-            near = difflib.get_close_matches(site, list(valued), n=1, cutoff=0.0)
+        if site not in known:
+            near = difflib.get_close_matches(site, known, n=1, cutoff=0.0)
             key = "annual_visits" if season == WHOLE_YEAR else f"season_visits.{season}"
             raise JoinError(
                 f"[visits] {key} names {site!r}, which is no site to be valued; "
@@ -130,7 +158,9 @@ def _check_sites(totals: dict[tuple[str, str], Total], valued: pd.Series[str]) -
             )
 
 
-def _seasons(origins: pd.DataFrame, totals: dict[tuple[str, str], Total]) -> pd.Series[str]:
+def _seasons(
+    origins: pd.DataFrame, total_of: pd.Series[str], totals: dict[tuple[str, str], Total]
+) -> pd.Series[str]:
     """Season of each record where its site has totals by season; else the whole year."""
     season = pd.Series(WHOLE_YEAR, index=origins.index, dtype="str")
     by_season = {site for site, name in totals if name != WHOLE_YEAR}
@@ -141,10 +171,10 @@ def _seasons(origins: pd.DataFrame, totals: dict[tuple[str, str], Total]) -> pd.
             "[visits] season_visits are known, but the records have no season; name its column "
             "in [visits.columns] season, or give [visits] seasons and the column date."
         )
-    concerned = origins["site_id"].isin(by_season)
+    concerned = total_of.isin(by_season)
     season = season.mask(concerned, origins["season"])
     known = pd.MultiIndex.from_tuples(list(totals))
-    here = pd.MultiIndex.from_arrays([origins["site_id"], season.fillna("")])
+    here = pd.MultiIndex.from_arrays([total_of, season.fillna("")])
     lost = concerned & ~here.isin(known)
     if lost.any():
         first = origins[lost].iloc[0]
@@ -167,7 +197,7 @@ def _factors(
     if visits.kind == "household":
         factor = _people_factors(records, zones, visits)
     for (site, season), total in totals.items():
-        here = (records["site_id"] == site) & (records["season"] == season)
+        here = (records["total_of"] == site) & (records["season"] == season)
         factor = factor.mask(here, _total_factor(records[here], site, season, total))
     if visits.kind == "on_site":
         _check_interviews(records, totals)
@@ -207,7 +237,7 @@ def _people_factors(
 
 def _check_interviews(records: pd.DataFrame, totals: dict[tuple[str, str], Total]) -> None:
     known = {site for site, _ in totals}
-    rest = records[~records["site_id"].isin(known)]
+    rest = records[~records["total_of"].isin(known)]
     for site, part in rest.groupby("site_id"):
         if (part["weight"] == 1).all():
             raise JoinError(

@@ -8,7 +8,10 @@ that the zone can reach, or of the second, or an index of all ([market] substitu
 sites_are_substitutes adds the other valued sites to the choice.
 
 **Persons.** With [market] level = "person" the records of an on-site or household survey become
-a table of their own (``persons``), priced with their own party size.
+a table of their own (``persons``), each trip priced as the record tells of it.
+
+**What a visit is.** One of a person, an adult or a vehicle, as the prices are ([costs]
+shared_by).
 """
 
 from __future__ import annotations
@@ -18,11 +21,13 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
+from pipeline.costs import own_trip_costs
 from pipeline.errors import JoinError
 from pipeline.expansion import expanded_records
-from pipeline.persons import person_table
+from pipeline.persons import person_records, person_table
 from pipeline.sampling_errors import visits_variance
 from pipeline.settings import MarketSettings
+from pipeline.stays import place_ids
 from pipeline.study import Study
 from pipeline.visit_settings import VisitsSettings
 
@@ -43,7 +48,7 @@ def join(
     Parameters
     ----------
     origins, costs, routes, zones, sites : tables of the earlier stages.
-    study : reads [visits], [zones] covariates and [market].
+    study : reads [visits], [zones] covariates, [market] and [costs].
 
     Returns
     -------
@@ -59,32 +64,53 @@ def join(
     """
     valued = sites.loc[sites["role"] == "site", "site_id"].drop_duplicates()
     _check_zones(origins, zones)
-    records = expanded_records(origins, zones, valued, study.visits)
-    pairs = zones[["zone_id"]].merge(valued.to_frame(), how="cross")
-    people = zones[["zone_id", "population", "household_income", *study.zones.covariates]]
-    table = (
-        pairs.merge(pd.DataFrame(people), on="zone_id", how="left", validate="many_to_one")
-        .merge(
-            zone_visits(records, origins, study.visits), on=PAIR, how="left", validate="one_to_one"
-        )
-        .merge(_ways(routes), on=PAIR, how="left", validate="one_to_one")
-        .merge(_prices(costs), on=PAIR, how="left", validate="one_to_one")
-        .merge(
-            substitute_costs(costs, sites, valued, study.market),
-            on=PAIR,
-            how="left",
-            validate="one_to_one",
-        )
+    records = expanded_records(
+        origins, zones, sites, costs, visits=study.visits, shared_by=study.costs.shared_by
     )
-    table = _with_zeros(table, records)
-    population = table["population"]
-    table["visits_per_1000"] = 1000 * table["visits"] / population.where(population > 0)
-    table["market_note"] = _market_notes(table, study)
-    table["in_market"] = table["market_note"].isna()
-    table = table.drop(columns=["cost_status", "route_status"])
+    people = zones[["zone_id", "population", "household_income", *study.zones.covariates]]
+    pairs = zones[["zone_id"]].merge(valued.to_frame(), how="cross")
+    table = pairs.merge(pd.DataFrame(people), on="zone_id", how="left", validate="many_to_one")
+    for part in (
+        zone_visits(records, origins, study.visits),
+        _ways(routes),
+        _prices(costs),
+        substitute_costs(costs, sites, valued, study.market),
+    ):
+        table = table.merge(part, on=PAIR, how="left", validate="one_to_one")
+    table = _in_market(_with_zeros(table, records), study)
     if study.market.level == "zone":
         return table, None
-    return table, person_table(records, origins, costs, table, study.visits)
+    told = person_records(records, origins, table, study.visits)
+    prices = _own_prices(told, table, (routes, zones, sites, origins), study)
+    return table, person_table(told, prices, table)
+
+
+def _own_prices(
+    told: pd.DataFrame, zone_table: pd.DataFrame, tables: tuple[pd.DataFrame, ...], study: Study
+) -> pd.DataFrame:
+    """`own_trip_costs` of the records, with what the same trip would cost to the substitute.
+
+    An index of all substitutes is of no one trip: there the zone's price stands.
+    """
+    routes, zones, sites, origins = tables
+    prices = own_trip_costs(told, routes, zones, sites, origins, study=study)
+    instead = zone_table.set_index(PAIR)["substitute_id"].dropna().rename("instead")
+    there = told.join(instead, on=PAIR, validate="many_to_one").dropna(subset="instead")
+    elsewhere = there.assign(site_id=there["instead"])
+    if elsewhere.empty:
+        return prices.assign(substitute_cost=np.nan)
+    other = own_trip_costs(elsewhere, routes, zones, sites, origins, study=study)
+    return prices.assign(substitute_cost=other["travel_cost"])
+
+
+def _in_market(table: pd.DataFrame, study: Study) -> pd.DataFrame:
+    """The finished table with its rates and its market."""
+    population = table["population"]
+    rates = 1000 * table["visits"] / population.where(population > 0)
+    notes = _market_notes(table, study)
+    return table.assign(visits_per_1000=rates, market_note=notes, in_market=notes.isna()).drop(
+        columns=["cost_status", "route_status"]
+    )
 
 
 def zone_visits(
@@ -99,12 +125,12 @@ def zone_visits(
     """
     variance = visits_variance(records, origins, visits).groupby(["zone_id", "site_id"]).sum()
     placed = records[records["is_placed"]]
-    whole = placed["person_visits"] * placed["factor"]
+    whole = placed["counted_visits"] * placed["factor"]
     sums = (
         placed[PAIR]
         .assign(
             sampled_records=1.0,
-            sampled_visits=placed["person_visits"] * placed["share"],
+            sampled_visits=placed["counted_visits"] * placed["share"],
             visits=whole * placed["share"],
             other_purpose_visits=whole * (1 - placed["share"]),
             multi_purpose=whole * placed["multi_purpose"],
@@ -164,10 +190,30 @@ def substitute_costs(
     ].rename(columns={"site_id": "substitute_id", "travel_cost": "substitute_cost"})
     offers = offers.sort_values(["zone_id", "substitute_cost", "substitute_id"])
     found = [
-        _substitute(offers[offers["substitute_id"] != site], market).assign(site_id=site)
+        _substitute(offers[offers["substitute_id"].isin(_others(site, sites))], market).assign(
+            site_id=site
+        )
         for site in valued
     ]
-    return pd.concat(found)[[*PAIR, "substitute_cost", "substitute_id"]]
+    return _with_lodging(pd.concat(found)[[*PAIR, "substitute_cost", "substitute_id"]], costs)
+
+
+def _others(site: str, sites: pd.DataFrame) -> pd.Series[str]:
+    """Sites that visitors of a site could go to instead: other places, for the same stay."""
+    place, stay = place_ids(sites), sites.get("stay", pd.Series(None, sites.index, dtype="str"))
+    mine = sites["site_id"] == site
+    elsewhere = place != place[mine].iloc[0]
+    return sites.loc[elsewhere & (stay.isna() | stay.isin(stay[mine])), "site_id"]
+
+
+def _with_lodging(substitutes: pd.DataFrame, costs: pd.DataFrame) -> pd.DataFrame:
+    """Whoever stays overnight would do so elsewhere too: lodging is the site's own."""
+    if "lodging_cost" not in costs:
+        return substitutes
+    nights = costs[[*PAIR, "lodging_cost"]]
+    table = substitutes.merge(nights, on=PAIR, how="left", validate="one_to_one")
+    table["substitute_cost"] = table["substitute_cost"] + table.pop("lodging_cost").fillna(0.0)
+    return table
 
 
 def _substitute(offers: pd.DataFrame, market: MarketSettings) -> pd.DataFrame:

@@ -172,7 +172,7 @@ FLOW: tuple[Stage, ...] = (
         geocode,
         reads=(VisitRecords, Zones, Maybe(Crosswalk)),
         writes=(Origins, OriginSummary),
-        sections=(VisitsSettings, ZonesSettings),
+        sections=(VisitsSettings, ZonesSettings, SitesSettings),
         summarise=summarise_geocode,
     ),
     Stage(
@@ -204,7 +204,7 @@ FLOW: tuple[Stage, ...] = (
         join,
         reads=(Origins, Costs, Routes, Zones, Sites),
         writes=(ZoneTable, TripTable),
-        sections=(VisitsSettings, MarketSettings, ZonesSettings),
+        sections=(VisitsSettings, MarketSettings, ZonesSettings, CostsSettings),
         summarise=summarise_join,
     ),
     Stage(

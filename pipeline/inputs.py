@@ -18,6 +18,7 @@ from pipeline.centroids import locate
 from pipeline.errors import InputError, StudyError, TableError
 from pipeline.mapped import Mapped, as_truth, read_section
 from pipeline.schema import Table
+from pipeline.stays import split_sites
 from pipeline.study import Study
 from pipeline.tables import Crosswalk, MeasuredTimes, Sites, ZonePoints, Zones
 from pipeline.userfiles import PARQUET, TEXT, UserTable, read_user_table
@@ -152,7 +153,7 @@ def read_sites(study: Study) -> pd.DataFrame:
     """Read the sites to be valued and their substitutes, one row per access point.
 
     Absent columns: `access_id` counts the rows of a site from 1; `site_name` is the identifier;
-    `role` is 'site'; `fee` is 0.
+    `role` is 'site'; `fee` is 0. With [sites] stays = "apart" each valued site is two.
 
     Raises
     ------
@@ -178,6 +179,8 @@ def read_sites(study: Study) -> pd.DataFrame:
     frame = frame.assign(lon=place["lon"], lat=place["lat"])
     checked = Sites.checked(frame, source=table.source(columns.model_dump()))
     _check_roles(table, checked)
+    if study.sites.stays == "apart":
+        checked = Sites.checked(split_sites(checked))
     return checked.reset_index(drop=True)
 
 

@@ -86,6 +86,42 @@ def people_per_trip(origins: pd.DataFrame, visits: VisitsSettings) -> pd.DataFra
     return pd.DataFrame({"people": filled.fillna(1.0), "is_filled": is_filled})
 
 
+def visits_per_person(
+    origins: pd.DataFrame,
+    people: pd.Series[float],
+    costs: pd.DataFrame,
+    visits: VisitsSettings,
+    shared_by: str,
+) -> pd.Series[float]:
+    """Visits that one person-visit of each record counts for, by who a visit is of.
+
+    Of 'all' persons: 1. Of 'adults': the adults of the party over its people; respondents of a
+    household survey are adults. Of a 'vehicle': 1 over the people in it. A record that does not
+    tell takes its site's mean, as the prices have it.
+
+    Parameters
+    ----------
+    origins : the `origins` table.
+    people : as `people_per_trip` gives it.
+    costs : the `costs` table: party size and adults by site.
+    visits : reads kind and records_are.
+    shared_by : as [costs] shared_by.
+    """
+    if shared_by == "all":
+        return pd.Series(1.0, index=origins.index)
+    of_site = costs.groupby("site_id")[["party_size", "adults"]].first()
+    site_size = origins["site_id"].map(of_site["party_size"]).astype("float64")
+    size = origins["party_size"].fillna(site_size)
+    if shared_by == "vehicle":
+        return 1 / (people if records_are_parties(visits) else size)
+    if visits.kind == "household" and not records_are_parties(visits):
+        return pd.Series(1.0, index=origins.index)
+    of_party = origins["site_id"].map(of_site["adults"] / of_site["party_size"]).astype("float64")
+    if "adults" not in origins:
+        return of_party
+    return (origins["adults"] / size).fillna(of_party)
+
+
 def class_labels(origins: pd.DataFrame, classes: tuple[str, ...]) -> pd.Series[int]:
     """A number for each combination of the site and the given columns."""
     return origins.groupby(["site_id", *classes], sort=True, dropna=False).ngroup()

@@ -30,6 +30,7 @@ MONEY_KEYS = (
     "ferry_fare_per_vehicle",
     "ferry_fare_per_person",
     "parking_per_vehicle",
+    "lodging_per_person_night",
     "other_cost_per_person",
     "hourly_wage",
     "wage_floor_per_hour",

@@ -18,6 +18,7 @@ from pipeline.countries import country_names
 from pipeline.errors import StudyError, TableError
 from pipeline.inputs import read_sites
 from pipeline.mapped import Mapped, as_truth, read_section
+from pipeline.stays import place_ids
 from pipeline.study import Study
 from pipeline.tables import SurveyColumns, VisitRecords
 from pipeline.userfiles import UserTable, first_true
@@ -105,6 +106,7 @@ def _survey(table: UserTable, mapped: Mapped, visits: VisitsSettings) -> pd.Data
 def _party_sizes(table: UserTable, mapped: Mapped, columns: VisitColumns) -> pd.Series[float]:
     """Party size as given; adults and children together where it is not."""
     size = mapped.numbers("party_size", np.nan)
+    _check_adults(table, mapped, columns, size)
     names = [name for name in ("adults", "children") if mapped.has(name)]
     if "adults" not in names:
         return size
@@ -120,6 +122,24 @@ def _party_sizes(table: UserTable, mapped: Mapped, columns: VisitColumns) -> pd.
             f"in column {columns.party_size!r}{table.row(wrong, first)}. Correct the record."
         )
     return size.fillna(together)
+
+
+def _check_adults(
+    table: UserTable, mapped: Mapped, columns: VisitColumns, size: pd.Series[float]
+) -> None:
+    """No party has more adults than people."""
+    if not mapped.has("adults"):
+        return
+    adults = mapped.numbers("adults")
+    wrong = adults > size + PARTY_TOLERANCE
+    if wrong.any():
+        first = first_true(wrong)
+        raise TableError(
+            f"{table.name}: in {int(wrong.sum())} record(s) there are more adults than people; "
+            f"first: {adults.iloc[first]:g} in column {columns.adults!r}, but "
+            f"{size.iloc[first]:g} in column {columns.party_size!r}{table.row(wrong, first)}. "
+            "Correct the record."
+        )
 
 
 def _points(table: UserTable, mapped: Mapped, visits: VisitsSettings) -> pd.DataFrame:
@@ -219,19 +239,20 @@ def _countries(table: UserTable, column: str, words: dict[str, str]) -> pd.Serie
 
 def _only_site(sites: pd.DataFrame) -> str | None:
     """The one site to be valued, for records that do not name theirs; None if there are more."""
-    valued = sites.loc[sites["role"] == "site", "site_id"].unique()
+    valued = place_ids(sites)[sites["role"] == "site"].unique()
     return str(valued[0]) if len(valued) == 1 else None
 
 
 def _check_sites(table: UserTable, column: str, site_id: pd.Series, sites: pd.DataFrame) -> None:
     """Every record is of a known site."""
-    unknown = ~site_id.isin(sites["site_id"])
+    places = place_ids(sites)
+    unknown = ~site_id.isin(places)
     if unknown.any():
         first = first_true(unknown)
         raise TableError(
             f"{table.name}: {int(unknown.sum())} of {len(site_id)} records are of a site that is "
             f"not in the sites file; first: {column} {site_id.iloc[first]!r}"
-            f"{table.row(unknown, first)} (sites: {', '.join(sites['site_id'].unique())}). "
+            f"{table.row(unknown, first)} (sites: {', '.join(places.unique())}). "
             "Add the site to the sites file, or correct the records."
         )
 

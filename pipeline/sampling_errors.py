@@ -1,8 +1,9 @@
 """Standard errors of expanded visits.
 
-The visits of a zone are a sum over its records, Y = Σ F v s (factor, person-visits, the site's
-share), and F is itself a ratio of sums over the sample. Linearised (Taylor; Särndal, Swensson
-and Wretman, Model Assisted Survey Sampling, 1992, section 5.5, from memory), a record moves Y by
+The visits of a zone are a sum over its records, Y = Σ F v s (factor, visits of persons, adults
+or vehicles, the site's share), and F is itself a ratio of sums over the sample. Linearised
+(Taylor; Särndal, Swensson and Wretman, Model Assisted Survey Sampling, 1992, section 5.5, from
+memory), a record moves Y by
 
     e = F v s, if it is of the zone, + Y a,
 
@@ -28,13 +29,13 @@ from pipeline.expansion import Total, known_totals
 from pipeline.parties import class_labels
 from pipeline.visit_settings import VisitsSettings
 
-KEY = ["site_id", "season", "zone_id"]
+KEY = ["site_id", "total_of", "season", "zone_id"]
 
 
 def visits_variance(
     records: pd.DataFrame, origins: pd.DataFrame, visits: VisitsSettings
 ) -> pd.Series[float]:
-    """Variance of the expanded visits, by `site_id, season, zone_id`.
+    """Variance of the expanded visits, by `site_id, total_of, season, zone_id`.
 
     Parameters
     ----------
@@ -44,7 +45,7 @@ def visits_variance(
     """
     totals = known_totals(visits)
     frame = records.assign(
-        expanded=records["factor"] * records["person_visits"] * records["share"],
+        expanded=records["factor"] * records["counted_visits"] * records["share"],
         pull=_pulls(records, totals, visits),
         missed=_missed(records, visits),
     )
@@ -76,7 +77,7 @@ def _pulls(
     records: pd.DataFrame, totals: dict[tuple[str, str], Total], visits: VisitsSettings
 ) -> pd.Series[float]:
     """What each record does to the factor of its site and season, in proportion."""
-    stratum = pd.MultiIndex.from_frame(records[["site_id", "season"]])
+    stratum = pd.MultiIndex.from_frame(records[["total_of", "season"]])
     by_total = pd.Series(stratum.isin(list(totals)), index=records.index)
     number = records["person_visits"]
     pull = (
@@ -95,7 +96,7 @@ def _part(
     number: pd.Series[float], records: pd.DataFrame, group: list[str] | None = None
 ) -> pd.Series[float]:
     """Each record's part of the sum of its site and season (and group)."""
-    keys = [records[name] for name in ("site_id", "season", *(group or []))]
+    keys = [records[name] for name in ("total_of", "season", *(group or []))]
     total = number.groupby(keys, dropna=False).transform("sum")
     return (number / total.where(total > 0, np.nan)).fillna(0.0)
 
@@ -105,19 +106,19 @@ def _pull_squares(frame: pd.DataFrame, visits: VisitsSettings) -> pd.Series[floa
     square = frame["missed"] * frame["pull"] ** 2
     if visits.kind == "household" and visits.household_expansion == "zone_population":
         return square.groupby([frame[name] for name in KEY]).sum()
-    whole = square.groupby([frame["site_id"], frame["season"]]).transform("sum")
+    whole = square.groupby([frame["total_of"], frame["season"]]).transform("sum")
     return whole.groupby([frame[name] for name in KEY]).first()
 
 
 def _strata(by_zone: pd.DataFrame | pd.Series[float]) -> pd.MultiIndex:
     """Site and season of each row of a table by site, season and zone."""
     levels = by_zone.index.to_frame(index=False)
-    return pd.MultiIndex.from_frame(levels[["site_id", "season"]])
+    return pd.MultiIndex.from_frame(levels[["total_of", "season"]])
 
 
 def _small_sample(records: pd.DataFrame) -> pd.Series[float]:
     """Factor n ÷ (n − 1) by site and season; 1 where there is a single record."""
-    n = records.groupby(["site_id", "season"]).size().astype("float64")
+    n = records.groupby(["total_of", "season"]).size().astype("float64")
     factor: pd.Series[float] = n / (n - 1).where(n > 1, n)
     return factor
 
@@ -132,7 +133,7 @@ def _counter(y: pd.Series[float], totals: dict[tuple[str, str], Total]) -> pd.Se
 
 def _extra(frame: pd.DataFrame, origins: pd.DataFrame, visits: VisitsSettings) -> pd.Series[float]:
     """Variance of ready counts, and of the means that stand in for unsurveyed records."""
-    per_trip = frame["factor"] * frame["people"] * frame["share"]
+    per_trip = frame["factor"] * _per_trip(frame)
     keys = [frame[name] for name in KEY]
     if visits.kind == "zone_counts" and "trips_se" in origins:
         errors = origins.loc[frame.index, "trips_se"].fillna(0.0) * frame["weight"]
@@ -142,6 +143,13 @@ def _extra(frame: pd.DataFrame, origins: pd.DataFrame, visits: VisitsSettings) -
         return _stand_ins(frame, origins, visits)
     nothing: pd.Series[float] = (0.0 * per_trip).groupby(keys).sum()
     return nothing
+
+
+def _per_trip(frame: pd.DataFrame) -> pd.Series[float]:
+    """Visits that one trip of a record counts for."""
+    number = frame["person_visits"]
+    unit = (frame["counted_visits"] / number.where(number > 0)).fillna(1.0)
+    return frame["people"] * unit * frame["share"]
 
 
 def _stand_ins(
@@ -156,7 +164,7 @@ def _stand_ins(
     trips = origins.loc[frame.index, "counted_trips"]
     label = class_labels(origins, visits.register_classes).loc[frame.index]
     surveyed = ~frame["is_filled"] & frame["is_domestic"]
-    per_trip = (frame["people"] * frame["share"])[surveyed]
+    per_trip = _per_trip(frame)[surveyed]
     spread = per_trip.groupby(label[surveyed]).agg(["var", "size"])
     variance = label.map(spread["var"]).fillna(per_trip.var()).fillna(0.0)
     count = label.map(spread["size"]).fillna(1).clip(lower=1)
@@ -167,6 +175,6 @@ def _stand_ins(
     together = scaled.groupby(grouped).sum() ** 2
     per_mean = (variance / count)[filled].groupby(grouped).first()
     own = (scaled**2 * variance[filled]).groupby(keys).sum()
-    of_means = (together * per_mean).groupby(level=[0, 1, 2]).sum()
+    of_means = (together * per_mean).groupby(level=KEY).sum()
     variance_of_zone: pd.Series[float] = of_means.add(own, fill_value=0.0)
     return variance_of_zone

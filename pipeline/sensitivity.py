@@ -184,7 +184,7 @@ class Flow:
         """The finished tables, as far as the changes reach."""
         tables, pricing = self.tables, self.tables.pricing
         priced_alike = study.costs == self.study.costs and study.market == self.study.market
-        counted_alike = study.visits == self.study.visits
+        counted_alike = study.visits == self.study.visits and _same_visitors(study, self.study)
         routed_alike = study.routes == self.study.routes
         if pricing is None or (priced_alike and counted_alike and routed_alike):
             return tables.zone_table, tables.trip_table
@@ -212,6 +212,14 @@ class Flow:
 
 def _same_prices(one: Study, other: Study) -> bool:
     return one.costs == other.costs and one.routes == other.routes
+
+
+def _same_visitors(one: Study, other: Study) -> bool:
+    """Whether a visit is of the same: a person, or a party's adults or vehicle."""
+    keys = ("shared_by", "adults", "party_size")
+    if one.costs == other.costs or one.costs.shared_by == other.costs.shared_by == "all":
+        return True
+    return all(getattr(one.costs, key) == getattr(other.costs, key) for key in keys)
 
 
 def _about(variant: Variant | None, study: Study) -> Row:

@@ -49,7 +49,8 @@ class SensitivitySettings(Section):
     section_name: ClassVar[str] = "sensitivity"
     standard: bool = setting(
         "Whether the usual alternatives are run: wage fraction, cost per km, party sharing, "
-        "shortest route, market extent, model form, substitutes, other purposes.",
+        "shortest route, an enjoyed drive, market extent, model form, substitutes, and every "
+        "treatment of other purposes that the records allow.",
         default=True,
     )
     variants: tuple[VariantSettings, ...] = setting(

@@ -67,6 +67,13 @@ class SitesSettings(FileSection):
         "CSV, Excel, Parquet or GIS layer of points; one row per access point.", None
     )
     columns: SiteColumns = setting("Column names in that file.", SiteColumns())
+    stays: Literal["together", "apart"] = setting(
+        "Whether day trips and overnight trips to a site are valued 'together', or 'apart' with a "
+        "demand of each: the site then becomes two, SITE_day and SITE_overnight, by the nights "
+        "of the records ([visits.columns] nights). Known totals may be of either, or of the site.",
+        "together",
+        usual="together; apart where one visitor in ten or more stays overnight",
+    )
 
 
 class MarketSettings(Section):

@@ -172,6 +172,12 @@ class Sites(Table):
     lon: Series[float] = column("longitude of the access point", unit="degree", ge=-180, le=180)
     lat: Series[float] = column("latitude of the access point", unit="degree", ge=-90, le=90)
     fee: Series[float] = column("entrance fee per person and visit", unit="currency", ge=0)
+    place_id: Series[str] | None = column(
+        "the site as the study's file has it, where day and overnight trips are apart"
+    )
+    stay: Series[str] | None = column(
+        "trips that the site stands for", isin=("day", "overnight"), nullable=True
+    )
 
     class Config:
         unique = ["site_id", "access_id"]
@@ -372,9 +378,11 @@ class RouteQuality(Table):
 
 
 class Costs(Table):
-    """Price of a visit per person, itemised: one row per zone and site.
+    """Price of a visit, itemised: one row per zone and site.
 
-    Amounts keep their full precision; the items of a row add up to `travel_cost`.
+    A visit and its price are a person's; with [costs] shared_by 'adults' an adult's, with
+    'vehicle' a vehicle's with all in it. Amounts keep their full precision; the items of a row
+    add up to `travel_cost`.
     """
 
     zone_id: Series[str] = column("zone of origin")
@@ -391,7 +399,7 @@ class Costs(Table):
     )
     party_size: Series[float] = column("people who travel together", unit="people", gt=0)
     adults: Series[float] = column("adults among them", unit="people", gt=0)
-    bearers: Series[float] = column("people who share what the vehicle costs", unit="people", gt=0)
+    bearers: Series[float] = column("who share what the party spends", unit="visitors", gt=0)
     vehicle_cost_per_km: Series[float] = column(
         "what a km of driving costs", unit="currency/km", ge=0
     )
@@ -419,6 +427,9 @@ class Costs(Table):
     )
     fee_cost: Series[float] = column(
         "entrance, per person and trip", unit="currency", ge=0, nullable=True
+    )
+    lodging_cost: Series[float] = column(
+        "lodging, per person and trip", unit="currency", ge=0, nullable=True
     )
     other_cost: Series[float] = column(
         "other spending, per person and trip", unit="currency", ge=0, nullable=True
@@ -504,7 +515,10 @@ class ZoneTable(Table):
         "visits per year that a sampled visit of the site stands for", ge=0, nullable=True
     )
     visits: Series[float] = column(
-        "person-visits per year, expanded to the known total", unit="visits/year", ge=0
+        "visits of persons per year (of adults or vehicles where [costs] shared_by says so), "
+        "expanded to the known total",
+        unit="visits/year",
+        ge=0,
     )
     visits_se: Series[float] | None = column(
         "standard error of the expanded visits", unit="visits/year", ge=0, nullable=True
@@ -531,9 +545,7 @@ class ZoneTable(Table):
     drive_time_min: Series[float] | None = column(
         "time of the fastest route, one way", unit="min", ge=0, nullable=True
     )
-    travel_cost: Series[float] = column(
-        "price of a visit per person", unit="currency", ge=0, nullable=True
-    )
+    travel_cost: Series[float] = column("price of a visit", unit="currency", ge=0, nullable=True)
     substitute_cost: Series[float] | None = column(
         "price of a visit to the substitute ([market] substitute says which), per person",
         unit="currency",
@@ -569,13 +581,23 @@ class TripTable(Table):
     party_size: Series[float] | None = column(
         "people who travelled together", unit="people", gt=0, nullable=True
     )
+    adults: Series[float] | None = column("adults among them", unit="people", ge=0, nullable=True)
+    bearers: Series[float] | None = column("who share what the party spends", unit="visitors", gt=0)
+    vehicle_cost_per_km: Series[float] | None = column(
+        "what a km of driving costs in the record's vehicle", unit="currency/km", ge=0
+    )
+    hourly_wage: Series[float] | None = column(
+        "wage of an adult of the party", unit="currency/h", ge=0, nullable=True
+    )
     purpose_share_used: Series[float] | None = column(
         "share of the trip, and of its cost, that belongs to the site", unit="share", ge=0, le=1
     )
     multi_purpose: Series[float] | None = column(
         "1 where the trip had other purposes, otherwise 0", ge=0, le=1
     )
-    travel_cost: Series[float] = column("price of a trip per person", unit="currency", ge=0)
+    travel_cost: Series[float] = column(
+        "price of a trip as its record tells of it: the sum of its items", unit="currency", ge=0
+    )
     substitute_cost: Series[float] | None = column(
         "price of a trip to the cheapest substitute", unit="currency", ge=0, nullable=True
     )

@@ -21,6 +21,8 @@ if TYPE_CHECKING:
 WAGE_FRACTIONS = (0.0, 1 / 3, 0.5, 1.0)
 """Common practice, no source: no value of time, a third, a half and the whole wage."""
 PER_KM = (0.75, 1.25)
+ENJOYED = 0.25
+"""Common practice, no source: a quarter of the drive's time taken for a pleasure."""
 VISIT_SHARES = (0.9, 0.75)
 """Market extents: the nearest zones that send this share of the visits."""
 
@@ -117,13 +119,25 @@ def _cost_variants(study: Study) -> Iterator[Variant]:
         yield Variant(words, {f"costs.{key}": round(getattr(costs, key) * factor, 12)})
     if costs.distance_along == "fastest":
         yield Variant("kilometres of the shortest route", {"costs.distance_along": "shortest"})
+    enjoyed = 0.0 if costs.enjoyed_drive_share else ENJOYED
+    words = "a quarter of the drive enjoyed" if enjoyed else "none of the drive enjoyed"
+    yield Variant(words, {"costs.enjoyed_drive_share": enjoyed})
+    yield from _sharing_variants(study)
+
+
+def _sharing_variants(study: Study) -> Iterator[Variant]:
+    """Whose a visit is, and parties of one."""
+    costs = study.costs
     for sharing, words in (
-        ("everyone", "everyone shares the vehicle"),
-        ("adults", "the adults pay for the children"),
-        ("nobody", "nobody shares the vehicle"),
+        ("all", "a visit is a person's"),
+        ("adults", "a visit is an adult's, with the children"),
+        ("vehicle", "a visit is a vehicle's, with all in it"),
     ):
         if sharing != costs.shared_by and (sharing != "adults" or costs.adults is not None):
             yield Variant(words, {"costs.shared_by": sharing})
+    if costs.shared_by == "all" and study.market.level == "zone" and costs.party_size != 1:
+        alone = {"costs.party_size": 1.0, "costs.adults": None}
+        yield Variant("nobody shares the vehicle", alone)
 
 
 def _driving_key(study: Study) -> str:
@@ -176,12 +190,16 @@ def _purpose_variants(study: Study) -> Iterator[Variant]:
     """Treatments of trips with other purposes, where the records tell of them."""
     now = getattr(study.visits, "other_purposes", None)
     columns = study.visits.columns
-    told = [name for name in ("purpose_share", "stops") if getattr(columns, name, None)]
-    if now is None or not told:
+    told = {name for name in type(columns).model_fields if getattr(columns, name) is not None}
+    if now is None or not told & {"purpose_share", "stops"}:
         return
-    share = "apportion_by_share" if "purpose_share" in told else "by_stops"
-    for treatment in ("keep", "drop", share):
-        if treatment != now:
+    possible = {
+        "apportion_by_share": "purpose_share" in told,
+        "by_time": "hours_on_site" in told and bool(told & {"trip_hours", "nights"}),
+        "by_stops": "stops" in told,
+    }
+    for treatment in ("keep", "drop", *possible, "equal"):
+        if treatment != now and possible.get(treatment, True):
             words = f"trips with other purposes: {treatment.replace('_', ' ')}"
             yield Variant(words, {"visits.other_purposes": treatment})
 

@@ -8,6 +8,7 @@ from __future__ import annotations
 import warnings
 from collections.abc import Callable
 from pathlib import Path
+from typing import Any
 
 import geopandas as gpd
 import pandas as pd
@@ -91,6 +92,48 @@ def mostly_unknown_codes(folder: Path) -> None:
     visits().assign(home="999Z").to_csv(folder / "visits.csv", index=False)
 
 
+def _with_columns(folder: Path, columns: str, **values: list[Any]) -> None:
+    """Visit records with further columns, named in the study file."""
+    visits().assign(**values).to_csv(folder / "visits.csv", index=False)
+    path = folder / "mini.toml"
+    text = path.read_text()
+    path.write_text(text.replace("[visits.columns]\n", f"[visits.columns]\n{columns}\n"))
+
+
+def _with_costs(folder: Path, lines: str) -> None:
+    path = folder / "mini.toml"
+    path.write_text(path.read_text().replace("[costs]\n", f"[costs]\n{lines}\n"))
+
+
+def purpose_share_over_one(folder: Path) -> None:
+    share = [1.0] * len(visits())
+    share[4] = 1.2
+    _with_columns(folder, 'purpose_share = "ours"', ours=share)
+
+
+def weights_of_nothing(folder: Path) -> None:
+    visits().assign(weight=0.0).to_csv(folder / "visits.csv", index=False)
+
+
+def unknown_vehicle(folder: Path) -> None:
+    cars = ["petrol"] * len(visits())
+    cars[5] = "tractor"
+    _with_columns(folder, 'vehicle = "car"', car=cars)
+    path = folder / "mini.toml"
+    text = path.read_text().replace("vehicle_cost_per_km = 0.2\n", "energy_prices.oil = 1.6\n")
+    path.write_text(
+        f'{text}\n[costs.vehicles.petrol]\nenergy = "oil"\nconsumption_per_100km = 7.0\n'
+    )
+
+
+def negative_fare(folder: Path) -> None:
+    _with_costs(folder, "ferry_fare_per_person = -2.0")
+
+
+def missing_index_year(folder: Path) -> None:
+    _with_costs(folder, "price_years = { vehicle_cost_per_km = 2019 }\nprice_index = { 2025 = 1 }")
+
+
 CASES: list[tuple[Spoil, tuple[str, ...]]] = [
     (missing_column, ("visits.csv", "home", "postal_code")),
     (wrong_type, ("zones.csv", "population", "many", "row 5")),
@@ -104,6 +147,11 @@ CASES: list[tuple[Spoil, tuple[str, ...]]] = [
     (zones_without_crs, ("zones.gpkg", "coordinate reference system")),
     (party_size_zero, ("visits.csv", "people", "row 8")),
     (visits_to_an_unknown_site, ("bog",)),
+    (purpose_share_over_one, ("visits.csv", "ours", "1.2", "row 5")),
+    (weights_of_nothing, ("visits.csv", "weight", "sum to nothing", "row 1")),
+    (unknown_vehicle, ("tractor", "vehicle", "row 6")),
+    (negative_fare, ("mini.toml", "ferry_fare_per_person", "-2")),
+    (missing_index_year, ("vehicle_cost_per_km", "2019", "price_index")),
     (mostly_unknown_codes, ("999Z", "max_unmatched_share")),
 ]
 

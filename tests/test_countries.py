@@ -13,6 +13,7 @@ from pipeline.countries import code_format, country_names
 from pipeline.errors import GeocodingError, StudyError
 from pipeline.origins import geocode
 from pipeline.origins.codes import normalise
+from tests.open_data import ICELAND_CODES, MISSING, OHIO_ZIPS
 from tests.visit_world import make_records, make_study, make_zones
 
 
@@ -119,6 +120,31 @@ def test_all_icelandic_codes_survive_a_spreadsheet() -> None:
     written: list[str | None] = [damage.format(code) for damage in damages for code in codes]
     origins = geocoded(written, codes, "IS")
     assert origins["zone_id"].tolist() == [f"z-{code}" for code in codes] * len(damages)
+
+
+@pytest.mark.skipif(not ICELAND_CODES.is_file(), reason=MISSING)
+def test_the_icelandic_codes_of_the_address_registry_match_fully() -> None:
+    """All 175 codes that have an address, as a spreadsheet leaves them."""
+    codes = pd.read_csv(ICELAND_CODES, dtype={"postnr": "str"})["postnr"].tolist()
+    assert len(codes) == 175
+    written: list[str | None] = [*codes, *(f"{code}.0" for code in codes)]
+    assert geocoded(written, codes, "IS")["zone_id"].tolist() == [f"z-{code}" for code in codes] * 2
+
+
+@pytest.mark.skipif(not OHIO_ZIPS.is_file(), reason=MISSING)
+def test_the_zip_codes_of_ohio_match_fully_however_a_spreadsheet_damages_them() -> None:
+    """All 1,447. They begin with 4, so the same codes are moved to 0 to lose a leading zero."""
+    codes = pd.read_csv(OHIO_ZIPS, dtype={"zip": "str"})["zip"].tolist()
+    assert len(codes) == 1447
+    moved = [f"0{code[1:]}" for code in codes]
+    damages = ("{0}", "{1}", "{1}.0", "{1:.4E}", "{0}-1234", "{1},00", " {1} ")
+    for country_codes in (codes, moved):
+        written: list[str | None] = [
+            damage.format(code, int(code)) for damage in damages for code in country_codes
+        ]
+        origins = geocoded(written, country_codes, "US")
+        lost = origins[origins["zone_id"] != [f"z-{code}" for code in country_codes] * len(damages)]
+        assert lost["postal_code_raw"].tolist() == []
 
 
 def test_generated_zip_codes_survive_a_spreadsheet() -> None:

@@ -20,15 +20,54 @@ from pipeline.finished import zone_visits
 from pipeline.parties import counted_trips
 from tests.visit_world import make_origins, make_study, make_zones
 
-VALUED = pd.Series(["reserve"])
+SITES = pd.DataFrame({"site_id": ["reserve"], "role": ["site"]})
 
 
-def expand(origins: pd.DataFrame, **visits: Any) -> pd.DataFrame:
-    """Expanded visits by zone, of zones with a record."""
+def expand(
+    origins: pd.DataFrame, shared_by: str = "all", adults: float = 1.5, **visits: Any
+) -> pd.DataFrame:
+    """Expanded visits by zone, of zones with a record; parties have `adults` of 2 people."""
     section = make_study(visits=visits).visits
     origins = origins.assign(counted_trips=counted_trips(origins, section.kind))
-    records = expanded_records(origins, make_zones(), VALUED, section)
+    costs = pd.DataFrame({"site_id": ["reserve"], "party_size": [2.0], "adults": [adults]})
+    records = expanded_records(
+        origins, make_zones(), SITES, costs, visits=section, shared_by=shared_by
+    )
     return zone_visits(records, origins, section).set_index("zone_id")
+
+
+# --- whose a visit is ------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("shared_by", "west", "east"),
+    [("all", 400, 600), ("adults", 300, 200), ("vehicle", 200, 100)],
+)
+def test_visits_of_persons_adults_and_vehicles(shared_by: str, west: float, east: float) -> None:
+    """1,000 person-visits a year, and 10 in the sample: each stands for 100.
+
+    West: parties of 2 and 2 with 1 and 2 adults; east: one of 6 with 2 adults.
+    """
+    origins = make_origins(["west", "west", "east"], party_size=[2, 2, 6])
+    origins["adults"] = [1.0, 2.0, 2.0]
+    table = expand(origins, shared_by, annual_visits={"reserve": 1000})
+    assert table["visits"].to_dict() == pytest.approx({"west": west, "east": east})
+    assert table["expansion_factor"].tolist() == pytest.approx([100, 100])
+
+
+def test_adults_that_no_record_tells_of_are_the_site_s_share() -> None:
+    """Three quarters of a party are adults: 4 person-visits are 3 of adults."""
+    table = expand(make_origins(["west", "west"]), "adults")
+    assert table["visits"].to_dict() == pytest.approx({"west": 3})
+
+
+def test_respondents_of_a_household_survey_are_adults() -> None:
+    """Trips of a respondent in a car of four are a quarter of the car's."""
+    origins = make_origins(["west"], trips=[4], party_size=4.0)
+    persons = expand(origins, kind="household")["visits"].to_dict()
+    assert expand(origins, "adults", kind="household")["visits"].to_dict() == persons
+    vehicles = expand(origins, "vehicle", kind="household")["visits"].to_dict()
+    assert vehicles["west"] == pytest.approx(persons["west"] / 4)
 
 
 # --- kinds of records ------------------------------------------------------------------------

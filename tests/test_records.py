@@ -88,6 +88,10 @@ def test_columns_that_the_study_does_not_name_are_not_read(tmp_path: Path) -> No
         ({"reported_cost": [-1]}, "'reported_cost' is below 0; first: -1.0 in row 1"),
         ({"trips_se": [-1]}, "'trips_se' is below 0"),
         (
+            {"adults": [1, 3], "party_size": [2, 2]},
+            "first: 3 in column 'adults', but 2 in column 'party_size' in row 2",
+        ),
+        (
             {"adults": [2, 2], "children": [0, 1], "party_size": [2, 4]},
             r"2 \+ 1 in columns 'adults' and 'children', but 4 in column 'party_size' in row 2",
         ),

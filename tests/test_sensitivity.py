@@ -151,7 +151,8 @@ def test_the_usual_alternatives_of_the_small_world() -> None:
     assert names[:4] == [BASE, "time at no cost", "time at half the wage", "time at the whole wage"]
     assert "cost per km −25 %" in names
     assert "nobody shares the vehicle" in names
-    assert "the adults pay for the children" not in names
+    assert "a visit is a vehicle's, with all in it" in names
+    assert "a visit is an adult's, with the children" not in names
     assert "without substitute cost" in names
     # The nearest 75 % of the visits are those of six zones: too few for a regression.
     lacking = table["annual_surplus"].isna()
@@ -168,7 +169,81 @@ def test_party_sharing_by_adults_needs_to_know_the_adults() -> None:
     told = make_study(costs={"adults": 1.5})
     table = pd.DataFrame({"in_market": [True], "distance_km": [1.0], "visits": [1.0]})
     names = [one.name for one in standard_variants(told, table, {"poisson"})]
-    assert "the adults pay for the children" in names
+    assert "a visit is an adult's, with the children" in names
+
+
+@pytest.mark.parametrize(
+    ("columns", "treatments"),
+    [
+        ({"purpose_share": "p"}, ["drop", "apportion by share", "equal"]),
+        ({"stops": "s"}, ["drop", "by stops", "equal"]),
+        ({"stops": "s", "hours_on_site": "h", "nights": "n"}, ["drop", "by time", "by stops",
+                                                               "equal"]),
+        ({"hours_on_site": "h", "nights": "n"}, []),
+    ],
+)  # fmt: skip
+def test_every_treatment_of_other_purposes_that_the_records_allow(
+    columns: dict[str, str], treatments: list[str]
+) -> None:
+    table = pd.DataFrame({"in_market": [True], "distance_km": [1.0], "visits": [1.0]})
+    told = make_study(visits={"columns": columns})
+    names = [one.name for one in standard_variants(told, table, {"poisson"})]
+    start = "trips with other purposes: "
+    assert [name.removeprefix(start) for name in names if name.startswith(start)] == treatments
+
+
+def test_trips_with_other_purposes_move_the_annual_surplus_by_their_share() -> None:
+    """Of every party half of the trip was the site's: dropped there is no demand left to fit.
+
+    Apportioned, the visits are halved and their fall with the price is as it was: the annual
+    surplus is half, to the last digit that the fit has. Two places on the trip are a half, too.
+    """
+    columns = {"purpose_share": "share", "stops": "stops"}
+    settings = study(standard=True)
+    visits = settings.visits.model_copy(
+        update={"columns": settings.visits.columns.model_copy(update=columns)}
+    )
+    settings = settings.model_copy(update={"visits": visits})
+    origins = ORIGINS.assign(purpose_share=0.5, stops=1.0)
+    zone_table, fit, values = flow(settings)
+    routes, zones, sites = world.routes(), world.zones(), world.sites()
+    (table,) = sensitivity(
+        origins, routes, zones, sites, zone_table, None, fit, values, study=settings
+    )
+    found = table.set_index("variant")
+    start = "trips with other purposes: "
+    for treatment in ("apportion by share", "by stops", "equal"):
+        assert cell(found, start + treatment, "change_percent") == pytest.approx(-50, abs=0.5)
+    assert str(cell(found, f"{start}drop", "note")).startswith("No value")
+
+
+def test_an_enjoyed_drive_is_worth_less() -> None:
+    table = run(study(standard=True))
+    a_quarter, free = "a quarter of the drive enjoyed", "time at no cost"
+    assert cell(table, free, "change_percent") < cell(table, a_quarter, "change_percent") < 0
+    told = make_study(costs={"enjoyed_drive_share": 0.5})
+    finished = pd.DataFrame({"in_market": [True], "distance_km": [1.0], "visits": [1.0]})
+    names = [one.name for one in standard_variants(told, finished, {"poisson"})]
+    assert "none of the drive enjoyed" in names
+
+
+def test_the_value_of_a_year_is_the_same_by_persons_and_by_vehicles() -> None:
+    """Where all parties are alike, a vehicle's price and value are its people's together."""
+    alike = ORIGINS.assign(party_size=2.1)
+    settings = study()
+    vehicle = Variant("x", {"costs.shared_by": "vehicle"}).apply(settings)
+    found = []
+    for one in (settings, vehicle):
+        (costs,) = cost(world.routes(), world.zones(), world.sites(), alike, study=one)
+        table, _ = join(alike, costs, world.routes(), world.zones(), world.sites(), study=one)
+        estimates, fit = demand(table, None, study=one)
+        values, _, _ = surplus(estimates, fit, table, None, study=one)
+        rows = values[values["chosen"] & (values["method"] == "delta")]
+        found.append(rows.set_index("measure")["value"])
+    assert found[1]["surplus_per_trip"] == pytest.approx(
+        2.1 * found[0]["surplus_per_trip"], rel=0.02
+    )
+    assert found[1]["annual_surplus"] == pytest.approx(found[0]["annual_surplus"], rel=0.02)
 
 
 def test_a_study_with_a_limit_is_run_without_it_too() -> None:

@@ -8,6 +8,7 @@ from __future__ import annotations
 import pandas as pd
 
 from pipeline.cost_parts import KM_PER_MILE
+from pipeline.cost_settings import CostsSettings
 from pipeline.costs.figures import Figures
 from pipeline.errors import CostError
 
@@ -40,6 +41,46 @@ def class_cost_per_km(figures: Figures, name: str) -> pd.Series[float]:
     energy = figures.each(f"energy_prices.{vehicle.energy}", price)
     others = sum(vehicle.per_km.values()) * figures.factor("vehicles")
     return energy * vehicle.consumption_per_100km / 100 + others
+
+
+def own_cost_per_km(
+    records: pd.DataFrame, expected: pd.Series[float], figures: Figures
+) -> pd.Series[float]:
+    """Money per km of every record's own class of vehicle; `expected` where it is not known.
+
+    A flat figure holds for every vehicle.
+    """
+    settings = figures.settings
+    if "vehicle" not in records or not settings.vehicles:
+        return expected
+    per_km = expected.copy()
+    for name in settings.vehicles:
+        of_class = class_cost_per_km(figures, name) * settings.vehicle_cost_factor
+        per_km = per_km.mask(records["vehicle"] == name, of_class)
+    return per_km
+
+
+def refuse_strange_vehicles(origins: pd.DataFrame, settings: CostsSettings) -> None:
+    """Records of a class of vehicle that [costs.vehicles] does not have.
+
+    Raises
+    ------
+    CostError
+        There are such records.
+    """
+    classes = tuple(settings.vehicles)
+    if "vehicle" not in origins or not classes:
+        return
+    strange = origins["vehicle"].notna() & ~origins["vehicle"].isin(classes)
+    if strange.any():
+        row = int(strange.to_numpy().argmax())
+        raise CostError(
+            f"{int(strange.sum())} visit record(s) have a class of vehicle that [costs.vehicles] "
+            f"does not know; first: {origins['vehicle'].iloc[row]!r} in column 'vehicle', row "
+            f"{row + 1} (record {origins['record_id'].iloc[row]!r}; classes: "
+            f"{', '.join(classes)}). Add the class, correct the records, or leave out "
+            "[visits.columns] vehicle."
+        )
 
 
 def _mix(figures: Figures) -> dict[str, pd.Series[float]]:

@@ -1,9 +1,9 @@
 """The price of a trip, item by item, for parties that are already known.
 
-Every item is first what the party pays. Per person it is divided by those who bear it: what the
-vehicle costs by `bearers`; what each person costs (fares, fees, time) by the party's people, or
-by its adults where the adults pay for the children. Amounts keep their full precision, so that
-the items of a row add up to `travel_cost`; rounding to cents is for the report.
+Every item is first what the party pays: what the vehicle costs, what each of its people costs
+(fares, fees, lodging), and its people's time. A visit's price is that over the `bearers`: all of
+the party, its adults, or the vehicle as one. Amounts keep their full precision, so that the
+items of a row add up to `travel_cost`; rounding to cents is for the report.
 """
 
 from __future__ import annotations
@@ -12,9 +12,10 @@ import pandas as pd
 
 from pipeline.cost_settings import CostsSettings
 from pipeline.costs.figures import Figures
-from pipeline.costs.modes import expected_fares, expected_hours, mode_shares
+from pipeline.costs.modes import expected_access_km, expected_fares, expected_hours
 from pipeline.costs.wages import wage_hours
 from pipeline.errors import CostError
+from pipeline.stays import place_ids
 
 ITEMS = (
     "vehicle_cost",
@@ -24,15 +25,17 @@ ITEMS = (
     "fare_cost",
     "time_cost",
     "fee_cost",
+    "lodging_cost",
     "other_cost",
 )
+VEHICLE_ITEMS = ("vehicle_cost", "parking_cost", "toll_cost", "ferry_cost")
 
 
 def price(
     trips: pd.DataFrame,
     party: pd.DataFrame,
     rates: pd.DataFrame,
-    site_id: pd.Series[str],
+    shares: pd.DataFrame,
     figures: Figures,
 ) -> pd.DataFrame:
     """Price every row.
@@ -41,8 +44,9 @@ def price(
     ----------
     trips : `round_trips` of every row.
     party : `party_size, adults, bearers`.
-    rates : `vehicle_cost_per_km`, `hourly_wage` and `fee` of every row.
-    site_id : site of every row, for parking.
+    rates : `parking`, `vehicle_cost_per_km`, `hourly_wage`, `fee`, `nights` and `hours_on_site`
+        of every row.
+    shares : share of each mode in every row.
     figures : the study's figures for these rows.
 
     Returns
@@ -50,42 +54,49 @@ def price(
     The items, `travel_cost`, the twins per party, `travel_hours` (expected, on foot and on the
     site included where they are charged), `road_share`, `time_value_per_hour`.
     """
-    settings = figures.settings
-    shares = mode_shares(trips["one_way_km"], settings)
-    road = shares["road"]
-    vehicle = _vehicle_items(trips, rates, site_id, figures).mul(road, axis=0)
-    hours = wage_hours(trips, party["adults"], figures)
+    reached = trips["round_trip_km"].notna()
+    spent = _vehicle_items(trips, rates, shares, figures)
+    people = _items_of_a_person(trips, rates, shares, figures).mul(party["party_size"], axis=0)
+    spent["ferry_cost"] = spent["ferry_cost"] + people.pop("ferry_cost")
+    time = _time(trips, party, rates, shares, figures)
+    per_party = pd.concat([spent, people, time.pop("time_cost")], axis=1)[[*ITEMS]]
+    per_party = per_party.where(reached, axis=0)
+    items = per_party.div(party["bearers"], axis=0)
+    return pd.concat(
+        [
+            items.assign(travel_cost=items.sum(axis=1, skipna=False)),
+            per_party[[*VEHICLE_ITEMS]].add_suffix("_per_party"),
+            time,
+            shares["road"].where(reached).rename("road_share"),
+        ],
+        axis=1,
+    )
+
+
+def _time(
+    trips: pd.DataFrame,
+    party: pd.DataFrame,
+    rates: pd.DataFrame,
+    shares: pd.DataFrame,
+    figures: Figures,
+) -> pd.DataFrame:
+    """What the party's hours cost, how many there are, and what one of them costs an adult."""
+    settings, road = figures.settings, shares["road"]
+    hours = wage_hours(trips, party["adults"], rates["hours_on_site"], figures)
     elsewhere = expected_hours(trips["one_way_km"], shares, settings)
     riding = settings.wage_fraction_riding
     adult_hours = hours["wage_hours"] * road + elsewhere * (
         hours["wheel_share"] if riding is None else riding
     )
-    # What each person pays; where the adults pay for the children, an adult pays for `each`.
-    heads = party["adults"] if settings.shared_by == "adults" else party["party_size"]
-    each = party["party_size"] / heads
-    fares = _person_fares(trips, figures) * road
-    shared = vehicle.div(party["bearers"], axis=0)
-    items = shared.assign(
-        ferry_cost=shared["ferry_cost"] + fares * each,
-        fare_cost=expected_fares(trips["one_way_km"], shares, figures) * each,
-        time_cost=_party_time(adult_hours, rates["hourly_wage"], party, settings) / heads,
-        fee_cost=rates["fee"] * each,
-        other_cost=_other_cost(figures) * each,
-    )[[*ITEMS]].where(trips["round_trip_km"].notna(), axis=0)
-    per_party = vehicle.assign(ferry_cost=vehicle["ferry_cost"] + fares * party["party_size"])
     walked = 2 * settings.walk_min / 60
-    on_site = settings.hours_on_site if settings.wage_fraction_on_site else 0.0
-    return pd.concat(
-        [
-            items.assign(travel_cost=items.sum(axis=1, skipna=False)),
-            per_party.add_suffix("_per_party"),
-            (trips["round_trip_hours"] * road + elsewhere + walked + on_site).rename(
-                "travel_hours"
-            ),
-            road.where(trips["round_trip_km"].notna()).rename("road_share"),
-            (rates["hourly_wage"] * hours["wheel_share"]).rename("time_value_per_hour"),
-        ],
-        axis=1,
+    on_site = rates["hours_on_site"] if settings.wage_fraction_on_site else 0.0
+    endured = 1 - settings.enjoyed_drive_share
+    return pd.DataFrame(
+        {
+            "time_cost": _party_time(adult_hours, rates["hourly_wage"], party, settings),
+            "travel_hours": trips["round_trip_hours"] * road + elsewhere + walked + on_site,
+            "time_value_per_hour": rates["hourly_wage"] * hours["wheel_share"] * endured,
+        }
     )
 
 
@@ -102,40 +113,52 @@ def _party_time(
     return wage.where(adult_hours != 0, 0.0) * adult_hours * people
 
 
-def _other_cost(figures: Figures) -> float:
-    return figures.settings.other_cost_per_person * figures.factor("other_cost_per_person")
-
-
 def _vehicle_items(
-    trips: pd.DataFrame,
-    rates: pd.DataFrame,
-    site_id: pd.Series[str],
-    figures: Figures,
+    trips: pd.DataFrame, rates: pd.DataFrame, shares: pd.DataFrame, figures: Figures
 ) -> pd.DataFrame:
-    """What the vehicle costs, there and back."""
-    settings = figures.settings
+    """What the vehicle costs, there and back, of those who come by road or drive to a station."""
+    settings, road = figures.settings, shares["road"]
     toll = settings.toll_per_km * figures.factor("toll_per_km")
     booth = settings.toll_per_booth * figures.factor("toll_per_booth")
     fare = settings.ferry_fare_per_vehicle * figures.factor("ferry_fare_per_vehicle")
-    parking = site_id.map(settings.parking_per_vehicle).fillna(0.0).astype("float64")
-    parking = parking * figures.factor("parking_per_vehicle")
+    access_km = expected_access_km(shares, settings)
     return pd.DataFrame(
         {
-            "vehicle_cost": trips["driven_km"] * rates["vehicle_cost_per_km"],
-            "parking_cost": parking.where(trips["round_trip_km"].notna()),
-            "toll_cost": trips["toll_km"] * toll
-            + trips["toll_booths"] * booth
-            + trips["listed_toll"],
-            "ferry_cost": trips["ferries"] * fare + trips["listed_fare_per_vehicle"],
+            "vehicle_cost": (trips["driven_km"] * road + access_km) * rates["vehicle_cost_per_km"],
+            "parking_cost": rates["parking"] * road,
+            "toll_cost": road
+            * (trips["toll_km"] * toll + trips["toll_booths"] * booth + trips["listed_toll"]),
+            "ferry_cost": road * (trips["ferries"] * fare + trips["listed_fare_per_vehicle"]),
         }
     )
 
 
-def _person_fares(trips: pd.DataFrame, figures: Figures) -> pd.Series[float]:
-    """Ferry fares of one person, there and back."""
-    fare = figures.settings.ferry_fare_per_person
-    usual = trips["ferries"] * fare * figures.factor("ferry_fare_per_person")
-    return usual + trips["listed_fare_per_person"]
+def _items_of_a_person(
+    trips: pd.DataFrame, rates: pd.DataFrame, shares: pd.DataFrame, figures: Figures
+) -> pd.DataFrame:
+    """What one person costs, there and back: ferry and other fares, entrance, lodging, other."""
+    settings = figures.settings
+    fare = settings.ferry_fare_per_person * figures.factor("ferry_fare_per_person")
+    listed = trips["listed_fare_per_person"]
+    night = settings.lodging_per_person_night * figures.factor("lodging_per_person_night")
+    return pd.DataFrame(
+        {
+            "ferry_cost": shares["road"] * (trips["ferries"] * fare + listed),
+            "fare_cost": expected_fares(trips["one_way_km"], shares, figures),
+            "fee_cost": rates["fee"],
+            "lodging_cost": rates["nights"] * night,
+            "other_cost": settings.other_cost_per_person * figures.factor("other_cost_per_person"),
+        }
+    )
+
+
+def parking(site_id: pd.Series[str], sites: pd.DataFrame, figures: Figures) -> pd.Series[float]:
+    """Parking of a vehicle at the site of every row, by the site's name or its place's."""
+    stated = figures.settings.parking_per_vehicle
+    place = dict(zip(sites["site_id"], place_ids(sites), strict=True))
+    tariff = {site: stated.get(site, stated.get(of, 0.0)) for site, of in place.items()}
+    amount = figures.factor("parking_per_vehicle")
+    return site_id.map(tariff).fillna(0.0).astype("float64") * amount
 
 
 def fees(routes: pd.DataFrame, sites: pd.DataFrame) -> pd.Series[float]:

@@ -9,8 +9,12 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
-from pipeline.cost_settings import ROAD, CostsSettings
+from pipeline.cost_checks import ROAD
+from pipeline.cost_settings import CostsSettings
 from pipeline.costs.figures import Figures
+from pipeline.errors import CostError
+
+OWN_VEHICLE = ("car", "motorcycle")
 
 
 def mode_shares(one_way_km: pd.Series[float], settings: CostsSettings) -> pd.DataFrame:
@@ -25,6 +29,47 @@ def mode_shares(one_way_km: pd.Series[float], settings: CostsSettings) -> pd.Dat
     place = np.searchsorted(ends, one_way_km.fillna(0.0).to_numpy(), side="left")
     table = np.array([[band.shares.get(n, 0.0) for n in names] for band in settings.mode_bands])
     return pd.DataFrame(table[place], columns=list(names), index=one_way_km.index)
+
+
+def own_shares(
+    mode: pd.Series[str], expected: pd.DataFrame, record_id: pd.Series[str]
+) -> pd.DataFrame:
+    """Shares of the modes of trips whose own mode is known: all of it; else what is expected.
+
+    A car or a motorcycle is the road.
+
+    Parameters
+    ----------
+    mode : mode of every row as its record tells it, or missing.
+    expected : as `mode_shares` gives them.
+    record_id : what to call the record of a row.
+
+    Raises
+    ------
+    CostError
+        [costs.modes] has no figures of a mode.
+    """
+    name = mode.where(~mode.isin(OWN_VEHICLE), ROAD)
+    strange = name.notna() & ~name.isin(expected.columns)
+    if strange.any():
+        raise CostError(
+            f"{int(strange.sum())} record(s) tell of a way of travelling that has no price; first: "
+            f"{mode[strange].iloc[0]!r} in column 'mode' of record {record_id[strange].iloc[0]!r}. "
+            f"Add [costs.modes.{mode[strange].iloc[0]}] with its fare and speed, or leave out "
+            "[visits.columns] mode."
+        )
+    own = pd.DataFrame(
+        {column: (name == column).astype("float64") for column in expected}, index=expected.index
+    )
+    return own.where(name.notna(), expected)
+
+
+def expected_access_km(shares: pd.DataFrame, settings: CostsSettings) -> pd.Series[float]:
+    """Kilometres that a party drives to stations and airports, there and back, as expected."""
+    total = pd.Series(0.0, index=shares.index)
+    for name, mode in settings.modes.items():
+        total = total + shares[name] * 2 * mode.access_km
+    return total
 
 
 def expected_fares(

@@ -16,7 +16,7 @@ def parties(
 ) -> pd.DataFrame:
     """The party of every row: `party_size, adults, bearers`.
 
-    `bearers` is how many share what the vehicle costs.
+    `bearers` is how many share what the party spends: they are who makes the visits.
 
     Raises
     ------
@@ -30,8 +30,61 @@ def parties(
     return with_bearers(pd.DataFrame({"party_size": size, "adults": adults}), settings)
 
 
+def own_parties(
+    records: pd.DataFrame, origins: pd.DataFrame | None, settings: CostsSettings
+) -> pd.DataFrame:
+    """The party of every record: as it tells, else its site's as `parties` gives it.
+
+    Where a record tells how many came but not how many of them adults, these are the site's
+    share of the party.
+
+    Parameters
+    ----------
+    records : `record_id, site_id, party_size` and, if known, `adults`.
+
+    Raises
+    ------
+    CostError
+        A record has more adults than people, or the adults are to pay and there are none.
+    """
+    mean = parties(records["site_id"], origins, settings)
+    size = records["party_size"].fillna(mean["party_size"])
+    adults = size * mean["adults"] / mean["party_size"]
+    if "adults" in records:
+        adults = records["adults"].fillna(adults)
+    alone = adults <= 0
+    if settings.shared_by == "adults" and alone.any():
+        raise CostError(
+            f"[costs] shared_by = 'adults', but {int(alone.sum())} record(s) tell of a party "
+            f"without one; first: 0 in column 'adults' of record "
+            f"{records.loc[alone, 'record_id'].iloc[0]!r}. Correct the record, or share by all."
+        )
+    return with_bearers(pd.DataFrame({"party_size": size, "adults": adults}), settings)
+
+
+def mean_nights(
+    site_id: pd.Series[str], origins: pd.DataFrame | None, settings: CostsSettings
+) -> pd.Series[float]:
+    """Nights of a trip to the site, on average over its records; 0 where lodging costs nothing.
+
+    Raises
+    ------
+    CostError
+        Lodging has a price, and no record tells of nights.
+    """
+    if settings.lodging_per_person_night == 0:
+        return pd.Series(0.0, index=site_id.index)
+    if origins is None or "nights" not in origins or origins["nights"].isna().all():
+        raise CostError(
+            "[costs] lodging_per_person_night is set, but no record tells how many nights the "
+            "trip took; name the column in [visits.columns] nights."
+        )
+    of_site = mean_party_sizes(_as_party_size(origins, "nights"))
+    return site_id.map(of_site).fillna(0.0).astype("float64")
+
+
 def with_bearers(party: pd.DataFrame, settings: CostsSettings) -> pd.DataFrame:
-    """Add who shares the vehicle's cost, and hold the party against itself."""
+    """Add who shares what the party spends, and hold the party against itself."""
     more = party["adults"] > party["party_size"] * (1 + 1e-9)
     if more.any():
         first = party[more].iloc[0]
@@ -41,9 +94,9 @@ def with_bearers(party: pd.DataFrame, settings: CostsSettings) -> pd.DataFrame:
             "or party_size."
         )
     bearers = {
-        "everyone": party["party_size"],
+        "all": party["party_size"],
         "adults": party["adults"],
-        "nobody": pd.Series(1.0, index=party.index),
+        "vehicle": pd.Series(1.0, index=party.index),
     }
     return party.assign(bearers=bearers[settings.shared_by])
 

@@ -65,6 +65,35 @@ def reported_check(
     return pd.DataFrame(rows, columns=ReportedCheck.columns())
 
 
+def reported_pairs(
+    routes: pd.DataFrame, costs: pd.DataFrame, origins: pd.DataFrame
+) -> pd.DataFrame:
+    """Every reported figure beside the one that was routed or priced for it.
+
+    For fitting speeds or factors to what people report; it holds no zone and no record's name.
+
+    Parameters
+    ----------
+    routes, costs, origins : as for `reported_check`.
+
+    Returns
+    -------
+    `measure` (distance and time one way, spending of the party there and back), `unit`,
+    `distance_km` (routed, one way), `reported`, `routed`; a row per record and measure.
+    """
+    told = _told(routes, costs, origins)
+    columns = ["measure", "unit", "distance_km", "reported", "routed"]
+    parts = []
+    for one in MEASURES:
+        if one.reported in told:
+            both = _both(told, one)
+            figures = {"reported": both[one.reported], "routed": both[one.routed]}
+            parts.append(both.assign(measure=one.name, unit=one.unit, **figures))
+    if not parts:
+        return pd.DataFrame(columns=columns)
+    return pd.concat([part[columns] for part in parts], ignore_index=True)
+
+
 def calibrated(
     settings: CostsSettings, routes: pd.DataFrame, origins: pd.DataFrame | None
 ) -> CostsSettings:

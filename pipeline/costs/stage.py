@@ -7,14 +7,17 @@ from typing import Any
 
 import pandas as pd
 
-from pipeline.costs.driving import cost_per_km
+from pipeline.cost_settings import CostsSettings
+from pipeline.costs.driving import cost_per_km, own_cost_per_km, refuse_strange_vehicles
 from pipeline.costs.figures import Figures
-from pipeline.costs.items import fees, price
-from pipeline.costs.people import parties
+from pipeline.costs.items import fees, parking, price
+from pipeline.costs.modes import mode_shares, own_shares
+from pipeline.costs.people import mean_nights, own_parties, parties
 from pipeline.costs.reported import calibrated, reported_check
 from pipeline.costs.trips import round_trips
 from pipeline.costs.wages import hourly_wages
 from pipeline.errors import CostError
+from pipeline.stays import place_ids
 from pipeline.study import Study
 
 
@@ -52,34 +55,98 @@ def cost(
     """
     settings = calibrated(study.costs, routes, origins)
     pairs = routes[["zone_id", "site_id"]].reset_index(drop=True)
-    _refuse_strange_zones(pairs["zone_id"], zones)
-    _refuse_strange_sites(tuple(settings.parking_per_vehicle), sites)
+    _refuse_strangers(pairs, zones, sites, origins, settings)
     figures = Figures(settings, zones, pairs["zone_id"], study.study.price_year)
     trips = round_trips(routes, settings)
     party = parties(pairs["site_id"], origins, settings)
     priced = trips["round_trip_km"].notna()
-    rates = pd.DataFrame(
+    rates = _rates(figures, routes, sites, priced)
+    rates["nights"] = mean_nights(pairs["site_id"], origins, settings)
+    items = price(trips, party, rates, mode_shares(trips["one_way_km"], settings), figures)
+    status = routes["route_status"].reset_index(drop=True).mask(priced, "priced")
+    parts = [
+        pairs,
+        trips[["round_trip_km", "round_trip_hours", "driven_km"]],
+        party,
+        rates[["vehicle_cost_per_km", "hourly_wage"]],
+        items,
+        status.rename("cost_status"),
+    ]
+    return (pd.concat(parts, axis=1),)
+
+
+def _rates(
+    figures: Figures,
+    routes: pd.DataFrame,
+    sites: pd.DataFrame,
+    reached: pd.Series[bool],
+    income: pd.Series[float] | None = None,
+) -> pd.DataFrame:
+    """What a km, an hour and the entrance cost in every row, and the hours that are charged."""
+    return pd.DataFrame(
         {
+            "parking": parking(routes["site_id"].reset_index(drop=True), sites, figures),
             "vehicle_cost_per_km": cost_per_km(figures),
-            "hourly_wage": hourly_wages(figures, priced),
+            "hourly_wage": hourly_wages(figures, reached, income),
             "fee": fees(routes, sites) * figures.factor("fee"),
+            "hours_on_site": figures.settings.hours_on_site,
         }
     )
-    items = price(trips, party, rates, pairs["site_id"], figures)
-    status = routes["route_status"].reset_index(drop=True).mask(priced, "priced")
-    return (
-        pd.concat(
-            [
-                pairs,
-                trips[["round_trip_km", "round_trip_hours", "driven_km"]],
-                party,
-                rates[["vehicle_cost_per_km", "hourly_wage"]],
-                items,
-                status.rename("cost_status"),
-            ],
-            axis=1,
-        ),
-    )
+
+
+def own_trip_costs(
+    records: pd.DataFrame,
+    routes: pd.DataFrame,
+    zones: pd.DataFrame,
+    sites: pd.DataFrame,
+    origins: pd.DataFrame | None,
+    *,
+    study: Study,
+) -> pd.DataFrame:
+    """Price the trip of every record by what it tells: party, vehicle, mode, income, nights.
+
+    What a record does not tell is what `cost` takes for its zone and site.
+
+    Parameters
+    ----------
+    records : rows of the `origins` table whose zone and site have a route.
+    routes, zones, sites, origins : as for `cost`.
+    study : reads [costs].
+
+    Returns
+    -------
+    `party_size, adults, bearers, vehicle_cost_per_km, hourly_wage`, the items and `travel_cost`,
+    with the index of `records`.
+
+    Raises
+    ------
+    CostError
+        As `cost`; or a record's vehicle or mode has no price, or its party does not fit.
+    """
+    settings = calibrated(study.costs, routes, origins)
+    rows = records.reset_index(drop=True)
+    pairs = rows[["zone_id", "site_id"]]
+    ways = pairs.merge(routes, on=["zone_id", "site_id"], how="left", validate="many_to_one")
+    figures = Figures(settings, zones, pairs["zone_id"], study.study.price_year)
+    trips = round_trips(ways, settings)
+    party = own_parties(rows, origins, settings)
+    own = settings.wage_of == "respondent"
+    income = rows["household_income"] if own and "household_income" in rows else None
+    rates = _rates(figures, ways, sites, trips["round_trip_km"].notna(), income)
+    rates["vehicle_cost_per_km"] = own_cost_per_km(rows, rates["vehicle_cost_per_km"], figures)
+    rates["nights"] = _told(rows, "nights", mean_nights(rows["site_id"], origins, settings))
+    rates["hours_on_site"] = _told(rows, "hours_on_site", rates["hours_on_site"])
+    shares = mode_shares(trips["one_way_km"], settings)
+    if "mode" in rows:
+        shares = own_shares(rows["mode"], shares, rows["record_id"])
+    items = price(trips, party, rates, shares, figures)
+    told = pd.concat([party, rates[["vehicle_cost_per_km", "hourly_wage"]], items], axis=1)
+    return told.set_axis(records.index)
+
+
+def _told(records: pd.DataFrame, name: str, otherwise: pd.Series[float]) -> pd.Series[float]:
+    """A figure as the records tell it, and `otherwise` where they do not."""
+    return records[name].fillna(otherwise) if name in records else otherwise
 
 
 def cost_and_check(
@@ -100,24 +167,30 @@ def cost_and_check(
     return costs, reported_check(routes, costs, origins)
 
 
-def _refuse_strange_zones(zone_id: pd.Series[str], zones: pd.DataFrame) -> None:
-    strange = ~zone_id.isin(zones["zone_id"])
+def _refuse_strangers(
+    pairs: pd.DataFrame,
+    zones: pd.DataFrame,
+    sites: pd.DataFrame,
+    origins: pd.DataFrame | None,
+    settings: CostsSettings,
+) -> None:
+    """Zones, sites and vehicles that nothing is known of."""
+    strange = ~pairs["zone_id"].isin(zones["zone_id"])
     if strange.any():
         raise CostError(
             f"{int(strange.sum())} routes start in a zone that is not in the zones file; first: "
-            f"{zone_id[strange].iloc[0]!r}. Correct the routes table, or add the zone."
+            f"{pairs.loc[strange, 'zone_id'].iloc[0]!r}. Correct the routes table, or add the zone."
         )
-
-
-def _refuse_strange_sites(named: tuple[str, ...], sites: pd.DataFrame) -> None:
-    there = list(sites["site_id"].unique())
-    for site in named:
+    there = [*dict.fromkeys([*sites["site_id"], *place_ids(sites)])]
+    for site in settings.parking_per_vehicle:
         if site not in there:
             near = difflib.get_close_matches(site, there, n=1, cutoff=0.0)
             raise CostError(
                 f"[costs.parking_per_vehicle] names {site!r}, which is no site; the nearest is "
                 f"{near[0]!r}. Correct the name."
             )
+    if origins is not None:
+        refuse_strange_vehicles(origins, settings)
 
 
 def summarise_cost(outputs: tuple[Any, ...]) -> str:

@@ -14,10 +14,18 @@ from pipeline.costs.figures import Figures
 from pipeline.errors import CostError
 
 
-def hourly_wages(figures: Figures, reached: pd.Series[bool]) -> pd.Series[float]:
-    """Hourly wage of an adult of every row: stated, or from the zone's household income.
+def hourly_wages(
+    figures: Figures, reached: pd.Series[bool], income: pd.Series[float] | None = None
+) -> pd.Series[float]:
+    """Hourly wage of an adult of every row: stated, or from a household income.
 
     household income ÷ earners per household ÷ working hours a year, within floor and cap.
+
+    Parameters
+    ----------
+    figures : the study's figures for these rows.
+    reached : rows that need a wage.
+    income : the respondent's own per year, where known; else the zone's is taken.
 
     Raises
     ------
@@ -27,7 +35,7 @@ def hourly_wages(figures: Figures, reached: pd.Series[bool]) -> pd.Series[float]
     settings = figures.settings
     wages = figures.each("hourly_wage", settings.hourly_wage)
     if wages.isna().any():
-        wages = wages.fillna(_from_income(figures))
+        wages = wages.fillna(_from_income(figures, income))
     if _time_costs_something(figures):
         _refuse_gaps(figures, reached & wages.isna())
     return within_bounds(wages, figures)
@@ -50,8 +58,15 @@ def from_household(income: pd.Series[float], figures: Figures) -> pd.Series[floa
     return income / earners.where(earners > 0) / settings.hours_per_year
 
 
-def wage_hours(trips: pd.DataFrame, adults: pd.Series[float], figures: Figures) -> pd.DataFrame:
+def wage_hours(
+    trips: pd.DataFrame,
+    adults: pd.Series[float],
+    hours_on_site: pd.Series[float],
+    figures: Figures,
+) -> pd.DataFrame:
     """Hours of wage that the trip costs an adult, on average over the party's adults.
+
+    Of the hours on the road those that were enjoyed themselves cost nothing.
 
     Returns
     -------
@@ -64,26 +79,32 @@ def wage_hours(trips: pd.DataFrame, adults: pd.Series[float], figures: Figures) 
     several = adults.clip(lower=1)
     on_wheels = (driving + (several - 1) * riding) / several
     on_ferry = _share(settings.wage_fraction_ferry, driving)
-    hours = trips["wheel_hours"] * on_wheels + trips["ferry_hours"] * on_ferry
-    hours = hours + off_the_road(driving, settings)
+    endured = trips["wheel_hours"] * (1 - settings.enjoyed_drive_share)
+    hours = endured * on_wheels + trips["ferry_hours"] * on_ferry
+    hours = hours + _off_the_road(driving, hours_on_site, settings)
     return pd.DataFrame({"wage_hours": hours, "wheel_share": on_wheels})
 
 
-def off_the_road(driving: pd.Series[float], settings: CostsSettings) -> pd.Series[float]:
+def _off_the_road(
+    driving: pd.Series[float], hours_on_site: pd.Series[float], settings: CostsSettings
+) -> pd.Series[float]:
     """Hours of wage on foot from the car, there and back, and on the site."""
     walking = _share(settings.wage_fraction_walking, driving)
     on_site = settings.wage_fraction_on_site or 0.0
-    return 2 * settings.walk_min / 60 * walking + settings.hours_on_site * on_site
+    return 2 * settings.walk_min / 60 * walking + hours_on_site * on_site
 
 
 def _share(stated: float | None, driving: pd.Series[float]) -> pd.Series[float]:
     return driving if stated is None else pd.Series(stated, index=driving.index)
 
 
-def _from_income(figures: Figures) -> pd.Series[float]:
+def _from_income(figures: Figures, own: pd.Series[float] | None) -> pd.Series[float]:
     settings = figures.settings
-    income = figures.zones.set_index("zone_id")["household_income"]
-    per_year = figures.zone_id.map(income).astype("float64") * figures.factor("household_income")
+    of_zone = figures.zones.set_index("zone_id")["household_income"]
+    per_year = figures.zone_id.map(of_zone).astype("float64")
+    if own is not None:
+        per_year = own.fillna(per_year)
+    per_year = per_year * figures.factor("household_income")
     fallback = settings.fallback_household_income
     if fallback is not None:
         per_year = per_year.fillna(fallback * figures.factor("fallback_household_income"))

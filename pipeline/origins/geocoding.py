@@ -11,6 +11,7 @@ from pipeline.origins.codebook import MISSING, CodeBook
 from pipeline.origins.points import place_points
 from pipeline.origins.raking import rake_weights
 from pipeline.parties import counted_trips, people_per_trip
+from pipeline.stays import split_records
 from pipeline.study import Study
 from pipeline.tables import ORIGIN_STATUSES
 from pipeline.visit_settings import VisitsSettings
@@ -42,11 +43,12 @@ def geocode(
     records : the `visit_records` table.
     zones : the `zones` table; a postal code belongs to one zone.
     crosswalk : the `crosswalk` table, or None.
-    study : reads [visits] and [zones].
+    study : reads [visits], [zones] and [sites] stays.
 
     Returns
     -------
-    `origins` (one row per record, in their order) and `origin_summary`.
+    `origins` (one row per record, in their order; see `split_records` for stays that are kept
+    apart) and `origin_summary`.
 
     Raises
     ------
@@ -67,6 +69,8 @@ def geocode(
     summary = summarise_statuses(origins, study.visits)
     _check_counts(records, summary)
     _check_unmatched(origins, study.visits.max_unmatched_share)
+    if study.sites.stays == "apart":
+        origins = split_records(origins, study.visits.kind)
     return origins, summary
 
 

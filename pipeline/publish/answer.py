@@ -73,8 +73,10 @@ def _facts(results: Results, headline: Headline) -> Html:
     facts: list[tuple[object, object]] = []
     trip = headline.surplus_per_trip
     if trip is not None:
-        facts.append(("Value per person and visit", _with_interval(trip, results.currency)))
-    facts.append(("Person-visits a year", figure(headline.visits)))
+        facts.append(
+            (f"Value per {results.visitor} and visit", _with_interval(trip, results.currency))
+        )
+    facts.append((f"{results.visitor.capitalize()}-visits a year", figure(headline.visits)))
     rows = results.site_zones(headline.site_id)
     if rows is not None:
         inside = int(rows["in_market"].sum()) if "in_market" in rows else len(rows)

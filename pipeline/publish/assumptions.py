@@ -13,7 +13,7 @@ from pipeline.publish.markup import Html, join, table, tag
 from pipeline.publish.results import Results
 
 DEFAULT = "default"
-NOT_ASSUMPTIONS = ("study", "sites", "publish", "compute")
+NOT_ASSUMPTIONS = ("study", "publish", "compute")
 
 
 def assumption_rows(results: Results) -> list[tuple[object, ...]]:

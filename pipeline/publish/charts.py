@@ -32,7 +32,13 @@ def is_skewed(rates: Numbers) -> bool:
 
 
 def demand_chart(
-    points: pd.DataFrame, curve: Curve | None, *, currency: str, rate_words: str, name: str
+    points: pd.DataFrame,
+    curve: Curve | None,
+    *,
+    currency: str,
+    visitor: str,
+    rate_words: str,
+    name: str,
 ) -> Html:
     """Rates against travel cost, one circle per zone or class, and the curve with its band.
 
@@ -64,7 +70,7 @@ def demand_chart(
         tag("text", rate_words, x=4, y=20, class_="head"),
         tag(
             "text",
-            f"Travel cost, {currency} per person and trip",
+            f"Travel cost, {currency} per {visitor} and trip",
             x=704,
             y=412,
             text_anchor="end",

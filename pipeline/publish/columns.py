@@ -28,7 +28,7 @@ OWN = {
     "annual_surplus": ("consumer surplus per year", "currency/year"),
     "annual_surplus_ci_low": ("lower end of its interval", "currency/year"),
     "annual_surplus_ci_high": ("upper end of its interval", "currency/year"),
-    "surplus_per_trip": ("consumer surplus per person and visit", "currency/visit"),
+    "surplus_per_trip": ("consumer surplus per visit", "currency/visit"),
     "surplus_per_trip_ci_low": ("lower end of its interval", "currency/visit"),
     "surplus_per_trip_ci_high": ("upper end of its interval", "currency/visit"),
 }

@@ -149,6 +149,7 @@ def demand_figure(results: Results, headline: Headline) -> Html:
         points,
         curve,
         currency=results.currency,
+        visitor=results.visitor,
         rate_words=rate_words,
         name=f"Demand for visits to {headline.site_name}",
     )

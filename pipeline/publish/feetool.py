@@ -8,7 +8,7 @@ from pipeline.publish.feecurve import FeeCurve
 from pipeline.publish.markup import Html, tag
 
 
-def fee_tool(site_id: str, curve: FeeCurve, *, currency: str) -> Html:
+def fee_tool(site_id: str, curve: FeeCurve, *, currency: str, visitor: str) -> Html:
     """A slider, the same as a number to type, and what the fee would do.
 
     It is hidden until the script has run, which fills the figures in.
@@ -47,7 +47,7 @@ def fee_tool(site_id: str, curve: FeeCurve, *, currency: str) -> Html:
         tag("th", "Interval", scope="col", class_="n"),
     )
     grid = tag("table", tag("thead", head), tag("tbody", *rows))
-    label = tag("label", f"Added fee, {currency} per person and visit", for_=name)
+    label = tag("label", f"Added fee, {currency} per {visitor} and visit", for_=name)
     chosen = tag("output", for_=name)
     controls = tag("div", label, slider, typed, chosen, class_="controls")
     return tag("div", controls, grid, class_="fee-tool", data_site=site_id, hidden="hidden")

@@ -84,7 +84,7 @@ def _demand(results: Results, headline: Headline) -> Canvas:
         axes.legend(frameon=False)
     per_zone = results.zone_table is not None
     axes.set_ylabel("Visits per 1,000 people and year" if per_zone else "Trips per person and year")
-    axes.set_xlabel(f"Travel cost, {results.currency} per person and trip")
+    axes.set_xlabel(f"Travel cost, {results.currency} per {results.visitor} and trip")
     axes.set_title(f"Demand for visits: {headline.site_name}", loc="left")
     top = float(points["rate"].max())
     axes.set_ylim(0, 1.08 * top if top > 0 else 1)

@@ -55,12 +55,17 @@ def fee_figure(results: Results, headline: Headline) -> Html:
     grid = table(
         head,
         rows,
-        caption=f"What an added fee per person and visit would do ({sure} intervals in brackets)",
+        caption=f"What an added fee per {results.visitor} and visit would do "
+        f"({sure} intervals in brackets)",
         numbers=range(5),
     )
     curve = results.fees.get(headline.site_id)
     smooth = schedule if curve is None else curve.table
-    tool = None if curve is None else fee_tool(headline.site_id, curve, currency=currency)
+    tool = (
+        None
+        if curve is None
+        else fee_tool(headline.site_id, curve, currency=currency, visitor=results.visitor)
+    )
     figure_ = tag("div", tool, fee_charts(smooth, currency=currency), class_="fees")
     return join([figure_, grid])
 

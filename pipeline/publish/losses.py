@@ -9,6 +9,7 @@ from pipeline.publish.privacy import GIVEN_AWAY, REASON
 from pipeline.publish.results import Results
 from pipeline.publish.rows import rows_of
 from pipeline.publish.words import count, number, percent, whole, words_of
+from pipeline.publish.zonewords import zones_placed
 from pipeline.tables import PLACED_STATUSES, REACHED_STATUSES
 
 ORIGIN_WORDS = {
@@ -31,7 +32,13 @@ ROUTE_WORDS = {
 
 def losses(results: Results) -> list[Html]:
     """A sentence and a table for every step that can lose something."""
-    parts = [_origins(results), _routes(results), _market(results), _hidden(results)]
+    parts = [
+        _origins(results),
+        zones_placed(results),
+        _routes(results),
+        _market(results),
+        _hidden(results),
+    ]
     return [part for part in parts if part is not None]
 
 

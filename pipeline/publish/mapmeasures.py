@@ -112,12 +112,18 @@ def map_figures(
 def _measures(results: Results, site_id: str, rows: pd.DataFrame) -> list[Measure]:
     """Those that have a figure at all; the visit rate always, first."""
     money, name = results.currency, results.site_name(site_id)
+    whose = results.visitor
     known = (
         ("visits_per_1000", "Visit rate", "Visits per 1,000 people and year", "no visit recorded"),
-        ("travel_cost", "Travel cost", f"Travel cost, {money} per person and trip", "none"),
+        ("travel_cost", "Travel cost", f"Travel cost, {money} per {whose} and trip", "none"),
         ("annual_surplus", "Surplus", f"Surplus a year, {money}", "none"),
         ("sampled_records", "Records", "Visit records", "no visit recorded"),
-        ("sampled_visits", "Origin count", "Person-visits in the records", "no visit recorded"),
+        (
+            "sampled_visits",
+            "Origin count",
+            f"{whose.capitalize()}-visits in the records",
+            "no visit recorded",
+        ),
     )
     return [
         Measure(

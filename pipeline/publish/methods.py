@@ -63,6 +63,15 @@ def sources(results: Results) -> Html:
     return tag("ul", *(tag("li", SOURCES[name]) for name in names), class_="care")
 
 
+WHOSE_VISITS = {
+    "person": "",
+    "adult": " Visits and their value are of adults, who pay for the children of their party; "
+    "children are not counted. Known totals were of persons.",
+    "vehicle": " Visits and their value are of vehicles with all who come in them. Known totals "
+    "were of persons.",
+}
+
+
 def _origins(results: Results) -> str:
     summary = results.origin_summary
     if summary is None:
@@ -77,6 +86,7 @@ def _origins(results: Results) -> str:
     return (
         f"Visit records were given a zone of origin: {' and '.join(w for w in ways if w)}. "
         "A person-visit is one person on one trip: trips times party size times weight."
+        + WHOSE_VISITS[results.visitor]
     )
 
 
@@ -103,17 +113,17 @@ def _price(results: Results) -> str:
     people = costs.party_size
     party = "the records' mean party" if people == "records" else f"{people:g} people"
     shared = {
-        "everyone": f"shared by {party}",
-        "adults": f"borne by the adults of {party}",
-        "nobody": "not shared",
+        "all": f"shared by {party}",
+        "adults": f"borne by the adults of {party}, who pay for the children too",
+        "vehicle": f"in full for the vehicle with {party} in it",
     }[costs.shared_by]
     wage = f"household income over {costs.hours_per_year:,.0f} hours"
     if costs.hourly_wage is not None:
         wage = f"{money} {costs.hourly_wage:g}"
     return (
-        f"The round trip is priced per person: {_driving(costs, money)} and what tolls and "
-        f"ferries cost, {shared}, and {percent(costs.wage_fraction)} of the hourly wage for each "
-        f"hour, the wage being {wage}; entrance fees and other costs are added."
+        f"The round trip is priced per {results.visitor}: {_driving(costs, money)} and what tolls "
+        f"and ferries cost, {shared}, and {percent(costs.wage_fraction)} of the hourly wage for "
+        f"each hour, the wage being {wage}; entrance fees and other costs are added."
     )
 
 

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import pandas as pd
 
-from pipeline.publish.markup import Html, table
+from pipeline.publish.agreement import agreement_charts
+from pipeline.publish.markup import Html, join, table
 from pipeline.publish.results import Results
 from pipeline.publish.rows import rows_of
 from pipeline.publish.words import number, whole
@@ -26,7 +27,7 @@ def hide_few(check: pd.DataFrame | None, *, below: int) -> pd.DataFrame | None:
 
 
 def reported_table(results: Results) -> Html | None:
-    """Bias and error by distance; None where nothing is reported."""
+    """Bias and error by distance, drawn and as a table; None where nothing is reported."""
     check = results.reported_check
     if check is None or check.empty:
         return None
@@ -52,4 +53,5 @@ def reported_table(results: Results) -> Html | None:
         "Reported ÷ routed, median",
     )
     caption = "Reported against routed; bias is routed less reported"
-    return table(head, rows, caption=caption, numbers=range(3, 9))
+    grid = table(head, rows, caption=caption, numbers=range(3, 9))
+    return join([agreement_charts(check, currency=results.currency), grid])

@@ -14,6 +14,7 @@ from pipeline.publish.rows import rows_of
 from pipeline.study import Study
 
 METHOD_ORDER = ("simulated", "delta")
+VISITORS = {"all": "person", "adults": "adult", "vehicle": "vehicle"}
 
 
 @dataclass(frozen=True)
@@ -35,8 +36,8 @@ class Headline:
     Attributes
     ----------
     annual_surplus : currency per year; None where the flow could not work it out.
-    surplus_per_trip : currency per person and visit.
-    visits : person-visits per year in the finished table.
+    surplus_per_trip : currency per visit, of whom `Results.visitor` says.
+    visits : such visits per year in the finished table.
     """
 
     site_id: str
@@ -85,6 +86,11 @@ class Results:
     def currency(self) -> str:
         """ISO code of the study's currency."""
         return self.study.study.currency
+
+    @property
+    def visitor(self) -> str:
+        """Who makes a visit and bears its price: 'person', 'adult' or 'vehicle'."""
+        return "person" if self.costs is None else VISITORS[self.study.costs.shared_by]
 
     def site_zones(self, site_id: str) -> pd.DataFrame | None:
         """The finished table's rows of one site."""

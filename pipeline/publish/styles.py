@@ -62,7 +62,7 @@ def looks_of(name: str, layer: gpd.GeoDataFrame, *, currency: str) -> list[Look]
         size = 3.0 if shape == "point" else 0.26
         found = [
             _graded(layer, "visits_per_1000", "Visit rate", "visits per 1,000 people", BLUES),
-            _graded(layer, "travel_cost", "Travel cost", f"{currency} per person", BROWNS),
+            _graded(layer, "travel_cost", "Travel cost", f"{currency} per visit", BROWNS),
         ]
         looks = [look for look in found if look]
         looks = looks or [Look("Plain", shape, (Rule("zone", BLUES[1]),))]
@@ -73,7 +73,7 @@ def looks_of(name: str, layer: gpd.GeoDataFrame, *, currency: str) -> list[Look]
     if name == "sites":
         return [Look("Sites", shape, _site_rules(layer))]
     if name == "routes":
-        graded = _graded(layer, "travel_cost", "Travel cost", f"{currency} per person", BROWNS)
+        graded = _graded(layer, "travel_cost", "Travel cost", f"{currency} per visit", BROWNS)
         return [_sized(replace(graded, shape=shape), 0.5)] if graded else [_lines(shape)]
     plain = Rule(name.replace("_", " "), SIGNAL, size=0.7)
     return [Look("Plain", shape, (plain,))]

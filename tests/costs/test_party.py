@@ -16,7 +16,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from pipeline.costs import ITEMS, cost
-from pipeline.errors import CostError
+from pipeline.errors import CostError, StudyError
 from pipeline.study import Study
 from pipeline.tables import Costs
 from tests.visit_world import make_routes, make_sites, make_study, make_zones
@@ -66,7 +66,7 @@ def price(study: Study) -> dict[str, float]:
     return {str(name): row[name] for name in row.index}
 
 
-def test_shared_by_everyone_to_the_cent() -> None:
+def test_shared_by_all_to_the_cent() -> None:
     """A km: 0.18 × 0.35 = 0.063 of current, 0.137 of wear: 0.20.
 
     The party: 160 km × 0.20 = 32.00; parking 6.00; 24 km × 0.15 = 3.60;
@@ -91,6 +91,7 @@ def test_shared_by_everyone_to_the_cent() -> None:
         "fare_cost": 0.0,
         "time_cost": 11.73,
         "fee_cost": 4.00,
+        "lodging_cost": 0.0,
         "other_cost": 0.0,
         "travel_cost": 34.65,
     }
@@ -100,16 +101,21 @@ def test_the_adults_pay_for_the_children_to_the_cent() -> None:
     """Half each: 16.00 + 3.00 + 1.80 + 26.50 + 29.33 + 10.00 = 86.63."""
     row = price(party_study(shared_by="adults"))
     cents = [round(row[name], 2) for name in ITEMS]
-    assert cents == [16.0, 3.0, 1.8, 26.5, 0.0, 29.33, 10.0, 0.0]
+    assert cents == [16.0, 3.0, 1.8, 26.5, 0.0, 29.33, 10.0, 0.0, 0.0]
     assert round(row["travel_cost"], 2) == 86.63
 
 
-def test_a_vehicle_that_nobody_shares_to_the_cent() -> None:
-    """The car in full: 32 + 6 + 3.60 + 2 × 14; own ferry fare 5, time 11.73, gate 4: 90.33."""
-    row = price(party_study(shared_by="nobody"))
+def test_a_vehicle_as_a_whole_to_the_cent() -> None:
+    """All five in one: 32 + 6 + 3.60 + 53 + 58.67 + 20 = 173.27."""
+    row = price(party_study(shared_by="vehicle"))
     cents = [round(row[name], 2) for name in ITEMS]
-    assert cents == [32.0, 6.0, 3.6, 33.0, 0.0, 11.73, 4.0, 0.0]
-    assert round(row["travel_cost"], 2) == 90.33
+    assert cents == [32.0, 6.0, 3.6, 53.0, 0.0, 58.67, 20.0, 0.0, 0.0]
+    assert round(row["travel_cost"], 2) == 173.27
+
+
+def test_adults_who_are_to_pay_have_to_be_known() -> None:
+    with pytest.raises(StudyError, match="shared_by = 'adults' needs adults"):
+        party_study(shared_by="adults", adults=None)
 
 
 def test_each_kind_of_hour_at_its_own_share_of_the_wage() -> None:
@@ -179,7 +185,7 @@ MONEY = st.floats(0, 200, allow_nan=False)
 
 
 @given(
-    shared_by=st.sampled_from(["everyone", "adults", "nobody"]),
+    shared_by=st.sampled_from(["all", "adults", "vehicle"]),
     party=st.floats(1, 60),
     adult_share=st.floats(0.05, 1),
     child=st.floats(0, 1),
@@ -209,17 +215,16 @@ def test_items_sum_to_the_cent_and_the_party_pays_what_its_people_pay(
     )
     row = price(study)
     assert abs(sum(row[name] for name in ITEMS) - row["travel_cost"]) < 0.005
-    for name in ("vehicle_cost", "parking_cost", "toll_cost"):
+    for name in ("vehicle_cost", "parking_cost", "toll_cost", "ferry_cost"):
         assert row[name] * row["bearers"] == pytest.approx(row[f"{name}_per_party"], abs=1e-6)
-    if shared_by != "nobody":
-        ferry = row["ferry_cost"] * row["bearers"]
-        assert ferry == pytest.approx(row["ferry_cost_per_party"], abs=1e-6)
 
 
 def test_the_whole_party_pays_the_same_however_it_is_shared() -> None:
     everyone = price(party_study())["travel_cost"] * 5
     adults = price(party_study(shared_by="adults"))["travel_cost"] * 2
-    assert everyone == pytest.approx(adults) == pytest.approx(173.2667, abs=1e-4)
+    vehicle = price(party_study(shared_by="vehicle"))["travel_cost"]
+    assert everyone == pytest.approx(adults) == pytest.approx(vehicle)
+    assert vehicle == pytest.approx(173.2667, abs=1e-4)
 
 
 def test_no_row_is_changed() -> None:

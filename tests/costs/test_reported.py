@@ -9,6 +9,7 @@ import pandas as pd
 import pytest
 
 from pipeline.costs import cost, cost_and_check
+from pipeline.costs.reported import reported_pairs
 from pipeline.errors import CostError
 from pipeline.publish.reported import hide_few
 from pipeline.tables import ReportedCheck
@@ -52,6 +53,36 @@ def test_spending_of_the_party_against_the_priced() -> None:
     assert row["routed_mean"] == pytest.approx(18)
     assert row["bias"] == pytest.approx(-2)
     assert row["unit"] == "currency"
+
+
+def test_the_pairs_behind_the_figures_hold_no_record() -> None:
+    """Two distances and one time: three rows, in the order of the measures."""
+    told = records(
+        reported_distance_km=[33.0, np.nan, np.nan, 72.0, 500.0],
+        reported_time_min=[40.0, np.nan, np.nan, np.nan, 9.0],
+    )
+    routes = make_routes()
+    (costs,) = cost(routes, make_zones(), make_sites(), told, study=make_study())
+    pairs = reported_pairs(routes, costs, told)
+    assert pairs.to_numpy().tolist() == [
+        ["distance", "km", 30.0, 33.0, 30.0],
+        ["distance", "km", 60.0, 72.0, 60.0],
+        ["time", "min", 30.0, 40.0, 30.0],
+    ]
+    assert pairs.columns.tolist() == ["measure", "unit", "distance_km", "reported", "routed"]
+    assert reported_pairs(routes, costs, records()).empty
+
+
+def test_the_report_draws_a_mark_for_each_band() -> None:
+    """Bands of 25 to 50 and 50 to 100 km; a band that is hidden is not drawn either."""
+    table = check(reported_distance_km=[33.0, 27.0, np.nan, 72.0, np.nan]).reset_index()
+    report = make_publication(reported_check=table).report
+    assert "Distance: reported against routed, means by band of distance" in report
+    assert "25 to 50 km: reported 30.0, routed 30.0 km; 2 records" in report
+    assert "50 to 100 km: reported 72.0, routed 60.0 km; 1 record" in report
+    hidden = hide_few(table, below=3)
+    assert hidden is not None
+    assert "means by band of distance" not in make_publication(reported_check=hidden).report
 
 
 def test_nothing_reported_is_an_empty_table() -> None:

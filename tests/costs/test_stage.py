@@ -82,7 +82,7 @@ def test_a_toll_bridge_and_a_ferry_by_hand() -> None:
     assert row["driven_km"] == pytest.approx(40)
     assert row["toll_cost_per_party"] == pytest.approx(4)
     assert row["ferry_cost_per_party"] == pytest.approx(42)
-    assert [row[item] for item in ITEMS] == pytest.approx([6, 0, 2, 21, 0, 12.5, 4, 1])
+    assert [row[item] for item in ITEMS] == pytest.approx([6, 0, 2, 21, 0, 12.5, 4, 0, 1])
     assert row["travel_cost"] == pytest.approx(46.5)
 
 

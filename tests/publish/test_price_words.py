@@ -24,6 +24,8 @@ def test_a_preset_stands_with_its_source_and_a_caution() -> None:
 
 
 def test_classes_of_vehicle_are_named() -> None:
-    report = make_publication(priced_study("EUR", preset="de_2025", shared_by="nobody")).report
+    report = make_publication(priced_study("EUR", preset="de_2025", shared_by="vehicle")).report
     assert "what a km costs by class of vehicle (petrol, diesel, electric)" in report
-    assert "not shared" in report
+    assert "priced per vehicle: " in report
+    assert "in full for the vehicle with" in report
+    assert "Visits and their value are of vehicles with all who come in them" in report
