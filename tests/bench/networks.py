@@ -94,11 +94,14 @@ def _plain(edges: int) -> dict[str, Any]:
     return {
         "edge_is_ferry": np.zeros(edges, dtype=np.bool_),
         "vertex_flags": np.zeros(2 * edges, dtype=np.uint8),
-        "copy_kind": np.empty(0, dtype=np.uint8),
+        **dict.fromkeys(("copy_kind", "charge_kind"), np.empty(0, dtype=np.uint8)),
+        "charge_id": np.empty(0, dtype=np.int64),
+        "charge_share": np.empty(0, dtype=np.float32),
         **dict.fromkeys(("edge_toll_m", "edge_unpaved_m", "edge_detached_km"), nothing),
         **dict.fromkeys(("edge_turn_s", "edge_delay_s"), still),
         **dict.fromkeys(("vertex_forward_delay_s", "vertex_backward_delay_s"), still),
         **dict.fromkeys(("copy_of", "head_edge", "head_node", "tail_edge", "tail_node"), none),
+        "charge_edge": none,
     }
 
 
