@@ -16,6 +16,7 @@ import pandas as pd
 from pipeline.at_hand import at_hand
 from pipeline.errors import RouteError
 from pipeline.executor import make_executor
+from pipeline.gathering import Gathering
 from pipeline.homes import homes_of
 from pipeline.road_settings import RoutesSettings
 from pipeline.roads.arrays import Int64
@@ -66,13 +67,15 @@ def route(
     _refuse_sites_off_the_roads(sites, ends.doors, settings)
     points = pd.DataFrame(zones.drop(columns="geometry", errors="ignore"))
     errand = Errand(points, sites, homes, Discs.of(zones, sites), ends, settings)
-    tables: list[pd.DataFrame] = []
+    rows = _rows_of_sites(sites)
+    gathering = Gathering(len(rows))
     legs: list[Leg] = []
     with make_executor(study.compute) as executor, at_hand(graph, errand, executor) as find:
-        for site, of_site in executor.map(partial(one_site, find), _rows_of_sites(sites)):
-            tables.append(site)
+        found = executor.map(partial(one_site, find), rows)
+        for place, (site, of_site) in enumerate(found):
+            gathering.put(place, site)
             legs = legs_to_keep(legs + of_site, sites, settings)
-    routes = _zone_by_zone(tables)
+    routes = gathering.table()
     if not routes["route_status"].isin(REACHED_STATUSES).any():
         raise RouteError(_nothing_routed(routes))
     return routes, lines_of(legs, graph, ends, settings)
@@ -93,12 +96,6 @@ def _rows_of_sites(sites: pd.DataFrame) -> list[Int64]:
     """Rows of each site's access points."""
     site_ids = sites["site_id"].to_numpy()
     return [np.flatnonzero(site_ids == site_id) for site_id in pd.unique(sites["site_id"])]
-
-
-def _zone_by_zone(tables: list[pd.DataFrame]) -> pd.DataFrame:
-    """All sites' tables in one, the sites of a zone together, both in the order given."""
-    routes = pd.concat(tables)
-    return routes.sort_index(kind="stable").reset_index(drop=True)
 
 
 # --- what cannot be --------------------------------------------------------------------------

@@ -146,9 +146,13 @@ class Simulation:
             held.append(abs(off) < width)
         return float(np.mean(held))
 
-    def bias(self, term: str = "travel_cost") -> tuple[float, float]:
-        """Mean error of an estimate, in Monte Carlo errors, and as a share of the truth."""
-        off = np.array([m.estimate[m.terms.index(term)] for m in self.models]) - self.truth[term]
+    def bias(self, term: str = "travel_cost", first: int | None = None) -> tuple[float, float]:
+        """Mean error of an estimate, in Monte Carlo errors, and as a share of the truth.
+
+        Of the first so many worlds, where that is said.
+        """
+        models = self.models[:first]
+        off = np.array([m.estimate[m.terms.index(term)] for m in models]) - self.truth[term]
         noise = off.std() / np.sqrt(len(off))
         return float(off.mean() / noise), float(off.mean() / abs(self.truth[term]))
 
