@@ -9,6 +9,7 @@ from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
+from pipeline.download import with_downloaded_roads
 from pipeline.errors import PipelineError, StudyError
 from pipeline.progress import stage_progress
 from pipeline.stamps import nothing_to_do
@@ -121,13 +122,14 @@ def _parser() -> argparse.ArgumentParser:
 def _run(options: argparse.Namespace) -> int:
     study = load_study(Path(options.study_file), output=options.output)
     whole = options.command == "all"
+    silent = options.quiet or options.json
+    study = with_downloaded_roads(study, _nothing if silent else print)
     lines: list[str] = []
     fresh = not (whole and not options.again and nothing_to_do(study))
     if fresh:
         # The flow pulls in the geographical and statistical libraries: only now.
         from pipeline.runner import Run
 
-        silent = options.quiet or options.json
         with stage_progress(shown=not silent) as (tell, begin):
             run = Run(study, _both(lines.append, tell), again=options.again, begin=begin)
             run.upto("publish" if whole else options.command)
@@ -140,6 +142,10 @@ def _run(options: argparse.Namespace) -> int:
     if whole:
         _show_result(study)
     return 0
+
+
+def _nothing(line: str) -> None:
+    del line
 
 
 def _both(first: Callable[[str], None], second: Callable[[str], None]) -> Callable[[str], None]:

@@ -32,6 +32,16 @@ class RoadsSettings(Section):
         "they meet.",
         (),
     )
+    boundary: InputPath | None = setting(
+        "Polygon (GeoPackage, GeoJSON, ...) inside which roads are downloaded from OpenStreetMap, "
+        "beside or in place of `files`; once, into a file next to it that later runs read. Draw "
+        "it wide enough for every route: what lies outside is not known. Its corners are sent to "
+        "the server, and nothing else of the study.",
+        None,
+    )
+    download_server: Annotated[str, Field(pattern=r"^https?://[^\s/]+\S*$")] | None = setting(
+        "Address of the Overpass API to ask; not set: the public one that osmnx asks.", None
+    )
     columns: RoadColumns = setting("Column names in layers of lines.", RoadColumns())
     layer: str | None = setting("Layer, where a file of lines has several.", None)
     class_values: dict[str, str] = setting(

@@ -5,7 +5,8 @@ The way of the data, one module per step:
 ``formats``   reads files of any format into the internal form (``extract``): ways over
               located nodes: ``pbf`` (with ``pbf_frame``, ``pbf_blocks``, ``pbf_wire``) OSM
               PBF, ``osm`` any OSM file by libosmium, ``graphml`` osmnx's graphs, ``layers``
-              lines with names of their own (``noding``); ``merge`` makes them one extract
+              lines with names of their own (``noding``); ``merge`` makes them one extract;
+              ``overpass`` downloads a file of them for a boundary, before the flow
 ``rules``     what each way allows, by config/roads.toml; ``speeds`` reads tagged values
 ``segments``  stretches between neighbouring nodes, with geodesic lengths and times
 ``contract``  chains of stretches between junctions become edges
