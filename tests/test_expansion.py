@@ -162,6 +162,7 @@ def test_a_sample_of_a_known_total_has_the_error_of_a_proportion() -> None:
     assert table.loc["east", "visits_se"] == pytest.approx(expected, rel=1e-9)
 
 
+@pytest.mark.slow
 def test_the_standard_error_is_the_spread_of_repeated_samples() -> None:
     """400 samples of 200 parties out of 20,000, parties of 1 to 4, a tenth without a code."""
     rng = np.random.default_rng(8)
