@@ -186,6 +186,9 @@ def without_a_rule(extract: RoadExtract) -> dict[str, Callable[[], RoadGraph]]:
         return replace(extract, way_tags=tags.assign(**blank))
 
     return {
+        "roads for four-wheel drive only": built(
+            extract, a_study(roads={"four_wheel_drive": True})
+        ),
         "tracks": built(extract, a_study(roads={"tracks": True})),
         "gates and other barriers": built(replace(extract, tagged_nodes=TaggedNodes()), usual),
         "private and limited roads": built(untagged(*ACCESS), usual),
