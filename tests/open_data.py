@@ -1,7 +1,7 @@
 """Open data that some tests read and no part of the project holds.
 
 They are looked for in the folder that the environment variable ROADWORTH_OPEN_DATA names, or in
-``../shared/data`` beside the checkout; tests that need them are skipped without.
+a folder ``shared/data`` beside the checkout; tests that need them are skipped without.
 """
 
 from __future__ import annotations
