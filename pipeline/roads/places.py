@@ -80,7 +80,8 @@ def nearest_places(
     graph : the road graph.
     edges : numbers of the edges that count.
     lon, lat : the points, degrees.
-    reach_m : a place further away is no place, and only its distance is told.
+    reach_m : a place further away is no place, and only its distance is told: that to a road
+        near the nearest one, since the plane is no longer true so far out.
     """
     if not len(edges):
         return _nowhere(len(lon))
